@@ -1,0 +1,128 @@
+"""The main job: a case in, an Assessment out. No printing, no files."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from fuelair import outputs
+from fuelair.air import DryAir
+from fuelair.assessment import Assessment
+from fuelair.case import Case
+from fuelair.charge import Charge
+from fuelair.cycle import air_standard, exergy, fuel_air, ladder
+from fuelair.cycle.breathing import Exhaust, solve_charge
+from fuelair.cycle.result import FREEZE_MODEL, MODELS, CycleResult
+from fuelair.errors import InputError, Problem, UnsolvedError
+from fuelair.gas.cantera_gas import CanteraGas
+from fuelair.gas.engine import Engine, Status
+from fuelair.gas.species import data_versions
+from fuelair.prepare import Prepared, prepare
+from fuelair.remarks import sources, verdict, warnings
+from fuelair.version import __version__
+
+
+def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None = None) -> Assessment:
+    """Run a case through every cycle model and set the results side by side.
+
+    Parameters
+    ----------
+    case : what the user wrote.
+    engine : gas engine; default the reference engine on Cantera.
+    dry_air : composition of dry air; default `fuelair.air.dry_air`.
+
+    Returns
+    -------
+    Assessment, SI throughout.
+
+    Raises
+    ------
+    InputError : the pressure limit lies below the headline model's compression pressure.
+    UnsolvedError : the headline model has no solution; status and reason say why.
+    """
+    gas: Engine = CanteraGas() if engine is None else engine
+    prepared = prepare(case, dry_air)
+    charge = trap(prepared, gas)
+    headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
+    _refuse_unsolved(case, prepared, headline.result)
+    results = models(prepared, gas, headline)
+    return _gather(case, prepared, gas, headline, results)
+
+
+def trap(prepared: Prepared, engine: Engine) -> Charge:
+    """The trapped charge, gas exchange solved once with the headline model."""
+
+    def run(charge: Charge) -> tuple[CycleResult, Exhaust]:
+        solved = fuel_air.run(engine, charge, prepared.settings, prepared.headline, points=False)
+        return solved.result, solved.exhaust
+
+    return solve_charge(
+        prepared.recipe, engine, prepared.settings, run, fuel_mass=prepared.fuel_mass, cutoff_ratio=prepared.cutoff_ratio
+    )
+
+
+def models(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[str, CycleResult]:
+    """Every model of the ladder on the headline's charge, crudest first; the freeze model last if it leads."""
+    charge, settings = headline.charge, prepared.settings
+    results = {
+        "air-cold": air_standard.run("air-cold", air_standard.ColdAir(), charge, settings),
+        "air-variable": air_standard.run("air-variable", air_standard.variable_air(engine, charge.recipe.air), charge, settings),
+    }
+    for model in MODELS[2:]:
+        same = model == prepared.headline
+        results[model] = headline.result if same else fuel_air.run(engine, charge, settings, model, headline=False).result
+    if prepared.headline == FREEZE_MODEL:
+        results[FREEZE_MODEL] = headline.result
+    return results
+
+
+def companions(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[str, dict[str, CycleResult]]:
+    """Air-standard cycles on another basis: the same cut-off ratio, and for rich charges heat limited by oxygen."""
+    charge, settings = headline.charge, prepared.settings
+    airs = {"air-cold": air_standard.ColdAir(), "air-variable": air_standard.variable_air(engine, charge.recipe.air)}
+    out: dict[str, dict[str, CycleResult]] = {}
+    cutoff = headline.result.figures["cutoff_ratio"]
+    if bool(headline.burn.limited[0]):
+        out["same-cutoff-ratio"] = {
+            k: air_standard.run(k, state, charge, settings, cutoff_ratio=cutoff) for k, state in airs.items()
+        }
+    share = float(charge.oxygen_excess_ratio()[0])
+    if float(charge.oxygen_left()[0]) < 0.0:
+        heat = charge.heat_added * max(share, 0.0)
+        out["oxygen-limited-heat"] = {k: air_standard.run(k, state, charge, settings, heat=heat) for k, state in airs.items()}
+    return out
+
+
+def _refuse_unsolved(case: Case, prepared: Prepared, result: CycleResult) -> None:
+    status = Status(int(result.status[0]))
+    if status is Status.OK:
+        return
+    if status is Status.LIMIT_BELOW_COMPRESSION:
+        reached = float(result.figures["compression_pressure_Pa"][0]) / 1e5
+        problem = Problem(
+            "lies below the compression pressure of the headline model", "combustion.pressure_limit",
+            case.written("combustion.pressure_limit"), f"above {reached:.1f} bar, the compression pressure of {prepared.headline}",
+            "raise the limit, or lower compression_ratio or the trapped pressure",
+        )
+        raise InputError(case.place(problem))
+    raise UnsolvedError(status.label, status.reason, prepared.headline)
+
+
+def _gather(
+    case: Case, prepared: Prepared, engine: Engine, headline: fuel_air.Run, results: dict[str, CycleResult]
+) -> Assessment:
+    balance = exergy.balance(headline)
+    engine_figures = outputs.engine_figures(prepared, headline, case.engine.cylinders)
+    exhaust_figures = outputs.exhaust_figures(prepared, headline, engine)
+    flame = outputs.stoichiometric_flame_temperature(headline, engine)
+    draft = Assessment(
+        case=case, fuel=prepared.fuel, ambient=prepared.ambient, charge=headline.charge, headline=prepared.headline,
+        results=results, companions=companions(prepared, engine, headline), ladder=tuple(ladder.steps(results)),
+        overprediction=ladder.overprediction(results), exergy=balance, engine_figures=engine_figures,
+        exhaust_figures=exhaust_figures, flame_temperature=flame, swept_volume=prepared.swept_volume, engine=engine.name,
+        versions={"fuelair": __version__, "numpy": np.__version__, **data_versions(),
+                  "species_table": headline.charge.recipe.table.digest},
+        warnings=(), sources=(), verdict="",
+    )
+    return replace(draft, warnings=tuple(warnings(draft)), sources=tuple(sources(draft)), verdict=verdict(draft))

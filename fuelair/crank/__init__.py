@@ -1,0 +1,1 @@
+"""Crank-angle rooms: kinematics of the slider-crank."""

@@ -1,0 +1,49 @@
+"""Exact slider-crank kinematics."""
+
+from __future__ import annotations
+
+import numpy as np
+import numpy.typing as npt
+
+Array = npt.NDArray[np.float64]
+
+
+def swept_volume(*, bore: float, stroke: float, rod_length: float, pin_offset: float = 0.0) -> float:
+    """Swept volume of one cylinder between its true dead centres [m3]; lengths in m."""
+    reach = _reach(stroke, rod_length, pin_offset)
+    return float(0.25 * np.pi * bore**2 * (reach[1] - reach[0]))
+
+
+def relative_volume(
+    angle: Array | float, *, stroke: float, rod_length: float, compression_ratio: float, pin_offset: float = 0.0
+) -> Array:
+    """Cylinder volume over swept volume at a crank angle.
+
+    Parameters
+    ----------
+    angle : crank angle from the true firing dead centre (smallest volume) [deg], any shape.
+    stroke, rod_length : [m]; the stroke is twice the crank radius.
+    compression_ratio : geometric, above 1 [-].
+    pin_offset : distance of the cylinder axis from the crank axis [m], positive towards the thrust
+        side of expansion.
+
+    Returns
+    -------
+    V / V_d, from 1/(r-1) to 1/(r-1) + 1.
+
+    Source: exact geometry; piston distance from the crank centre a cos(t) + sqrt(l^2 - (a sin(t) - e)^2).
+    """
+    a, e = 0.5 * stroke, pin_offset
+    low, high = _reach(stroke, rod_length, pin_offset)
+    true_centre = np.arcsin(e / (rod_length + a))
+    t = np.deg2rad(np.asarray(angle, float)) + true_centre
+    distance = a * np.cos(t) + np.sqrt(rod_length**2 - (a * np.sin(t) - e) ** 2)
+    return np.asarray(1.0 / (compression_ratio - 1.0) + (high - distance) / (high - low))
+
+
+def _reach(stroke: float, rod_length: float, pin_offset: float) -> tuple[float, float]:
+    """Least and greatest distance of the pin from the crank axis along the cylinder [m]."""
+    a, e = 0.5 * stroke, abs(pin_offset)
+    if rod_length <= a + e:
+        raise ValueError(f"rod_length {rod_length} m must exceed half the stroke plus the pin offset, {a + e} m")
+    return float(np.sqrt((rod_length - a) ** 2 - e**2)), float(np.sqrt((rod_length + a) ** 2 - e**2))

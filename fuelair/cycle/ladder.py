@@ -1,0 +1,66 @@
+"""The ladder: what each assumption costs, step by step, from the crudest to the fullest model."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from fuelair.cycle.result import MODELS, REFERENCE_MODEL, CycleResult
+from fuelair.gas.engine import Status
+
+QUANTITIES: tuple[str, ...] = (
+    "compression_temperature_K", "compression_pressure_Pa", "peak_temperature_K", "peak_pressure_Pa",
+    "release_temperature_K", "release_pressure_Pa", "exhaust_temperature_K", "imep_gross_Pa", "work_J_per_kg",
+    "indicated_efficiency",
+)
+"""Quantities that the ladder and the overprediction table show."""
+
+ASSUMPTION: dict[tuple[str, str], str] = {
+    ("air-cold", "air-variable"): "specific heat rises with temperature",
+    ("air-variable", "fuel-air-complete"): "real mixture burns instead of heat to air",
+    ("fuel-air-complete", "fuel-air-frozen"): "dissociation at the peak",
+    ("fuel-air-frozen", "fuel-air-equilibrium"): "recombination during expansion",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Step:
+    """One rung to the next: the change of every quantity (SI) when one assumption is dropped."""
+
+    lower: str
+    upper: str
+    assumption: str
+    change: dict[str, float]
+
+
+def steps(results: dict[str, CycleResult], case: int = 0) -> list[Step]:
+    """Steps between neighbouring models that are solved, for one case of the batch.
+
+    They add up to the difference between the last and the first. A model that failed is left out
+    and its two steps become one, whose text joins the assumptions it drops.
+    """
+    there = [m for m in MODELS if m in results and results[m].status[case] == Status.OK]
+    out = []
+    for lower, upper in zip(there, there[1:], strict=False):
+        between = MODELS[MODELS.index(lower) : MODELS.index(upper) + 1]
+        words = "; ".join(ASSUMPTION[pair] for pair in zip(between, between[1:], strict=False))
+        a, b = results[lower].figures, results[upper].figures
+        out.append(Step(lower, upper, words, {k: float(b[k][case] - a[k][case]) for k in QUANTITIES}))
+    return out
+
+
+def overprediction(results: dict[str, CycleResult], case: int = 0) -> dict[str, dict[str, dict[str, float]]]:
+    """Each solved model against the fuel-air equilibrium cycle: absolute (SI) and relative, per quantity."""
+    if REFERENCE_MODEL not in results or results[REFERENCE_MODEL].status[case] != Status.OK:
+        return {}
+    reference = results[REFERENCE_MODEL].figures
+    out: dict[str, dict[str, dict[str, float]]] = {}
+    for model in MODELS:
+        if model == REFERENCE_MODEL or model not in results or results[model].status[case] != Status.OK:
+            continue
+        out[model] = {}
+        for key in QUANTITIES:
+            base, value = float(reference[key][case]), float(results[model].figures[key][case])
+            out[model][key] = {"absolute": value - base, "relative": value / base - 1.0 if base else float(np.nan)}
+    return out

@@ -1,0 +1,81 @@
+"""Polynomials of a mixture: mix the coefficients once, then every property is a short formula.
+
+All per kg of gas. Ideal gas, NASA seven-coefficient form with one break at 1000 K.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from fuelair.gas.engine import Array, total, weighted
+from fuelair.gas.species import T_BREAK, R, SpeciesTable
+
+
+@dataclass(frozen=True, slots=True)
+class Mixture:
+    """Coefficients of N mixtures.
+
+    Attributes
+    ----------
+    low, high : (N, 7) mixed coefficients below and above 1000 K [kmol/kg].
+    moles : (N,) amount of gas [kmol/kg].
+    mixing : (N,) entropy of mixing, -sum n ln x [kmol/kg].
+    t_min, t_max : (N,) common validity range of the species present [K].
+    reference_pressure : standard-state pressure [Pa].
+    """
+
+    low: Array
+    high: Array
+    moles: Array
+    mixing: Array
+    t_min: Array
+    t_max: Array
+    reference_pressure: float
+
+    def thermal(self, T: Array) -> tuple[Array, Array, Array]:
+        """cp [J/(kg K)], h [J/kg] and s at the reference pressure incl. mixing [J/(kg K)] at ``T`` (N,)."""
+        a = np.where((T < T_BREAK)[:, None], self.low, self.high)
+        cp = a[:, 0] + T * (a[:, 1] + T * (a[:, 2] + T * (a[:, 3] + T * a[:, 4])))
+        h = T * (a[:, 0] + T * (a[:, 1] / 2 + T * (a[:, 2] / 3 + T * (a[:, 3] / 4 + T * (a[:, 4] / 5))))) + a[:, 5]
+        s = a[:, 0] * np.log(T) + a[:, 6] + self.mixing
+        s = s + T * (a[:, 1] + T * (a[:, 2] / 2 + T * (a[:, 3] / 3 + T * (a[:, 4] / 4))))
+        return R * cp, R * h, R * s
+
+    def gas_constant(self) -> Array:
+        """Specific gas constant [J/(kg K)], shape (N,)."""
+        return R * self.moles
+
+
+def mix(table: SpeciesTable, amounts: Array) -> Mixture:
+    """Mix the table's polynomials for amounts (N, S) [kmol/kg]."""
+    both = weighted(amounts, table.coefficients)
+    moles = total(amounts)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        x = amounts / moles[:, None]
+        terms = np.where(amounts > 0.0, -amounts * np.log(x), 0.0)
+    present = amounts > 0.0
+    t_min = np.where(present, table.t_min, 0.0).max(axis=1)
+    t_max = np.where(present, table.t_max, np.inf).min(axis=1)
+    return Mixture(
+        low=both[:, :7], high=both[:, 7:], moles=moles, mixing=total(terms), t_min=t_min, t_max=t_max,
+        reference_pressure=table.reference_pressure,
+    )
+
+
+def gibbs(table: SpeciesTable, T: Array) -> Array:
+    """Standard molar Gibbs energy over R T of every species at ``T`` (N,) -> (N, S)."""
+    return _gibbs_over_rt(np.where((T < T_BREAK)[:, None, None], table.low, table.high), T[:, None])
+
+
+def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:
+    """Molar Gibbs energy over R T of graphite at ``T`` (N,) -> (N,)."""
+    return _gibbs_over_rt(np.where((T < T_BREAK)[:, None], table.graphite[0], table.graphite[1]), T)
+
+
+def _gibbs_over_rt(a: Array, t: Array) -> npt.NDArray[np.float64]:
+    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5))) + a[..., 5] / t
+    s = a[..., 0] * np.log(t) + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
+    return np.asarray(h - s)

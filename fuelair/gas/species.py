@@ -1,0 +1,274 @@
+"""One immutable table of species for a case: names, elements, polynomials, limits, hash.
+
+Source of the thermodynamic data: the file ``nasa_gas.yaml`` bundled with Cantera (NASA
+seven-coefficient polynomials with a break at 1000 K, 200 to 6000 K; each entry there names its
+origin). ``mechanisms/phases/products.yaml`` names which of them make up burned gas. The fuel's
+vapour arrives as plain numbers: its heating value fixes the enthalpy, named species of the same
+file lend the shape of cp(T).
+
+The bundled polynomials jump by up to 3e-7 R T at their break; here the upper range is shifted by
+that jump, so that enthalpy and entropy are continuous and every inversion has one root.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property, lru_cache
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from fuelair import resources
+from fuelair.errors import DataError
+from fuelair.fuel import Vapour
+
+Array = npt.NDArray[np.float64]
+
+R = 8314.46261815324
+"""Molar gas constant, exact by the SI of 2019 [J/(kmol K)]."""
+T_BREAK = 1000.0
+"""Temperature at which the two ranges of every polynomial meet [K]."""
+T_STANDARD = 298.15
+"""Reference temperature of heating values and formation enthalpies [K]."""
+FUEL = "fuel"
+UNBURNED = "unburned-fuel"
+GRAPHITE_FILE, GRAPHITE = "nasa_condensed.yaml", "C(gr)"
+_PHASES = "products.yaml"
+_SPECIES_FILE = "nasa_gas.yaml"
+
+
+@dataclass(frozen=True, eq=False)
+class SpeciesTable:
+    """Species of one case.
+
+    Attributes
+    ----------
+    names : S species names; ``fuel`` is the vapour that takes part, ``unburned-fuel`` the same
+        molecule carried as inert.
+    elements : E element symbols.
+    atoms : (S, E) atoms per molecule (``unburned-fuel`` has its atoms here too).
+    molar_mass : (S,) [kg/kmol].
+    low, high : (S, 7) NASA coefficients below and above 1000 K.
+    t_min, t_max : (S,) validity limits [K].
+    lean, rich : (S,) masks of the species that equilibrium may form.
+    inert : (S,) mask of species that never react.
+    graphite : (2, 7) NASA coefficients of graphite, to see when solid carbon would form.
+    reference_pressure : standard-state pressure of the data [Pa].
+    """
+
+    names: tuple[str, ...]
+    elements: tuple[str, ...]
+    atoms: Array
+    molar_mass: Array
+    low: Array
+    high: Array
+    t_min: Array
+    t_max: Array
+    lean: npt.NDArray[np.bool_]
+    rich: npt.NDArray[np.bool_]
+    inert: npt.NDArray[np.bool_]
+    graphite: Array
+    reference_pressure: float
+
+    def __len__(self) -> int:
+        return len(self.names)
+
+    def index(self, name: str) -> int:
+        """Column of a species; DataError if the table has none of that name."""
+        try:
+            return self.names.index(name)
+        except ValueError:
+            raise DataError(f"species {name!r} is not in the table: {', '.join(self.names)}") from None
+
+    def has(self, name: str) -> bool:
+        """Whether the table carries a species of that name."""
+        return name in self.names
+
+    def element(self, symbol: str) -> int | None:
+        """Column of an element in ``atoms``, None if no species carries it."""
+        return self.elements.index(symbol) if symbol in self.elements else None
+
+    @cached_property
+    def coefficients(self) -> Array:
+        """(S, 14) both ranges side by side, for mixing."""
+        return np.hstack([self.low, self.high])
+
+    @cached_property
+    def reactive_atoms(self) -> Array:
+        """(S, E) atoms that may react: zero for inert species."""
+        return np.where(self.inert[:, None], 0.0, self.atoms)
+
+    @cached_property
+    def digest(self) -> str:
+        """Hash of names, composition and data; equal tables have equal digests."""
+        h = hashlib.sha256("|".join(self.names + self.elements).encode())
+        for part in (self.atoms, self.low, self.high, self.t_min, self.t_max, self.graphite):
+            h.update(np.ascontiguousarray(part).tobytes())
+        return h.hexdigest()[:16]
+
+    def amounts(self, composition: dict[str, float]) -> Array:
+        """Amounts [kmol/kg] of shape (S,) of a mixture given as relative amounts of substance."""
+        n = np.zeros(len(self))
+        for name, value in composition.items():
+            n[self.index(name)] += value
+        return np.asarray(n / float(np.sum(n * self.molar_mass)))
+
+
+@lru_cache(maxsize=1)
+def _bundled() -> tuple[dict[str, Any], dict[str, tuple[str, ...]], Array]:
+    """Cantera species by name, the species sets, and graphite's coefficients."""
+    import cantera as ct
+
+    path = str(resources.folder("mechanisms/phases") / _PHASES)
+    sets = {n: tuple(ct.Solution(path, n).species_names) for n in ("lean", "rich", "sulfur")}
+    species = {s.name: s for s in ct.Species.list_from_file(_SPECIES_FILE)}
+    solid = {s.name: s for s in ct.Species.list_from_file(GRAPHITE_FILE)}[GRAPHITE]
+    return species, sets, _ranges(solid)[:2]
+
+
+def data_versions() -> dict[str, str]:
+    """Version of Cantera, whose bundled species data are used."""
+    import cantera as ct
+
+    return {"cantera": str(ct.__version__), "species_data": f"{_SPECIES_FILE} of Cantera {ct.__version__}"}
+
+
+def _ranges(species: Any) -> Array:
+    """(2, 7) coefficients below and above 1000 K, made continuous at the break."""
+    thermo = species.thermo
+    c = np.asarray(thermo.coeffs, dtype=float)
+    middle, high, low = float(c[0]), c[1:8].copy(), c[8:15].copy()
+    if middle >= thermo.max_temp:  # one range only
+        high = low.copy()
+    elif middle != T_BREAK:
+        raise DataError(f"species {species.name}: polynomial break at {middle} K, expected {T_BREAK} K")
+    t = T_BREAK
+    difference = low - high
+    powers_h = np.array([t, t**2 / 2, t**3 / 3, t**4 / 4, t**5 / 5, 1.0, 0.0])
+    powers_s = np.array([np.log(t), t, t**2 / 2, t**3 / 3, t**4 / 4, 0.0, 1.0])
+    high[5] += float(np.sum(difference * powers_h))
+    high[6] += float(np.sum(difference * powers_s))
+    return np.vstack([low, high])
+
+
+def _enthalpy(ranges: Array, t: float) -> float:
+    a = ranges[0] if t < T_BREAK else ranges[1]
+    return float(R * (a[0] * t + a[1] * t**2 / 2 + a[2] * t**3 / 3 + a[3] * t**4 / 4 + a[4] * t**5 / 5 + a[5]))
+
+
+def _entropy(ranges: Array, t: float) -> float:
+    a = ranges[0] if t < T_BREAK else ranges[1]
+    return float(R * (a[0] * np.log(t) + a[1] * t + a[2] * t**2 / 2 + a[3] * t**3 / 3 + a[4] * t**4 / 4 + a[6]))
+
+
+def _vapour_ranges(vapour: Vapour, mass: float) -> tuple[Array, float, float]:
+    """Polynomial of a fuel vapour: shape from named species, enthalpy from the heating value."""
+    species, _, _ = _bundled()
+    unknown = [n for n, _ in vapour.shape if n not in species]
+    if unknown:
+        raise DataError(f"fuel {vapour.name}: shape species not in {_SPECIES_FILE}: {', '.join(unknown)}")
+    ranges = np.zeros((2, 7))
+    for name, share in vapour.shape:
+        ranges += share * _ranges(species[name])
+    atoms = dict(vapour.atoms)
+    products = {"CO2": atoms.get("C", 0.0), "H2O": atoms.get("H", 0.0) / 2, "N2": atoms.get("N", 0.0) / 2,
+                "SO2": atoms.get("S", 0.0)}
+    oxygen = products["CO2"] + products["H2O"] / 2 + products["SO2"] - atoms.get("O", 0.0) / 2
+    target = vapour.lower_heating_value * mass - oxygen * _enthalpy(_ranges(species["O2"]), T_STANDARD)
+    target += sum(n * _enthalpy(_ranges(species[k]), T_STANDARD) for k, n in products.items())
+    ranges[:, 5] += (target - _enthalpy(ranges, T_STANDARD)) / R
+    if vapour.entropy is not None:
+        ranges[:, 6] += (vapour.entropy - _entropy(ranges, T_STANDARD)) / R
+    low = max(float(species[n].thermo.min_temp) for n, _ in vapour.shape)
+    high = min(float(species[n].thermo.max_temp) for n, _ in vapour.shape)
+    return ranges, low, high
+
+
+def shape_is_molecule(vapour: Vapour) -> bool:
+    """Whether the species that lend the shape add up to the fuel's own atoms, so that their entropy is its own."""
+    if vapour.entropy is not None:
+        return True
+    species, _, _ = _bundled()
+    atoms: dict[str, float] = {}
+    for name, share in vapour.shape:
+        for element, count in species[name].composition.items():
+            atoms[element] = atoms.get(element, 0.0) + share * count
+    given = dict(vapour.atoms)
+    return all(abs(atoms.get(e, 0.0) - given.get(e, 0.0)) < 1e-9 for e in {*atoms, *given})
+
+
+def build(vapour: Vapour | None = None, *, extra: Sequence[str] = ()) -> SpeciesTable:
+    """Build the table of a case.
+
+    Parameters
+    ----------
+    vapour : the fuel vapour; None for a table of air and products alone.
+    extra : further species of the bundled data to add to the equilibrium (names as there).
+
+    Raises
+    ------
+    DataError : a named species is not in the bundled data.
+    """
+    return _build(vapour, tuple(extra))
+
+
+@lru_cache(maxsize=64)
+def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
+    species, sets, graphite = _bundled()
+    sulfur = vapour is not None and any(e == "S" for e, _ in vapour.atoms)
+    products = list(sets["rich"]) + (list(sets["sulfur"]) if sulfur else [])
+    missing = [n for n in extra if n not in species]
+    if missing:
+        raise DataError(f"species not in {_SPECIES_FILE}: {', '.join(missing)}")
+    products += [n for n in extra if n not in products]
+    elements = ("C", "H", "O", "N", "Ar") + (("S",) if sulfur else ())
+    weight = _atomic_weights(elements)
+    atoms = [[float(species[n].composition.get(e, 0.0)) for e in elements] for n in products]
+    ranges = [_ranges(species[n]) for n in products]
+    t_min = [float(species[n].thermo.min_temp) for n in products]
+    t_max = [float(species[n].thermo.max_temp) for n in products]
+    reference = {float(species[n].thermo.reference_pressure) for n in products}
+    names = list(products)
+    lean = [n in sets["lean"] or n in sets["sulfur"] or n in extra for n in names]
+    rich = [True] * len(names)
+    inert = [False] * len(names)
+    if vapour is not None:
+        given = dict(vapour.atoms)
+        row = [given.get(e, 0.0) for e in elements]
+        mass = float(sum(a * weight[e] for a, e in zip(row, elements, strict=True)))
+        fuel, low, high = _vapour_ranges(vapour, mass)
+        for name, is_inert in ((FUEL, False), (UNBURNED, True)):
+            names.append(name)
+            atoms.append(row)
+            ranges.append(fuel)
+            t_min.append(low)
+            t_max.append(high)
+            lean.append(False)
+            rich.append(False)
+            inert.append(is_inert)
+    if len(reference) != 1:
+        raise DataError(f"species data mix reference pressures: {sorted(reference)}")
+    matrix = np.array(atoms)
+    return SpeciesTable(
+        names=tuple(names), elements=elements, atoms=matrix,
+        molar_mass=_frozen(np.array([sum(a * weight[e] for a, e in zip(row, elements, strict=True)) for row in matrix])),
+        low=np.array([r[0] for r in ranges]), high=np.array([r[1] for r in ranges]),
+        t_min=np.array(t_min), t_max=np.array(t_max), lean=np.array(lean), rich=np.array(rich),
+        inert=np.array(inert), graphite=graphite, reference_pressure=reference.pop(),
+    )
+
+
+def _frozen(array: Array) -> Array:
+    array.setflags(write=False)
+    return array
+
+
+@lru_cache(maxsize=8)
+def _atomic_weights(elements: tuple[str, ...]) -> dict[str, float]:
+    """Atomic weights as Cantera carries them [kg/kmol]."""
+    import cantera as ct
+
+    return {e: float(ct.Element(e).weight) for e in elements}

@@ -1,0 +1,121 @@
+"""What a result says in words: the verdict, the warnings, the sources it rests on."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from fuelair.assessment import Assessment
+from fuelair.gas.engine import Status
+from fuelair.gas.graphite import carbon_activity
+from fuelair.quantities import QUANTITIES, shown
+from fuelair.sources import Source, cite
+
+LIMITS = {
+    "peak_pressure": "peak_pressure_Pa", "peak_temperature": "peak_temperature_K",
+    "compression_pressure": "compression_pressure_Pa", "compression_temperature": "compression_temperature_K",
+    "release_temperature": "release_temperature_K", "release_pressure": "release_pressure_Pa",
+    "exhaust_temperature": "exhaust_temperature_K",
+}
+"""Keys of [limits] -> quantity they bound."""
+LIMIT_SLACK = 1e-9
+RICH = 1e-10
+"""Missing oxygen [kmol/kg] from which a charge counts as rich."""
+USUAL_RATIO = {"direct": (12.0, 24.0), "premixed": (6.0, 14.0), "port-liquid": (6.0, 14.0), "early-direct": (6.0, 14.0)}
+"""Compression ratios in use, common practice."""
+DENSE = 2.0
+"""Trapped density over that of air at 1 bar and 300 K from which the ideal-gas warning is given."""
+
+
+def verdict(a: Assessment) -> str:
+    """One sentence: what to expect, and how far off the constant-k air cycle is."""
+    f = a.figures()
+    held = bool(a.results[a.headline].flags["limited"][0])
+    text = (
+        f"Expect a peak of {shown('peak_temperature_K', f['peak_temperature_K'])} (mass mean) and "
+        f"{shown('peak_pressure_Pa', f['peak_pressure_Pa'])}{' (held)' if held else ''}, exhaust at "
+        f"{shown('exhaust_temperature_K', f['exhaust_temperature_K'])} and "
+        f"{shown('imep_gross_Pa', f['imep_gross_Pa'])} gross mean pressure at "
+        f"{shown('indicated_efficiency', f['indicated_efficiency'])} gross indicated efficiency"
+    )
+    cold = a.figures("air-cold")
+    if cold["peak_temperature_K"] is None:
+        return text + f"; the constant-k air cycle has no solution here ({a.status('air-cold').label})."
+    hot = (cold["peak_temperature_K"] or 0.0) - (f["peak_temperature_K"] or 0.0)
+    eager = (cold["indicated_efficiency"] or 0.0) / (f["indicated_efficiency"] or 1.0) - 1.0
+    pressure = (cold["peak_pressure_Pa"] or 0.0) / (f["peak_pressure_Pa"] or 1.0) - 1.0
+    words = [f"{abs(hot):.0f} K too {'hot' if hot >= 0.0 else 'cold'}"]
+    if abs(pressure) >= 0.005:
+        words.append(f"{abs(pressure):.0%} too {'high' if pressure >= 0.0 else 'low'} in peak pressure")
+    words.append(f"{abs(eager):.0%} too {'efficient' if eager >= 0.0 else 'inefficient'}")
+    return f"{text}; the constant-k air cycle is {', '.join(words[:-1])} and {words[-1]}."
+
+
+def warnings(a: Assessment) -> list[str]:
+    """Everything a reader should mind, most binding first."""
+    return [*_limits(a), *_mixture(a), *_validity(a), *(f"Fuel: {w}" for w in a.fuel.warnings)]
+
+
+def _limits(a: Assessment) -> Iterator[str]:
+    f = a.figures()
+    for key, quantity in LIMITS.items():
+        limit, value = getattr(a.case.limits, key), f[quantity]
+        if limit is not None and value is not None and value > limit * (1.0 + LIMIT_SLACK):
+            yield (f"{QUANTITIES[quantity].label} {shown(quantity, value)} exceeds limits.{key} = "
+                   f"{shown(quantity, limit)} ({a.headline}).")
+
+
+def _mixture(a: Assessment) -> Iterator[str]:
+    oxygen = float(a.charge.oxygen_excess_ratio()[0])
+    if float(a.charge.oxygen_left()[0]) < -RICH:
+        yield (f"Rich: the trapped oxygen burns only {oxygen:.1%} of the fuel; carbon monoxide and hydrogen leave with the "
+               "exhaust. Air-standard companions with oxygen-limited heat are in the results.")
+    result = a.results[a.headline]
+    if result.table is not None:
+        activity = float(carbon_activity(result.table, result.point("burned").state)[0])
+        released = float(carbon_activity(result.table, result.point("release").state)[0])
+        if max(activity, released) > 1.0 - 1e-3:
+            yield ("Solid carbon would form in equilibrium during expansion; composition is frozen from where it would begin. "
+                   "Expect soot.")
+    if bool(result.flags["back-flow"][0]):
+        yield "Release pressure is below exhaust pressure: exhaust flows back into the cylinder when the valve opens."
+    drained = float(a.charge.drained_water[0])
+    if drained > 1e-9:
+        yield (f"{drained * 1e3:.1f} g of water per kg of dry air condense in the receiver or the exhaust cooler and are drained; "
+               f"dew point after that {float(a.charge.receiver_dew_point[0]) - 273.15:.0f} degC.")
+    ratio = float(a.charge.saturation_ratio[0])
+    if ratio > 0.9:
+        yield f"The fuel vapour is at {ratio:.0%} of saturation in the trapped charge: a little colder and it condenses."
+    if a.exergy.from_correlation:
+        yield "The fuel's exergy rests on the Szargut-Styrylo ratio, not on species data."
+
+
+def _validity(a: Assessment) -> Iterator[str]:
+    low, high = USUAL_RATIO[a.case.fuel.admission]
+    r = a.case.engine.compression_ratio
+    if not low <= r <= high:
+        yield f"Compression ratio {r:g} is outside the usual {low:g} to {high:g} for this admission (common practice)."
+    density = 1.0 / float(a.charge.trapped.v[0]) / 1.16
+    if density > DENSE:
+        yield ("Ideal-gas law: for air at r = 16 it puts compression pressure 2 % (1 bar), 7 % (3 bar) and 13 % (6 bar trapped) "
+               "below the reference equation of state (Lemmon et al. 2000); peak pressure is as much too low wherever no limit holds it.")
+    for model, result in a.results.items():
+        status = Status(int(result.status[0]))
+        if status is not Status.OK:
+            yield f"{model}: {status.label}: {status.reason}."
+    yield ("Ideal cycle: instant adiabatic combustion, no heat to the walls, no flow losses. It is a ceiling for work and "
+           "efficiency; common practice puts real indicated efficiency at 0.80 to 0.90 of it.")
+
+
+def sources(a: Assessment) -> list[Source]:
+    """Sources that this result rests on."""
+    keys = ["cantera-data", "iso2533", "first-law", "freeze1740", "szargut"]
+    if a.exergy.from_correlation:
+        keys.append("styrylo1964")
+    if float(a.charge.recipe.humidity[0]) > 0.0 or float(a.charge.recipe.egr_fraction[0]) > 0.0:
+        keys.append("wagner1993")
+    reference = {"iso-3046": "iso3046", "iso-1585": "iso1585", "iacs-m28": "iacsm28"}.get(a.case.charge.reference or "")
+    if reference:
+        keys.append(reference)
+    if any(w.startswith("Ideal-gas law") for w in a.warnings) or float(a.charge.trapped.v[0]) * 1.16 * DENSE < 1.0:
+        keys.append("lemmon2000")
+    return cite(*keys)
