@@ -85,16 +85,12 @@ class Assessment:
         """Named states of a model as rows: T, p, v, u, h, s, V, mass and mole fractions (SI)."""
         import pandas as pd
 
-        rows = [self._flat(s) for s in self._states(model or self.headline)]
+        rows = [flat_state(s) for s in self.to_states(model)]
         return pd.DataFrame(rows).set_index("state")
 
-    @staticmethod
-    def _flat(state: dict[str, Any]) -> dict[str, Any]:
-        fractions = state.pop("mole_fractions", {})
-        return state | {f"x_{k}": v for k, v in fractions.items()}
-
-    def _states(self, model: str) -> list[dict[str, Any]]:
-        result = self.results[model]
+    def to_states(self, model: str | None = None) -> list[dict[str, Any]]:
+        """Named states of a model (default the headline) as dictionaries, SI; mole fractions where there are any."""
+        result = self.results[model or self.headline]
         if self.charge.status[0] != Status.OK:
             return []
         scale = None if self.swept_volume is None else self.engine_figures["trapped_mass_kg"]
@@ -185,7 +181,7 @@ class Assessment:
                 basis: {m: {k: _number(v[0]) for k, v in r.figures.items()} for m, r in group.items()}
                 for basis, group in self.companions.items()
             },
-            "states": {m: self._states(m) for m in self.results},
+            "states": {m: self.to_states(m) for m in self.results},
             "ladder": [{"from": s.lower, "to": s.upper, "assumption": s.assumption, **s.change} for s in self.ladder],
             "overprediction": self.overprediction, "exergy": self.exergy_figures(),
             "engine_figures": self.engine_figures,
@@ -199,6 +195,12 @@ class Assessment:
         status, result = self.status(model), self.results[model]
         return {"status": status.label, "reason": status.reason, **self.figures(model),
                 "flags": sorted(k for k, v in result.flags.items() if bool(v[0]))}
+
+
+def flat_state(state: dict[str, Any]) -> dict[str, Any]:
+    """A state with its mole fractions as columns ``x_NAME`` of their own."""
+    rest = {k: v for k, v in state.items() if k != "mole_fractions"}
+    return rest | {f"x_{k}": v for k, v in state.get("mole_fractions", {}).items()}
 
 
 def _number(value: Any) -> float | None:

@@ -223,7 +223,7 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
         trapped = engine.state(table, "TP", recipe.temperature, recipe.pressure, amounts)
     ratio = _saturation_ratio(recipe, trapped, before)
     status = trapped.status.copy()
-    status[(status == Status.OK) & (ratio > 1.0)] = Status.VAPOUR_ABOVE_SATURATION
+    status[((status == Status.OK) | (status == Status.OUTSIDE_DATA)) & (ratio > 1.0)] = Status.VAPOUR_ABOVE_SATURATION
     status[~(x < 1.0)] = Status.NO_FRESH_CHARGE
     return Charge(
         recipe=recipe, trapped=trapped, fuel_mass=fuel * share, injected=np.zeros(n) if before else fuel * share,

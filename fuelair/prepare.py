@@ -6,9 +6,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fuelair import air, case_fuel
+from fuelair import air
+from fuelair.case import Case, fuels
 from fuelair.air import Ambient, DryAir
-from fuelair.case import Case
 from fuelair.charge import Recipe
 from fuelair.crank import kinematics
 from fuelair.cycle.breathing import DEFAULT_FREEZE, Settings
@@ -57,7 +57,7 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
     dry_air : composition of the dry air; default `fuelair.air.dry_air`.
     """
     charge, engine, combustion = case.charge, case.engine, case.combustion
-    fuel = case_fuel.record(case.fuel)
+    fuel = fuels.record(case.fuel)
     outside = ambient(case)
     mixture = dry_air or air.dry_air()
     from_intake = charge.intake_pressure is not None

@@ -34,7 +34,7 @@ def verdict(a: Assessment) -> str:
         f"Expect a peak of {shown('peak_temperature_K', f['peak_temperature_K'])} (mass mean) and "
         f"{shown('peak_pressure_Pa', f['peak_pressure_Pa'])}{' (held)' if held else ''}, exhaust at "
         f"{shown('exhaust_temperature_K', f['exhaust_temperature_K'])} and "
-        f"{shown('imep_gross_Pa', f['imep_gross_Pa'])} gross mean pressure at "
+        f"{shown('imep_gross_Pa', f['imep_gross_Pa'])} gross indicated mean pressure at "
         f"{shown('indicated_efficiency', f['indicated_efficiency'])} gross indicated efficiency"
     )
     cold = a.figures("air-cold")

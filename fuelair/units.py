@@ -41,12 +41,19 @@ class Unit:
     def to_si(self, number: Fraction | float, *, ambient_pressure: float = STANDARD_ATMOSPHERE) -> float:
         """Return ``number`` of this unit in SI, rounded once."""
         ambient = Fraction(ambient_pressure) if self.gauge else Fraction(0)
-        return float(_exact(number) * self.factor + self.offset + ambient)
+        return _rounded(_exact(number) * self.factor + self.offset + ambient)
 
     def from_si(self, value: float, *, ambient_pressure: float = STANDARD_ATMOSPHERE) -> float:
         """Return the SI ``value`` in this unit, rounded once."""
         ambient = Fraction(ambient_pressure) if self.gauge else Fraction(0)
-        return float((_exact(value) - self.offset - ambient) / self.factor)
+        return _rounded((_exact(value) - self.offset - ambient) / self.factor)
+
+
+def _rounded(number: Fraction) -> float:
+    try:
+        return float(number)
+    except OverflowError:
+        return math.inf if number > 0 else -math.inf
 
 
 def _exact(number: Fraction | float) -> Fraction:
@@ -117,7 +124,7 @@ def stored_unit(dimension: str) -> str:
 
 
 def parse(value: object, dimension: str, *, ambient_pressure: float = STANDARD_ATMOSPHERE) -> float:
-    """Return a number in stored units (SI; angles in degrees, speed in rev/s, molar mass in kg/kmol).
+    """Read a plain number, or text with number and unit.
 
     Parameters
     ----------
@@ -125,6 +132,10 @@ def parse(value: object, dimension: str, *, ambient_pressure: float = STANDARD_A
         ``"2.9 bar"``, ``"47 degC"``, ``"35 %"``; for the dimension ``ratio`` also ``"0.6"`` and ``"17:1"``.
     dimension : a key of :data:`UNITS`.
     ambient_pressure : [Pa] added to gauge units such as ``bar(g)``.
+
+    Returns
+    -------
+    The number in stored units: SI; angles in degrees, speed in rev/s, molar mass in kg/kmol.
 
     Raises
     ------
@@ -182,17 +193,19 @@ def _proportion(value: str, above: str, below: str) -> float:
     top, bottom = float(above), float(below)
     if not (math.isfinite(top) and math.isfinite(bottom)) or bottom <= 0:
         _refuse("not a proportion of two positive numbers", value, "ratio", '"17:1"')
-    return float(Fraction(above) / Fraction(below))
+    result = _rounded(Fraction(above) / Fraction(below))
+    if not math.isfinite(result):
+        _refuse("number too large", value, "ratio", '"17:1"')
+    return result
 
 
-_LOOKALIKES: Final = str.maketrans(
-    {"\u00b5": "u", "\u03bc": "u", "\u00b0": "deg", "\u2212": "-", "\u2030": "permille", "\u00b7": " ", "\u22c5": " "}
-)
+_LOOKALIKES: Final = str.maketrans({"\u00b5": "u", "\u03bc": "u", "\u00b0": "deg", "\u2212": "-", "\u2030": "permille"})
 
 
 def _normal(text: str) -> str:
     """Bring signs that look alike to one spelling: degree, micro, minus, middle dot, raised 2 and 3, spaces."""
     plain = text.translate(_LOOKALIKES)
+    plain = re.sub("(?<=[A-Za-z])[\u00b7\u22c5](?=[A-Za-z])", " ", plain)
     plain = re.sub("(?<=[A-Za-z])\u00b2", "2", re.sub("(?<=[A-Za-z])\u00b3", "3", plain))
     return " ".join(plain.split())
 

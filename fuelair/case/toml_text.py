@@ -12,7 +12,7 @@ import tomllib
 from pathlib import Path
 from typing import Any, Final
 
-from fuelair.case_fields import nearest
+from fuelair.case.fields import nearest
 from fuelair.errors import InputError, Problem
 
 LARGEST_FILE: Final = 1_000_000  # bytes; a case is a page of text
@@ -162,11 +162,11 @@ class _Scanner:
             last = number == len(parts) - 1
             if many and last:
                 arrays[path] = arrays.get(path, -1) + 1
-                self._note(path, start)
+            self._note(path, start)
             if path in arrays:
                 path = (*path, arrays[path])
+                self._note(path, start)
         self.place += 2 if many else 1
-        self._note(path, start)
         return path
 
     def _dotted(self) -> list[str]:

@@ -7,8 +7,8 @@ import json
 from pydantic import BaseModel
 
 from fuelair import resources
-from fuelair.case_fields import Kind, Within, kind_of, nearest
-from fuelair.case_schema import SECTIONS
+from fuelair.case.fields import Kind, Within, kind_of, nearest
+from fuelair.case.schema import SECTIONS
 from fuelair.errors import InputError, Problem
 from fuelair.quantities import in_unit
 
@@ -50,9 +50,8 @@ def _with_comments(text: str) -> str:
         written = {line.partition("=")[0].strip() for line in body.splitlines()}
         comments = _comments(section, written)
         parts.append("\n".join([f"[{section}]{body.rstrip()}", *comments]))
-    for section in SECTIONS:
-        if section not in shown:
-            parts.append("\n".join([f"# [{section}]", *_comments(section, set())]))
+    unused = [section for section in SECTIONS if section not in shown]
+    parts += ["\n".join([f"# [{section}]", *_comments(section, set())]) for section in unused]
     return "\n\n".join(parts) + "\n"
 
 

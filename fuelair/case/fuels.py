@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from fuelair import fuel
-from fuelair.case_schema import BlendPart, FuelSection, OwnFuel
+from fuelair.case.schema import BlendPart, FuelSection, OwnFuel
 
 _ELEMENTS = ("carbon", "hydrogen", "oxygen", "nitrogen", "sulfur")
 

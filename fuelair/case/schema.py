@@ -12,7 +12,7 @@ from typing import Annotated, Any, Final, Literal, get_args
 
 from pydantic import BaseModel, ConfigDict, Field
 
-from fuelair.case_fields import Choice, Text, Whole, Within
+from fuelair.case.fields import Choice, Text, Whole, Within
 
 Admission = Literal["premixed", "port-liquid", "early-direct", "direct"]
 HeatAddition = Literal["constant-volume", "constant-pressure", "pressure-limited"]

@@ -2,7 +2,7 @@
 
 A :class:`Case` is built from a file, from TOML text or from a dictionary. Every mistake found goes into
 one `fuelair.errors.InputError`, each with its file, line, the line quoted, key, value and allowed range.
-Sections and keys are described in `fuelair.case_schema`, rules between keys in `fuelair.case_rules`.
+Sections and keys are described in `fuelair.case.schema`, rules between keys in `fuelair.case.rules`.
 """
 
 from __future__ import annotations
@@ -13,9 +13,9 @@ from typing import Annotated, Any, Self
 
 from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, ValidationError
 
-from fuelair import case_defaults, case_problems, case_rules, case_toml
-from fuelair.case_fields import Text
-from fuelair.case_schema import (
+from fuelair.case import defaults, problems, rules, toml_text
+from fuelair.case.fields import Text
+from fuelair.case.schema import (
     SECTIONS,
     ChargeSection,
     CombustionSection,
@@ -61,19 +61,22 @@ class Case(BaseModel):
         data = {key: _plain(value) for key, value in data.items()}
         written = dict(_leaves(data))
         zero = _gauge_zero(data)
-        draft = case_rules.Draft(written, case_problems.sound(written, zero))
-        problems = case_rules.check(draft)
-        if not problems:
-            for path, value in case_defaults.follow(draft).items():
-                section, _, key = path.partition(".")
-                if isinstance(data.get(section), dict):
-                    data[section][key] = value
+        draft = rules.Draft(written, problems.sound(written, zero))
+        mistakes = rules.check(draft)
+        following = {} if mistakes else defaults.follow(draft)
+        for path, value in following.items():
+            section, _, key = path.partition(".")
+            if isinstance(data.get(section), dict):
+                data[section][key] = value
         try:
             self.__pydantic_validator__.validate_python(data, self_instance=self, context={"ambient_pressure": zero})
         except ValidationError as error:
-            problems = case_problems.translate(error, data, type(self)) + problems
-        if problems:
-            raise InputError(*problems)
+            mistakes = problems.translate(error, data, type(self)) + mistakes
+        if mistakes:
+            raise InputError(*mistakes)
+        for path in following:
+            section, _, key = path.partition(".")
+            getattr(self, section).model_fields_set.discard(key)  # a default, though it came as a value
         self._written, self._raw = frozenset(written), written
 
     def __eq__(self, other: object) -> bool:
@@ -94,20 +97,20 @@ class Case(BaseModel):
         InputError : the file cannot be read, is not TOML, or the case is wrong.
         """
         place = Path(path)
-        return cls.from_toml(case_toml.read_text(place), name=str(path))
+        return cls.from_toml(toml_text.read_text(place), name=str(path))
 
     @classmethod
     def from_toml(cls, text: str, name: str = "<text>") -> Self:
         """Return the case in TOML text; ``name`` is the file that errors name."""
-        data = case_toml.load(text, name)
+        data = toml_text.load(text, name)
         try:
             case = cls.from_dict(data)
         except InputError as error:
-            problems = case_problems.place(error.problems, text, name)
+            mistakes = problems.place(error.problems, text, name)
         else:
             case._text, case._file = text, name
             return case
-        raise InputError(*problems)
+        raise InputError(*mistakes)
 
     @classmethod
     def from_dict(cls, data: Mapping[str, Any]) -> Self:
@@ -141,7 +144,7 @@ class Case(BaseModel):
 
     def place(self, problem: Problem) -> Problem:
         """Return a problem found later with file, line and the line quoted, if this case came from a text."""
-        return case_problems.place((problem,), self._text, self._file)[0] if self._text else problem
+        return problems.place((problem,), self._text, self._file)[0] if self._text else problem
 
     def resolved(self) -> dict[str, Any]:
         """Return every key that has a value, written or default, in stored units.
@@ -158,13 +161,13 @@ class Case(BaseModel):
 
     def to_toml(self) -> str:
         """Return TOML that reads back to the same case; defaults stand in it as comments."""
-        return case_toml.dump(self._as_written(), self.resolved(), self.defaulted)
+        return toml_text.dump(self._as_written(), self.resolved(), self.defaulted)
 
     @classmethod
     def json_schema(cls) -> dict[str, Any]:
         """Return the JSON Schema of the case file as written (units as text, or plain numbers)."""
         schema = cls.model_json_schema(mode="validation")
-        return {"$schema": SCHEMA_DIALECT, **case_problems.without_nulls(schema), "title": "fuelair case"}
+        return {"$schema": SCHEMA_DIALECT, **problems.without_nulls(schema), "title": "fuelair case"}
 
     def _as_written(self) -> dict[str, Any]:
         everything, kept = self.resolved(), self._written
@@ -203,6 +206,6 @@ def _gauge_zero(data: Mapping[str, Any]) -> float:
     if not isinstance(charge, Mapping) or not any(is_gauge(item) for _, item in _leaves(data)):
         return STANDARD_ATMOSPHERE
     keys = ("ambient_pressure", "altitude", "reference")
-    found = case_problems.sound({f"charge.{key}": charge[key] for key in keys if key in charge}, STANDARD_ATMOSPHERE)
-    outside = case_defaults.ambient(found.get("charge.altitude"), found.get("charge.reference"))
+    found = problems.sound({f"charge.{key}": charge[key] for key in keys if key in charge}, STANDARD_ATMOSPHERE)
+    outside = defaults.ambient(found.get("charge.altitude"), found.get("charge.reference"))
     return float(found.get("charge.ambient_pressure", outside[0]))

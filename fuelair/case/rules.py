@@ -10,7 +10,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import replace
 from typing import Any, Final
 
-from fuelair.case_fields import nearest
+from fuelair.case.fields import nearest
 from fuelair.errors import InputError, Problem
 
 AMOUNTS: Final = (
@@ -261,9 +261,11 @@ def _blend(draft: Draft) -> Iterator[Problem]:
         if mass == volume:
             message = "needs exactly one of mass_fraction and volume_fraction"
             yield Problem(message, f"fuel.blend[{number}]")
+    if any(mass == volume for mass, volume in bases):
+        return
     if len({mass for mass, _ in bases}) > 1:
         yield Problem("mass_fraction and volume_fraction are mixed", "fuel.blend", None, "the same kind for all parts")
-    elif all(mass != volume for mass, volume in bases):
+    else:
         yield from _as_fuel_sees_it(lambda: _fuel_record(draft, "blend"))
 
 
@@ -273,9 +275,9 @@ def _own(draft: Draft) -> Iterator[Problem]:
 
 
 def _fuel_record(draft: Draft, kind: str) -> object:
-    from fuelair import case_fuel
+    from fuelair.case import fuels
 
-    return case_fuel.blend(draft.get("fuel.blend")) if kind == "blend" else case_fuel.own(draft.get("fuel.own"))
+    return fuels.blend(draft.get("fuel.blend")) if kind == "blend" else fuels.own(draft.get("fuel.own"))
 
 
 def _as_fuel_sees_it(build: Callable[[], object]) -> Iterator[Problem]:

@@ -8,9 +8,9 @@ from typing import Any
 
 from pydantic import BaseModel, TypeAdapter, ValidationError
 
-from fuelair import case_toml
-from fuelair.case_fields import OWN_ERROR, kind_of, nearest
-from fuelair.case_schema import LATER_SECTIONS, LEAST, SECTIONS, BlendPart, OwnFuel
+from fuelair.case import toml_text
+from fuelair.case.fields import OWN_ERROR, kind_of, nearest
+from fuelair.case.schema import LATER_SECTIONS, LEAST, SECTIONS, BlendPart, OwnFuel
 from fuelair.errors import Problem
 
 Path = tuple[str | int, ...]
@@ -111,15 +111,13 @@ def dotted(path: Path) -> str:
 
 
 def _split(key: str) -> Path:
-    parts: list[str | int] = []
-    for piece in key.replace("[", ".[").split("."):
-        parts.append(int(piece[1:-1]) if piece.startswith("[") and piece[1:-1].isdigit() else piece)
-    return tuple(parts)
+    pieces = key.replace("[", ".[").split(".")
+    return tuple(int(piece[1:-1]) if piece.startswith("[") and piece[1:-1].isdigit() else piece for piece in pieces)
 
 
 def place(problems: Iterable[Problem], text: str, file: str) -> list[Problem]:
     """Return the problems with file, line and quoted line, in the order of the file."""
-    lines = {dotted(path): line for path, line in reversed(case_toml.key_lines(text).items())}
+    lines = {dotted(path): line for path, line in reversed(toml_text.key_lines(text).items())}
     placed = []
     for problem in problems:
         path = _split(problem.key)
@@ -127,7 +125,7 @@ def place(problems: Iterable[Problem], text: str, file: str) -> list[Problem]:
         while path and not line:
             line = lines.get(dotted(path), 0)
             path = path[:-1]
-        placed.append(replace(problem, file=file, line=line, quoted=case_toml.quote(text, line) if line else ""))
+        placed.append(replace(problem, file=file, line=line, quoted=toml_text.quote(text, line) if line else ""))
     return sorted(placed, key=lambda problem: problem.line or 10**9)
 
 

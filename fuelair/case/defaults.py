@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from typing import Any
 
-from fuelair.case_rules import INTAKE_PAIR, TRAPPED_PAIR, Draft
-from fuelair.case_schema import BOTTOM_BEFORE, GAS_EXCHANGE_CENTRE
+from fuelair.case.rules import INTAKE_PAIR, TRAPPED_PAIR, Draft
+from fuelair.case.schema import BOTTOM_BEFORE, GAS_EXCHANGE_CENTRE
 from fuelair.quantities import STANDARD_ATMOSPHERE
 
 
 def follow(draft: Draft) -> dict[str, Any]:
-    """Return the defaults that follow from other keys; to be called on a sound draft."""
+    """Return the defaults that follow from other keys; None-safe, so a draft need not be sound."""
     two_stroke = draft.get("engine.strokes_per_cycle", 4) == 2
     intake = draft.has("charge.intake_pressure")
     pressure, temperature = (draft.get(key) for key in (INTAKE_PAIR if intake else TRAPPED_PAIR))
@@ -18,7 +18,7 @@ def follow(draft: Draft) -> dict[str, Any]:
     defaults: dict[str, Any] = {
         "engine.exhaust_closing": BOTTOM_BEFORE if two_stroke else GAS_EXCHANGE_CENTRE,
         "charge.exhaust_pressure": pressure,
-        "charge.egr_temperature": temperature if draft.get("charge.egr_fraction", 0.0) > 0.0 else None,
+        "charge.egr_temperature": temperature if draft.get("charge.egr_fraction") else None,
         "charge.residual_fraction": 0.0 if efficiency is None else 1.0 - efficiency,
     }
     outside = ambient(draft.get("charge.altitude"), draft.get("charge.reference"))

@@ -1,0 +1,117 @@
+"""Result files of an assessment: JSON, CSV with units in the header, the resolved case, a log.
+
+Everything is written to a fresh folder first and moved into place when it is complete.
+"""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import os
+import shutil
+import tempfile
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any
+
+from fuelair.assessment import Assessment, flat_state
+from fuelair.errors import InputError, Problem
+from fuelair.report.tables import CAUTION
+
+
+def as_json(a: Assessment) -> str:
+    """The whole assessment as JSON text (strict: null, never NaN)."""
+    return json.dumps(a.to_dict(), indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+
+
+def contents(a: Assessment) -> dict[str, str]:
+    """File name -> text of every result file."""
+    models = [{"model": m, "status": a.status(m).label, **a.figures(m)} for m in a.results]
+    states = [{"model": m, **flat_state(s)} for m in a.results for s in a.to_states(m)]
+    steps = [{"from": s.lower, "to": s.upper, "assumption": s.assumption, **s.change} for s in a.ladder]
+    over = [
+        {"model": m, "quantity": k, **both} for m, quantities in a.overprediction.items() for k, both in quantities.items()
+    ]
+    return {
+        "assessment.json": as_json(a), "models.csv": _csv(models), "states.csv": _csv(states), "ladder.csv": _csv(steps),
+        "overprediction.csv": _csv(over), "case.toml": a.case.to_toml(), "log.txt": log(a),
+    }
+
+
+def log(a: Assessment) -> str:
+    """Versions, ledgers, warnings and sources as text."""
+    rows = [a.verdict, "", *(f"{k}: {v}" for k, v in a.versions.items()), f"gas engine: {a.engine}", f"headline: {a.headline}", ""]
+    rows += ["ledger (relative residuals):"]
+    for model, result in a.results.items():
+        rows += [f"  {model}: " + ", ".join(f"{k} {float(v[0]):.1e}" for k, v in result.ledger.items())]
+    rows += ["", "warnings:", *(f"  {w}" for w in a.warnings), "", "sources:"]
+    rows += [f"  {s.key}: {s.reference} [{s.standing}]" for s in a.sources]
+    return "\n".join([*rows, "", CAUTION, ""])
+
+
+def write_folder(a: Assessment, folder: Path) -> list[Path]:
+    """Write every result file into ``folder`` (made if missing); returns their paths.
+
+    Raises
+    ------
+    InputError : the folder cannot be made or written; nothing is left behind.
+    """
+    texts = contents(a)
+    try:
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        staging = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
+    except OSError as error:
+        raise _refused(folder, error) from None
+    try:
+        for name, text in texts.items():
+            (staging / name).write_text(text, encoding="utf-8", newline="")
+        staging.chmod(0o755)
+        folder.mkdir(exist_ok=True)
+        for name in texts:
+            os.replace(staging / name, folder / name)
+    except OSError as error:
+        raise _refused(folder, error) from None
+    finally:
+        shutil.rmtree(staging, ignore_errors=True)
+    return [folder / name for name in texts]
+
+
+def write_text(path: Path, text: str, key: str = "--json") -> None:
+    """Write one file by way of a temporary neighbour, so that it is whole or not there.
+
+    Raises
+    ------
+    InputError : it cannot be written.
+    """
+    try:
+        handle, name = tempfile.mkstemp(prefix=f".{path.name}-", dir=path.parent)
+    except OSError as error:
+        raise _refused(path, error, key) from None
+    try:
+        with os.fdopen(handle, "w", encoding="utf-8", newline="") as file:
+            file.write(text)
+        os.chmod(name, 0o644)
+        os.replace(name, path)
+    except OSError as error:
+        Path(name).unlink(missing_ok=True)
+        raise _refused(path, error, key) from None
+    except BaseException:
+        Path(name).unlink(missing_ok=True)
+        raise
+
+
+def _refused(path: Path, error: OSError, key: str = "--out") -> InputError:
+    return InputError(Problem(f"cannot write: {error.strerror or error}", key, str(path), "a place you may write to"))
+
+
+def _csv(rows: Iterable[dict[str, Any]]) -> str:
+    rows = list(rows)
+    columns: dict[str, None] = {}
+    for row in rows:
+        columns |= dict.fromkeys(row)
+    out = io.StringIO()
+    writer = csv.DictWriter(out, list(columns), restval="", lineterminator="\n")
+    writer.writeheader()
+    writer.writerows({k: ("" if v is None else v) for k, v in row.items()} for row in rows)
+    return out.getvalue()
