@@ -80,7 +80,10 @@ def models(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[s
 def companions(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[str, dict[str, CycleResult]]:
     """Air-standard cycles on another basis: the same cut-off ratio, and for rich charges heat limited by oxygen."""
     charge, settings = headline.charge, prepared.settings
-    airs = {"air-cold": air_standard.ColdAir(), "air-variable": air_standard.variable_air(engine, charge.recipe.air)}
+    airs: dict[str, air_standard.StateOf] = {
+        "air-cold": air_standard.ColdAir(),
+        "air-variable": air_standard.variable_air(engine, charge.recipe.air),
+    }
     out: dict[str, dict[str, CycleResult]] = {}
     cutoff = headline.result.figures["cutoff_ratio"]
     if bool(headline.burn.limited[0]):
@@ -101,8 +104,10 @@ def _refuse_unsolved(case: Case, prepared: Prepared, result: CycleResult) -> Non
     if status is Status.LIMIT_BELOW_COMPRESSION:
         reached = float(result.figures["compression_pressure_Pa"][0]) / 1e5
         problem = Problem(
-            "lies below the compression pressure of the headline model", "combustion.pressure_limit",
-            case.written("combustion.pressure_limit"), f"above {reached:.1f} bar, the compression pressure of {prepared.headline}",
+            "lies below the compression pressure of the headline model",
+            "combustion.pressure_limit",
+            case.written("combustion.pressure_limit"),
+            f"above {reached:.1f} bar, the compression pressure of {prepared.headline}",
             "raise the limit, or lower compression_ratio or the trapped pressure",
         )
         raise InputError(case.place(problem))
@@ -117,12 +122,29 @@ def _gather(
     exhaust_figures = outputs.exhaust_figures(prepared, headline, engine)
     flame = outputs.stoichiometric_flame_temperature(headline, engine)
     draft = Assessment(
-        case=case, fuel=prepared.fuel, ambient=prepared.ambient, charge=headline.charge, headline=prepared.headline,
-        results=results, companions=companions(prepared, engine, headline), ladder=tuple(ladder.steps(results)),
-        overprediction=ladder.overprediction(results), exergy=balance, engine_figures=engine_figures,
-        exhaust_figures=exhaust_figures, flame_temperature=flame, swept_volume=prepared.swept_volume, engine=engine.name,
-        versions={"fuelair": __version__, "numpy": np.__version__, **data_versions(),
-                  "species_table": headline.charge.recipe.table.digest},
-        warnings=(), sources=(), verdict="",
+        case=case,
+        fuel=prepared.fuel,
+        ambient=prepared.ambient,
+        charge=headline.charge,
+        headline=prepared.headline,
+        results=results,
+        companions=companions(prepared, engine, headline),
+        ladder=tuple(ladder.steps(results)),
+        overprediction=ladder.overprediction(results),
+        exergy=balance,
+        engine_figures=engine_figures,
+        exhaust_figures=exhaust_figures,
+        flame_temperature=flame,
+        swept_volume=prepared.swept_volume,
+        engine=engine.name,
+        versions={
+            "fuelair": __version__,
+            "numpy": np.__version__,
+            **data_versions(),
+            "species_table": headline.charge.recipe.table.digest,
+        },
+        warnings=(),
+        sources=(),
+        verdict="",
     )
     return replace(draft, warnings=tuple(warnings(draft)), sources=tuple(sources(draft)), verdict=verdict(draft))

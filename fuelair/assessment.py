@@ -98,8 +98,13 @@ class Assessment:
         for point in result.points:
             s = point.state
             row: dict[str, Any] = {
-                "state": point.name, "T_K": _number(s.T[0]), "p_Pa": _number(s.p[0]), "v_m3_per_kg": _number(s.v[0]),
-                "u_J_per_kg": _number(s.u[0]), "h_J_per_kg": _number(s.h[0]), "s_J_per_kgK": _number(s.s[0]),
+                "state": point.name,
+                "T_K": _number(s.T[0]),
+                "p_Pa": _number(s.p[0]),
+                "v_m3_per_kg": _number(s.v[0]),
+                "u_J_per_kg": _number(s.u[0]),
+                "h_J_per_kg": _number(s.h[0]),
+                "s_J_per_kgK": _number(s.s[0]),
                 "mass_per_trapped": _number(point.mass[0]),
                 "V_m3": None if scale is None else _number(point.volume[0] * scale),
                 "mass_kg": None if scale is None else _number(point.mass[0] * scale),
@@ -123,18 +128,24 @@ class Assessment:
             "stoichiometric_air_fuel_ratio": recipe.stoichiometric_air_fuel_ratio,
             "oxygen_excess_ratio": _number(c.oxygen_excess_ratio()[0]),
             "trapped_O2_mole_fraction": _number(c.trapped_oxygen()[0]),
-            "trapped_temperature_K": _number(c.trapped.T[0]), "trapped_pressure_Pa": _number(c.trapped.p[0]),
-            "residual_fraction": _number(c.residual_fraction[0]), "egr_fraction": _number(recipe.egr_fraction[0]),
-            "fuel_per_trapped_mass": _number(c.fuel_mass[0]), "fresh_air_per_trapped_mass": fresh,
+            "trapped_temperature_K": _number(c.trapped.T[0]),
+            "trapped_pressure_Pa": _number(c.trapped.p[0]),
+            "residual_fraction": _number(c.residual_fraction[0]),
+            "egr_fraction": _number(recipe.egr_fraction[0]),
+            "fuel_per_trapped_mass": _number(c.fuel_mass[0]),
+            "fresh_air_per_trapped_mass": fresh,
             "recirculated_per_trapped_mass": _number(c.recirculated[0]),
-            "humidity_ratio": _number(recipe.humidity[0]), "drained_water_per_dry_air": _number(c.drained_water[0]),
+            "humidity_ratio": _number(recipe.humidity[0]),
+            "drained_water_per_dry_air": _number(c.drained_water[0]),
             "receiver_dew_point_K": _number(c.receiver_dew_point[0]),
             "fuel_vapour_saturation_ratio": _number(c.saturation_ratio[0]),
             "heat_added_J_per_kg": _number(c.heat_added[0]),
             "lower_heating_value_J_per_kg": _number(c.lower_heating_value[0]),
             "lower_heating_value_other_phase_J_per_kg": _number(self.other_heating_value),
-            "fuel_pump_work_J_per_kg_fuel": _number(self.pump_work), "wall_heat_J_per_kg": _number(c.wall_heat[0]),
-            "ambient_pressure_Pa": self.ambient.pressure, "ambient_temperature_K": self.ambient.temperature,
+            "fuel_pump_work_J_per_kg_fuel": _number(self.pump_work),
+            "wall_heat_J_per_kg": _number(c.wall_heat[0]),
+            "ambient_pressure_Pa": self.ambient.pressure,
+            "ambient_temperature_K": self.ambient.temperature,
             "ambient_relative_humidity": self.ambient.relative_humidity,
         }
 
@@ -162,8 +173,18 @@ class Assessment:
     def exergy_figures(self) -> dict[str, Any]:
         """Exergy balance in J per kg trapped, and the fuel's exergy basis."""
         e = self.exergy
-        names = ("fuel", "trapped", "burned", "release", "work", "destroyed_by_entropy", "destroyed_by_balance", "leaving",
-                 "remaining", "destroyed_blowdown")
+        names = (
+            "fuel",
+            "trapped",
+            "burned",
+            "release",
+            "work",
+            "destroyed_by_entropy",
+            "destroyed_by_balance",
+            "leaving",
+            "remaining",
+            "destroyed_blowdown",
+        )
         out: dict[str, Any] = {f"{k}_J_per_kg": _number(getattr(e, k)[0]) for k in names}
         out["fuel_J_per_kg_fuel"] = _number(e.fuel_per_kg[0])
         out["destroyed_share_of_fuel"] = _number(e.destroyed_by_entropy[0] / e.fuel[0])
@@ -173,8 +194,13 @@ class Assessment:
     def to_dict(self) -> dict[str, Any]:
         """Everything as plain numbers, text, lists and dictionaries; null where there is no figure."""
         return {
-            "format": FORMAT, "versions": dict(self.versions), "engine": self.engine, "headline": self.headline,
-            "verdict": self.verdict, "case": self.case.resolved(), "defaulted": sorted(self.case.defaulted),
+            "format": FORMAT,
+            "versions": dict(self.versions),
+            "engine": self.engine,
+            "headline": self.headline,
+            "verdict": self.verdict,
+            "case": self.case.resolved(),
+            "defaulted": sorted(self.case.defaulted),
             "charge": self.charge_figures(),
             "models": {m: self._model(m) for m in self.results},
             "companions": {
@@ -183,7 +209,8 @@ class Assessment:
             },
             "states": {m: self.to_states(m) for m in self.results},
             "ladder": [{"from": s.lower, "to": s.upper, "assumption": s.assumption, **s.change} for s in self.ladder],
-            "overprediction": self.overprediction, "exergy": self.exergy_figures(),
+            "overprediction": self.overprediction,
+            "exergy": self.exergy_figures(),
             "engine_figures": self.engine_figures,
             "exhaust": {**self.exhaust_figures, "stoichiometric_flame_temperature_K": self.flame_temperature},
             "ledger": {m: {k: _number(v[0]) for k, v in r.ledger.items()} for m, r in self.results.items()},
@@ -193,8 +220,12 @@ class Assessment:
 
     def _model(self, model: str) -> dict[str, Any]:
         status, result = self.status(model), self.results[model]
-        return {"status": status.label, "reason": status.reason, **self.figures(model),
-                "flags": sorted(k for k, v in result.flags.items() if bool(v[0]))}
+        return {
+            "status": status.label,
+            "reason": status.reason,
+            **self.figures(model),
+            "flags": sorted(k for k, v in result.flags.items() if bool(v[0])),
+        }
 
 
 def flat_state(state: dict[str, Any]) -> dict[str, Any]:
@@ -205,5 +236,3 @@ def flat_state(state: dict[str, Any]) -> dict[str, Any]:
 
 def _number(value: Any) -> float | None:
     return None if value is None or not math.isfinite(value) else float(value)
-
-

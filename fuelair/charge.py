@@ -226,10 +226,22 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     status[((status == Status.OK) | (status == Status.OUTSIDE_DATA)) & (ratio > 1.0)] = Status.VAPOUR_ABOVE_SATURATION
     status[~(x < 1.0)] = Status.NO_FRESH_CHARGE
     return Charge(
-        recipe=recipe, trapped=trapped, fuel_mass=fuel * share, injected=np.zeros(n) if before else fuel * share,
-        fuel_enthalpy=supply_enthalpy(recipe), dry_air=share, water_in=(fresh_mass - 1.0) * share,
-        recirculated=egr_mass * share, residual_fraction=x, residual_amounts=burned.amounts, drained_water=drained,
-        receiver_dew_point=dew, intake_enthalpy=enthalpy_in, wall_heat=wall, saturation_ratio=ratio, status=status,
+        recipe=recipe,
+        trapped=trapped,
+        fuel_mass=fuel * share,
+        injected=np.zeros(n) if before else fuel * share,
+        fuel_enthalpy=supply_enthalpy(recipe),
+        dry_air=share,
+        water_in=(fresh_mass - 1.0) * share,
+        recirculated=egr_mass * share,
+        residual_fraction=x,
+        residual_amounts=burned.amounts,
+        drained_water=drained,
+        receiver_dew_point=dew,
+        intake_enthalpy=enthalpy_in,
+        wall_heat=wall,
+        saturation_ratio=ratio,
+        status=status,
     )
 
 

@@ -33,7 +33,10 @@ NARROWEST, WIDEST, PIPED = 60, 150, 120
 TRACEBACK_VARIABLE = "FUELAIR_TRACEBACK"
 
 app = typer.Typer(
-    add_completion=False, no_args_is_help=True, pretty_exceptions_enable=False, rich_markup_mode="rich",
+    add_completion=False,
+    no_args_is_help=True,
+    pretty_exceptions_enable=False,
+    rich_markup_mode="rich",
     help="The fuel-air engine cycle beside the air-standard cycles: peak temperature and pressure to expect, and which "
     "assumption costs how many kelvin, bar and percent.",
     epilog="Exit codes: 0 done, 1 some rows failed, 2 the input is wrong, 3 could not be solved, 4 unexpected, 130 interrupted.",
@@ -57,8 +60,10 @@ def main() -> None:
     except Exception as error:
         if os.environ.get(TRACEBACK_VARIABLE):
             traceback.print_exc()
-        _complain(f"unexpected {type(error).__name__}: {error}\nPlease report it with the case file. "
-                  f"{TRACEBACK_VARIABLE}=1 shows where it happened.")
+        _complain(
+            f"unexpected {type(error).__name__}: {error}\nPlease report it with the case file. "
+            f"{TRACEBACK_VARIABLE}=1 shows where it happened."
+        )
         raise SystemExit(4) from None
 
 
@@ -74,10 +79,18 @@ def _version(
 @app.command()
 def assess(
     case: CaseFile,
-    json_file: Annotated[Path | None, typer.Option("--json", metavar="FILE", help="Write everything as JSON; - for standard output, "
-                                                   "where nothing else goes then.")] = None,
-    out: Annotated[Path | None, typer.Option("--out", metavar="FOLDER", help="Write JSON, CSV tables, the resolved case and a log there.")] = None,
-    every_state: Annotated[bool, typer.Option("--every-state", help="Print the states of every model, not only the headline's.")] = False,
+    json_file: Annotated[
+        Path | None,
+        typer.Option(
+            "--json", metavar="FILE", help="Write everything as JSON; - for standard output, where nothing else goes then."
+        ),
+    ] = None,
+    out: Annotated[
+        Path | None, typer.Option("--out", metavar="FOLDER", help="Write JSON, CSV tables, the resolved case and a log there.")
+    ] = None,
+    every_state: Annotated[
+        bool, typer.Option("--every-state", help="Print the states of every model, not only the headline's.")
+    ] = False,
 ) -> None:
     """Run a case through every cycle model and set the results side by side."""
     from fuelair import Case
@@ -113,13 +126,23 @@ def assess(
 @app.command()
 def check(
     case: Annotated[Path | None, typer.Argument(metavar="CASE.toml", help="Case file to validate.")] = None,
-    schema: Annotated[bool, typer.Option("--schema", help="Print the JSON Schema of the case file (for editors) and stop.")] = False,
+    schema: Annotated[
+        bool, typer.Option("--schema", help="Print the JSON Schema of the case file (for editors) and stop.")
+    ] = False,
+    result_schema: Annotated[
+        bool, typer.Option("--result-schema", help="Print the JSON Schema of what assess --json writes and stop.")
+    ] = False,
 ) -> None:
     """Validate a case file without running it, and show every value it resolves to."""
     from fuelair import Case
 
     if schema:
         print(json.dumps(Case.json_schema(), indent=2))
+        return
+    if result_schema:
+        from fuelair.report.schema import assessment_schema
+
+        print(json.dumps(assessment_schema(), indent=2))
         return
     if case is None:
         raise InputError(Problem("no case file given", "CASE.toml", hint="fuelair check CASE.toml, or fuelair check --schema"))
@@ -131,7 +154,9 @@ def check(
 @app.command()
 def new(
     name: Annotated[str | None, typer.Argument(metavar="NAME", help="Demo case to start from; none: list them.")] = None,
-    to: Annotated[Path | None, typer.Option("--to", metavar="FILE", help="File to write; default NAME.toml here; - prints it.")] = None,
+    to: Annotated[
+        Path | None, typer.Option("--to", metavar="FILE", help="File to write; default NAME.toml here; - prints it.")
+    ] = None,
     replace: Annotated[bool, typer.Option("--replace", help="Replace the file if it exists.")] = False,
 ) -> None:
     """Write a commented demo case to start from."""
@@ -155,7 +180,9 @@ def new(
 
 @app.command()
 def fuels(
-    name: Annotated[str | None, typer.Argument(metavar="NAME", help="Show this fuel's card with the source of every value.")] = None,
+    name: Annotated[
+        str | None, typer.Argument(metavar="NAME", help="Show this fuel's card with the source of every value.")
+    ] = None,
 ) -> None:
     """List the fuels, or show one fuel's card."""
     from fuelair import fuel
@@ -196,8 +223,15 @@ def _fuel_list(console: Console) -> None:
     from fuelair import fuel
 
     table = RichTable(box=box.SIMPLE_HEAD, pad_edge=False)
-    for column, justify in (("name", "left"), ("", "left"), ("LHV vapour\nMJ/kg", "right"), ("LHV liquid\nMJ/kg", "right"),
-                            ("kg air\nper kg", "right"), ("H/C", "right"), ("C, H, O\nmass %", "left")):
+    for column, justify in (
+        ("name", "left"),
+        ("", "left"),
+        ("LHV vapour\nMJ/kg", "right"),
+        ("LHV liquid\nMJ/kg", "right"),
+        ("kg air\nper kg", "right"),
+        ("H/C", "right"),
+        ("C, H, O\nmass %", "left"),
+    ):
         table.add_column(column, justify=justify)  # type: ignore[arg-type]
     for name in fuel.names():
         f = fuel.load(name)
@@ -205,8 +239,15 @@ def _fuel_list(console: Console) -> None:
         liquid = f.lower_heating_value_liquid
         ratio = f"{atoms.get('H', 0.0) / atoms['C']:.2f}" if atoms.get("C") else "-"
         parts = ", ".join(f"{100 * w.get(e, 0.0):.1f}" for e in "CHO")
-        table.add_row(name, escape(f.title), f"{f.lower_heating_value_vapour / 1e6:.2f}", "-" if liquid is None else f"{liquid / 1e6:.2f}",
-                      f"{f.stoichiometric_air_fuel_ratio(oxygen_mole_fraction=0.2095, air_molar_mass=28.965):.2f}", ratio, parts)
+        table.add_row(
+            name,
+            escape(f.title),
+            f"{f.lower_heating_value_vapour / 1e6:.2f}",
+            "-" if liquid is None else f"{liquid / 1e6:.2f}",
+            f"{f.stoichiometric_air_fuel_ratio(oxygen_mole_fraction=0.2095, air_molar_mass=28.965):.2f}",
+            ratio,
+            parts,
+        )
     console.print(table)
     console.print("fuelair fuels NAME shows the card with the source of every value.", style="dim")
 
@@ -217,7 +258,10 @@ def _head(console: Console, a: Assessment) -> None:
     console.print(f"[bold]{escape(title)}[/bold]")
     c = a.case.combustion
     limit = f" at {c.pressure_limit / 1e5:g} bar" if c.pressure_limit else ""
-    console.print(f"{escape(a.fuel.name)}, {a.case.fuel.admission}, r = {a.case.engine.compression_ratio:g}, {c.heat_addition}{limit}", style="dim")
+    console.print(
+        f"{escape(a.fuel.name)}, {a.case.fuel.admission}, r = {a.case.engine.compression_ratio:g}, {c.heat_addition}{limit}",
+        style="dim",
+    )
     console.print()
     console.print(Padding(f"[bold]{escape(a.verdict)}[/bold]", (0, 2)))
     console.print()
@@ -228,16 +272,29 @@ def _table(console: Console, table: Table) -> None:
 
 
 def _grid(
-    console: Console, title: str, columns: Iterable[str], rows: Iterable[Iterable[str]], note: str = "", stressed: int | None = None
+    console: Console,
+    title: str,
+    columns: Iterable[str],
+    rows: Iterable[Iterable[str]],
+    note: str = "",
+    stressed: int | None = None,
 ) -> None:
     columns = tuple(columns)
-    grid = RichTable(box=box.SIMPLE_HEAD, title=f"[bold cyan]{escape(title)}[/bold cyan]", title_style="not italic", title_justify="left", pad_edge=False,
-                     show_header=any(columns), show_edge=False)
+    grid = RichTable(
+        box=box.SIMPLE_HEAD,
+        title=f"[bold cyan]{escape(title)}[/bold cyan]",
+        title_style="not italic",
+        title_justify="left",
+        pad_edge=False,
+        show_header=any(columns),
+        show_edge=False,
+    )
     body = [tuple(row) for row in rows]
     for i, name in enumerate(columns):
         numeric = i > 0 and any(columns) and sum(_is_number(row[i]) for row in body) * 2 > len(body)
-        grid.add_column(escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else "",
-                        vertical="bottom")
+        grid.add_column(
+            escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else "", vertical="bottom"
+        )
     for row in body:
         grid.add_row(*(escape(cell) for cell in row))
     console.print(Padding(grid, (0, 2)))

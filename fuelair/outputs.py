@@ -62,9 +62,14 @@ def exhaust_figures(prepared: Prepared, run: Run, engine: Engine) -> dict[str, f
     return {
         "exhaust_temperature_K": float(leaving.T[0]),
         "exhaust_temperature_before_scavenge_air_K": float(run.exhaust.leaving.T[0]),
-        "exhaust_O2_wet": part["O2"], "exhaust_O2_dry": part["O2"] / dry,
-        "exhaust_CO2_wet": part["CO2"], "exhaust_CO2_dry": part["CO2"] / dry, "exhaust_H2O_wet": part["H2O"],
-        "exhaust_CO_dry": part["CO"] / dry, "exhaust_H2_dry": part["H2"] / dry, "exhaust_NO_wet": part["NO"],
+        "exhaust_O2_wet": part["O2"],
+        "exhaust_O2_dry": part["O2"] / dry,
+        "exhaust_CO2_wet": part["CO2"],
+        "exhaust_CO2_dry": part["CO2"] / dry,
+        "exhaust_H2O_wet": part["H2O"],
+        "exhaust_CO_dry": part["CO"] / dry,
+        "exhaust_H2_dry": part["H2"] / dry,
+        "exhaust_NO_wet": part["NO"],
         "exhaust_dew_point_K": dew if np.isfinite(dew) else None,
         "exhaust_equivalence_ratio": exhaust_equivalence_ratio(charge, leaving.amounts),
         "co2_kg_per_J": carbon * float(charge.fuel_mass[0]) / work if work > 0.0 else None,
@@ -82,8 +87,15 @@ def mixed_exhaust(prepared: Prepared, run: Run, engine: Engine) -> GasState:
     fresh = _fresh(charge)
     _, h, _ = mix(table, fresh).thermal(recipe.temperature)
     extra = (charge.dry_air + charge.water_in) * bypass
-    return short_circuit(engine, table, run.exhaust, extra=extra, extra_enthalpy=h, extra_amounts=fresh,
-                         pressure=prepared.settings.exhaust_pressure)
+    return short_circuit(
+        engine,
+        table,
+        run.exhaust,
+        extra=extra,
+        extra_enthalpy=h,
+        extra_amounts=fresh,
+        pressure=prepared.settings.exhaust_pressure,
+    )
 
 
 def _bypass(prepared: Prepared, charge: Charge) -> float:
@@ -150,5 +162,4 @@ def stoichiometric_flame_temperature(run: Run, engine: Engine) -> float | None:
     return float(state.T[0]) if state.status[0] == 0 else None
 
 
-__all__ = ["engine_figures", "exhaust_equivalence_ratio", "exhaust_figures", "mixed_exhaust",
-           "stoichiometric_flame_temperature"]
+__all__ = ["engine_figures", "exhaust_equivalence_ratio", "exhaust_figures", "mixed_exhaust", "stoichiometric_flame_temperature"]

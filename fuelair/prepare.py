@@ -7,8 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from fuelair import air
-from fuelair.case import Case, fuels
 from fuelair.air import Ambient, DryAir
+from fuelair.case import Case, fuels
 from fuelair.charge import Recipe
 from fuelair.crank import kinematics
 from fuelair.cycle.breathing import DEFAULT_FREEZE, Settings
@@ -66,28 +66,47 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
     )
     humidity = air.humidity_ratio(outside.relative_humidity, outside.temperature, outside.pressure, mixture.molar_mass)
     recipe = Recipe(
-        table=build(fuel.vapour), fuel=fuel, air=mixture, admission=case.fuel.admission, equivalence_ratio=_one(START_PHI),
-        humidity=_one(float(humidity)), pressure=_one(pressure), temperature=_one(temperature), from_intake=from_intake,
-        exhaust_pressure=_one(charge.exhaust_pressure), egr_fraction=_one(charge.egr_fraction),
-        egr_temperature=_one(charge.egr_temperature), combustion_efficiency=_one(combustion.combustion_efficiency),
-        fuel_temperature=_one(case.fuel.temperature), fuel_pressure=_one(case.fuel.pressure),
+        table=build(fuel.vapour),
+        fuel=fuel,
+        air=mixture,
+        admission=case.fuel.admission,
+        equivalence_ratio=_one(START_PHI),
+        humidity=_one(float(humidity)),
+        pressure=_one(pressure),
+        temperature=_one(temperature),
+        from_intake=from_intake,
+        exhaust_pressure=_one(charge.exhaust_pressure),
+        egr_fraction=_one(charge.egr_fraction),
+        egr_temperature=_one(charge.egr_temperature),
+        combustion_efficiency=_one(combustion.combustion_efficiency),
+        fuel_temperature=_one(case.fuel.temperature),
+        fuel_pressure=_one(case.fuel.pressure),
         evaporated_by_gas=_one(case.fuel.evaporated_by_gas),
     )
     phi = equivalence_ratio(case, recipe.stoichiometric_air_fuel_ratio)
     swept = _swept_volume(case)
     freeze = case.gas.freeze_temperature
     settings = Settings(
-        volumes=volumes(case), heat_addition=combustion.heat_addition, pressure_limit=_one(combustion.pressure_limit),
+        volumes=volumes(case),
+        heat_addition=combustion.heat_addition,
+        pressure_limit=_one(combustion.pressure_limit),
         freeze_temperature=_one(DEFAULT_FREEZE if freeze is None else freeze),
         residual=None if charge.residual_fraction == "solve" else _one(float(charge.residual_fraction or 0.0)),
-        exhaust_pressure=_one(charge.exhaust_pressure), intake_pressure=_one(pressure), swept_volume=_one(swept),
-        four_stroke=engine.strokes_per_cycle == 4, compression_exponent=case.gas.compression_exponent,
+        exhaust_pressure=_one(charge.exhaust_pressure),
+        intake_pressure=_one(pressure),
+        swept_volume=_one(swept),
+        four_stroke=engine.strokes_per_cycle == 4,
+        compression_exponent=case.gas.compression_exponent,
     )
     return Prepared(
-        fuel=fuel, ambient=outside, recipe=recipe if phi is None else recipe.with_equivalence_ratio(_one(phi)),
-        settings=settings, headline=headline_model(case),
+        fuel=fuel,
+        ambient=outside,
+        recipe=recipe if phi is None else recipe.with_equivalence_ratio(_one(phi)),
+        settings=settings,
+        headline=headline_model(case),
         fuel_mass=None if charge.fuel_mass is None else _one(charge.fuel_mass),
-        cutoff_ratio=None if combustion.cutoff_ratio is None else _one(combustion.cutoff_ratio), swept_volume=swept,
+        cutoff_ratio=None if combustion.cutoff_ratio is None else _one(combustion.cutoff_ratio),
+        swept_volume=swept,
         cycles_per_second=None if engine.speed is None else engine.speed * 2.0 / engine.strokes_per_cycle,
         scavenge_ratio=charge.scavenge_ratio,
     )
@@ -122,7 +141,8 @@ def ambient(case: Case) -> Ambient:
     return Ambient(
         base.pressure if charge.ambient_pressure is None else charge.ambient_pressure,
         base.temperature if charge.ambient_temperature is None else charge.ambient_temperature,
-        base.relative_humidity if charge.relative_humidity is None else charge.relative_humidity, base.source,
+        base.relative_humidity if charge.relative_humidity is None else charge.relative_humidity,
+        base.source,
     )
 
 
@@ -141,9 +161,15 @@ def volumes(case: Case) -> Volumes:
             return outer
         if angle % 360.0 == 0.0 or engine.stroke is None or engine.rod_length is None:
             return inner
-        return float(kinematics.relative_volume(
-            angle, stroke=engine.stroke, rod_length=engine.rod_length, compression_ratio=r, pin_offset=engine.pin_offset,
-        ))
+        return float(
+            kinematics.relative_volume(
+                angle,
+                stroke=engine.stroke,
+                rod_length=engine.rod_length,
+                compression_ratio=r,
+                pin_offset=engine.pin_offset,
+            )
+        )
 
     last = inner if two_stroke or engine.exhaust_closing is None else at(engine.exhaust_closing)
     return Volumes(_one(inner), _one(at(closing)), _one(at(engine.exhaust_opening)), _one(last))
@@ -162,5 +188,3 @@ def _swept_volume(case: Case) -> float | None:
 
 def _one(value: float | None) -> Array:
     return np.array([np.nan if value is None else float(value)])
-
-

@@ -11,9 +11,12 @@ from fuelair.quantities import QUANTITIES, shown
 from fuelair.sources import Source, cite
 
 LIMITS = {
-    "peak_pressure": "peak_pressure_Pa", "peak_temperature": "peak_temperature_K",
-    "compression_pressure": "compression_pressure_Pa", "compression_temperature": "compression_temperature_K",
-    "release_temperature": "release_temperature_K", "release_pressure": "release_pressure_Pa",
+    "peak_pressure": "peak_pressure_Pa",
+    "peak_temperature": "peak_temperature_K",
+    "compression_pressure": "compression_pressure_Pa",
+    "compression_temperature": "compression_temperature_K",
+    "release_temperature": "release_temperature_K",
+    "release_pressure": "release_pressure_Pa",
     "exhaust_temperature": "exhaust_temperature_K",
 }
 """Keys of [limits] -> quantity they bound."""
@@ -33,7 +36,7 @@ def verdict(a: Assessment) -> str:
     text = (
         f"Expect a peak of {shown('peak_temperature_K', f['peak_temperature_K'])} (mass mean) and "
         f"{shown('peak_pressure_Pa', f['peak_pressure_Pa'])}{' (held)' if held else ''}, exhaust at "
-        f"{shown('exhaust_temperature_K', f['exhaust_temperature_K'])} and "
+        f"{shown('exhaust_temperature_K', a.exhaust_figures['exhaust_temperature_K'])} and "
         f"{shown('imep_gross_Pa', f['imep_gross_Pa'])} gross indicated mean pressure at "
         f"{shown('indicated_efficiency', f['indicated_efficiency'])} gross indicated efficiency"
     )
@@ -56,32 +59,40 @@ def warnings(a: Assessment) -> list[str]:
 
 
 def _limits(a: Assessment) -> Iterator[str]:
-    f = a.figures()
+    f = a.figures() | {"exhaust_temperature_K": a.exhaust_figures["exhaust_temperature_K"]}
     for key, quantity in LIMITS.items():
         limit, value = getattr(a.case.limits, key), f[quantity]
         if limit is not None and value is not None and value > limit * (1.0 + LIMIT_SLACK):
-            yield (f"{QUANTITIES[quantity].label} {shown(quantity, value)} exceeds limits.{key} = "
-                   f"{shown(quantity, limit)} ({a.headline}).")
+            yield (
+                f"{QUANTITIES[quantity].label} {shown(quantity, value)} exceeds limits.{key} = "
+                f"{shown(quantity, limit)} ({a.headline})."
+            )
 
 
 def _mixture(a: Assessment) -> Iterator[str]:
     oxygen = float(a.charge.oxygen_excess_ratio()[0])
     if float(a.charge.oxygen_left()[0]) < -RICH:
-        yield (f"Rich: the trapped oxygen burns only {oxygen:.1%} of the fuel; carbon monoxide and hydrogen leave with the "
-               "exhaust. Air-standard companions with oxygen-limited heat are in the results.")
+        yield (
+            f"Rich: the trapped oxygen burns only {oxygen:.1%} of the fuel; carbon monoxide and hydrogen leave with the "
+            "exhaust. Air-standard companions with oxygen-limited heat are in the results."
+        )
     result = a.results[a.headline]
     if result.table is not None:
         activity = float(carbon_activity(result.table, result.point("burned").state)[0])
         released = float(carbon_activity(result.table, result.point("release").state)[0])
         if max(activity, released) > 1.0 - 1e-3:
-            yield ("Solid carbon would form in equilibrium during expansion; composition is frozen from where it would begin. "
-                   "Expect soot.")
+            yield (
+                "Solid carbon would form in equilibrium during expansion; composition is frozen from where it would begin. "
+                "Expect soot."
+            )
     if bool(result.flags["back-flow"][0]):
         yield "Release pressure is below exhaust pressure: exhaust flows back into the cylinder when the valve opens."
     drained = float(a.charge.drained_water[0])
     if drained > 1e-9:
-        yield (f"{drained * 1e3:.1f} g of water per kg of dry air condense in the receiver or the exhaust cooler and are drained; "
-               f"dew point after that {float(a.charge.receiver_dew_point[0]) - 273.15:.0f} degC.")
+        yield (
+            f"{drained * 1e3:.1f} g of water per kg of dry air condense in the receiver or the exhaust cooler and are drained; "
+            f"dew point after that {float(a.charge.receiver_dew_point[0]) - 273.15:.0f} degC."
+        )
     ratio = float(a.charge.saturation_ratio[0])
     if ratio > 0.9:
         yield f"The fuel vapour is at {ratio:.0%} of saturation in the trapped charge: a little colder and it condenses."
@@ -96,14 +107,18 @@ def _validity(a: Assessment) -> Iterator[str]:
         yield f"Compression ratio {r:g} is outside the usual {low:g} to {high:g} for this admission (common practice)."
     density = 1.0 / float(a.charge.trapped.v[0]) / 1.16
     if density > DENSE:
-        yield ("Ideal-gas law: for air at r = 16 it puts compression pressure 2 % (1 bar), 7 % (3 bar) and 13 % (6 bar trapped) "
-               "below the reference equation of state (Lemmon et al. 2000); peak pressure is as much too low wherever no limit holds it.")
+        yield (
+            "Ideal-gas law: for air at r = 16 it puts compression pressure 2 % (1 bar), 7 % (3 bar) and 13 % (6 bar trapped) "
+            "below the reference equation of state (Lemmon et al. 2000); peak pressure is as much too low wherever no limit holds it."
+        )
     for model, result in a.results.items():
         status = Status(int(result.status[0]))
         if status is not Status.OK:
             yield f"{model}: {status.label}: {status.reason}."
-    yield ("Ideal cycle: instant adiabatic combustion, no heat to the walls, no flow losses. It is a ceiling for work and "
-           "efficiency; common practice puts real indicated efficiency at 0.80 to 0.90 of it.")
+    yield (
+        "Ideal cycle: instant adiabatic combustion, no heat to the walls, no flow losses. It is a ceiling for work and "
+        "efficiency; common practice puts real indicated efficiency at 0.80 to 0.90 of it."
+    )
 
 
 def sources(a: Assessment) -> list[Source]:

@@ -103,9 +103,7 @@ def _build_units() -> dict[str, dict[str, Unit]]:
         for dimension, factors in _FACTORS.items()
     }
     for name in _GAUGED:
-        units["pressure"][f"{name}(g)"] = Unit(
-            f"{name}(g)", "pressure", Fraction(_FACTORS["pressure"][name]), gauge=True
-        )
+        units["pressure"][f"{name}(g)"] = Unit(f"{name}(g)", "pressure", Fraction(_FACTORS["pressure"][name]), gauge=True)
     return units
 
 
@@ -241,9 +239,7 @@ def _refuse_unit(value: str, number: str, name: str, dimension: str) -> NoReturn
         _refuse("a proportion such as 17:1 carries no unit", value, dimension, hint)
     known = next((other for other, units in UNITS.items() if name in units), None)
     if known is not None:
-        _refuse(
-            f"{name} is a unit of {known}, not of {dimension}", value, dimension, f'"{number} {_common(dimension)}"'
-        )
+        _refuse(f"{name} is a unit of {known}, not of {dimension}", value, dimension, f'"{number} {_common(dimension)}"')
     by_lower = {unit.lower(): unit for unit in reversed(list(own))} | _ALIASES.get(dimension, {})
     near = difflib.get_close_matches(name.lower(), by_lower, n=1, cutoff=0.5)
     hint = f'"{number} {by_lower[near[0]]}"' if near else _example(dimension)

@@ -131,9 +131,7 @@ class Within(Kind):
     def _range_hint(self, value: object, number: float) -> str:
         """For a plain number that fits in another unit: that unit; for an angle: the same crank position."""
         if self.dimension == "angle":
-            turned = [
-                number + turn for turn in (-720.0, 720.0, -360.0, 360.0) if self.low <= number + turn <= self.high
-            ]
+            turned = [number + turn for turn in (-720.0, 720.0, -360.0, 360.0) if self.low <= number + turn <= self.high]
             return f'"{turned[0]:g} deg" (0 is the firing dead centre)' if turned else "0 is the firing dead centre"
         if self.dimension == "ratio" or not isinstance(value, Real):
             return ""

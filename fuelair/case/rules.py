@@ -101,9 +101,7 @@ def _residual(draft: Draft) -> Iterator[Problem]:
         return
     if draft.get("engine.strokes_per_cycle", 4) == 2:
         message = '"solve" is for four-stroke engines, and engine.strokes_per_cycle is 2'
-        yield Problem(
-            message, key, "solve", "a number", "charge.scavenging_efficiency, or the residual fraction itself"
-        )
+        yield Problem(message, key, "solve", "a number", "charge.scavenging_efficiency, or the residual fraction itself")
     elif not draft.given(*INTAKE_PAIR):
         message = '"solve" needs the receiver state charge.intake_pressure and charge.intake_temperature'
         beside = f", not {_and(draft.given(*TRAPPED_PAIR))}" if draft.given(*TRAPPED_PAIR) else ""
@@ -141,9 +139,7 @@ def _heat_addition(draft: Draft) -> Iterator[Problem]:
     limit, cutoff, mode_key = "combustion.pressure_limit", "combustion.cutoff_ratio", "combustion.heat_addition"
     mode = draft.get(mode_key)
     if mode == "pressure-limited" and not draft.has(limit):
-        yield Problem(
-            f'{mode_key} = "pressure-limited" needs {limit}', mode_key, mode, hint='pressure_limit = "180 bar"'
-        )
+        yield Problem(f'{mode_key} = "pressure-limited" needs {limit}', mode_key, mode, hint='pressure_limit = "180 bar"')
     if mode in ("constant-volume", "constant-pressure") and draft.has(limit):
         message = f'has no meaning with {mode_key} = "{mode}"'
         hint = 'heat_addition = "pressure-limited"; a limit to be warned of is limits.peak_pressure'
@@ -202,9 +198,7 @@ def _geometry(draft: Draft) -> Iterator[Problem]:
     if draft.has("charge.fuel_mass") and not draft.has(bore) and not draft.has(stroke):
         message = f"needs {bore} and {stroke}: without them the mass of the charge is not known"
         yield Problem(message, "charge.fuel_mass", draft.raw("charge.fuel_mass"))
-    timed = draft.given(
-        "engine.intake_closing", "engine.exhaust_opening", "engine.exhaust_closing", "engine.pin_offset"
-    )
+    timed = draft.given("engine.intake_closing", "engine.exhaust_opening", "engine.exhaust_closing", "engine.pin_offset")
     lacking = [key for key in (stroke, rod) if not draft.has(key)]
     if timed and lacking:
         yield Problem(f"needs {_and(lacking)} to find the volume at an angle", timed[0], draft.raw(timed[0]))

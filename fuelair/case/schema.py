@@ -59,9 +59,7 @@ class EngineSection(Section):
         "connecting rod, eye to eye; needed with a valve or port timing", example="320 mm"
     )
     cylinders: Annotated[int, Whole(1, 32)] = _key("number of cylinders", 1)
-    compression_ratio: Annotated[float, Within("ratio", 1.5, 60.0)] = _needed(
-        "geometric: largest over smallest cylinder volume"
-    )
+    compression_ratio: Annotated[float, Within("ratio", 1.5, 60.0)] = _needed("geometric: largest over smallest cylinder volume")
     speed: Annotated[float | None, Within("speed", 0.2, 500.0, "rpm")] = _key(
         "crankshaft speed; needed for power and flows", example="1800 rpm"
     )
@@ -81,9 +79,7 @@ class EngineSection(Section):
 class OwnFuel(Section):
     """A fuel of the user's own."""
 
-    formula: Annotated[str | None, Text()] = _key(
-        "elements C H O N S with counts, e.g. C12H26 or CH1.85", example="C12H26"
-    )
+    formula: Annotated[str | None, Text()] = _key("elements C H O N S with counts, e.g. C12H26 or CH1.85", example="C12H26")
     carbon: Annotated[float | None, MASS_FRACTION] = _key("mass fraction of carbon", example="86 %")
     hydrogen: Annotated[float | None, MASS_FRACTION] = _key("mass fraction of hydrogen", example="14 %")
     oxygen: Annotated[float | None, MASS_FRACTION] = _key("mass fraction of oxygen", example="0 %")
@@ -101,9 +97,7 @@ class OwnFuel(Section):
     molar_mass: Annotated[float | None, Within("molar mass", 1.5, 1500.0, "kg/kmol")] = _key(
         "of the fuel as vapour", example="200 kg/kmol"
     )
-    latent_heat: Annotated[float | None, Within("specific energy", 50e3, 2e6, "kJ/kg")] = _key(
-        "at 298.15 K", example="355 kJ/kg"
-    )
+    latent_heat: Annotated[float | None, Within("specific energy", 50e3, 2e6, "kJ/kg")] = _key("at 298.15 K", example="355 kJ/kg")
     liquid_cp: Annotated[float | None, Within("specific heat capacity", 1000.0, 6000.0, "kJ/(kg K)")] = _key(
         "specific heat capacity of the liquid", example="2.1 kJ/(kg K)"
     )
@@ -131,9 +125,7 @@ class FuelSection(Section):
         "direct: injected at combustion"
     )
     temperature: Annotated[float, Within("temperature", 100.0, 600.0, "K")] = _key("at the injector or mixer", 298.15)
-    pressure: Annotated[float, Within("pressure", 0.05 * _BAR, 5000 * _BAR, "bar")] = _key(
-        "at the injector or mixer", 101325.0
-    )
+    pressure: Annotated[float, Within("pressure", 0.05 * _BAR, 5000 * _BAR, "bar")] = _key("at the injector or mixer", 101325.0)
     evaporated_by_gas: Annotated[float, SHARE] = _key("share of the latent heat that the charge gives", 1.0)
 
 
@@ -143,26 +135,20 @@ class ChargeSection(Section):
     equivalence_ratio: Annotated[float | None, Within("ratio", 0.01, 5.0)] = _key(
         "fresh fuel over fresh dry air, relative to stoichiometric", example=0.6
     )
-    excess_air_ratio: Annotated[float | None, Within("ratio", 0.2, 100.0)] = _key(
-        "one over the equivalence ratio", example=1.7
-    )
+    excess_air_ratio: Annotated[float | None, Within("ratio", 0.2, 100.0)] = _key("one over the equivalence ratio", example=1.7)
     air_fuel_ratio: Annotated[float | None, Within("ratio", 0.2, 5000.0)] = _key(
         "mass of fresh dry air over mass of fresh fuel", example="24:1"
     )
-    fuel_mass: Annotated[float | None, Within("mass", 1e-9, 1.0, "mg")] = _key(
-        "per cylinder and cycle", example="120 mg"
-    )
+    fuel_mass: Annotated[float | None, Within("mass", 1e-9, 1.0, "mg")] = _key("per cylinder and cycle", example="120 mg")
     pressure: Annotated[float | None, TRAPPED] = _key("of the trapped charge, after evaporation", example="2.9 bar")
-    temperature: Annotated[float | None, GAS_TEMPERATURE] = _key(
-        "of the trapped charge, after evaporation", example="335 K"
-    )
+    temperature: Annotated[float | None, GAS_TEMPERATURE] = _key("of the trapped charge, after evaporation", example="335 K")
     intake_pressure: Annotated[float | None, TRAPPED] = _key("in the receiver", example="3.0 bar")
     intake_temperature: Annotated[float | None, GAS_TEMPERATURE] = _key("in the receiver", example="50 degC")
     exhaust_pressure: Annotated[float | None, TRAPPED] = _key(
         "in the exhaust; default the pressure of the pair", example="2.6 bar"
     )
-    residual_fraction: Annotated[float | Literal["solve"] | None, Within("ratio", 0.0, 0.9, "%", words=("solve",))] = (
-        _key("mass of residual gas over trapped mass, or solve", example="3 %")
+    residual_fraction: Annotated[float | Literal["solve"] | None, Within("ratio", 0.0, 0.9, "%", words=("solve",))] = _key(
+        "mass of residual gas over trapped mass, or solve", example="3 %"
     )
     egr_fraction: Annotated[float, Within("ratio", 0.0, 0.9, "%")] = _key(
         "recirculated exhaust over fresh humid air plus recirculated exhaust, by mass", 0.0
@@ -222,12 +208,8 @@ class LimitsSection(Section):
     """Upper limits that the engine must keep; a result above one is a warning."""
 
     peak_pressure: Annotated[float | None, HIGH_PRESSURE] = _key("highest allowed peak pressure", example="200 bar")
-    peak_temperature: Annotated[float | None, LIMIT_TEMPERATURE] = _key(
-        "highest allowed peak gas temperature", example="2300 K"
-    )
-    compression_pressure: Annotated[float | None, HIGH_PRESSURE] = _key(
-        "highest allowed compression pressure", example="160 bar"
-    )
+    peak_temperature: Annotated[float | None, LIMIT_TEMPERATURE] = _key("highest allowed peak gas temperature", example="2300 K")
+    compression_pressure: Annotated[float | None, HIGH_PRESSURE] = _key("highest allowed compression pressure", example="160 bar")
     compression_temperature: Annotated[float | None, LIMIT_TEMPERATURE] = _key(
         "highest allowed compression temperature", example="1000 K"
     )

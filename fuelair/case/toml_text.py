@@ -49,9 +49,7 @@ def read_text(path: Path) -> str:
         raise InputError(Problem(f"cannot be read: {reason}", file=name)) from None
     if len(data) > LARGEST_FILE:
         allowed = f"up to {LARGEST_FILE // 1000} kB"
-        raise InputError(
-            Problem("too large for a case file", file=name, allowed=allowed, hint="a TOML case, not results")
-        )
+        raise InputError(Problem("too large for a case file", file=name, allowed=allowed, hint="a TOML case, not results"))
     try:
         return data.decode("utf-8-sig")
     except UnicodeDecodeError as error:
@@ -66,9 +64,7 @@ def read_text(path: Path) -> str:
 
 def _near_file(path: Path) -> str:
     try:
-        names = (
-            [entry.name for entry in path.parent.iterdir() if entry.suffix == ".toml"] if path.parent.is_dir() else []
-        )
+        names = [entry.name for entry in path.parent.iterdir() if entry.suffix == ".toml"] if path.parent.is_dir() else []
     except OSError:
         names = []
     near = nearest(path.name, names)

@@ -1,0 +1,1 @@
+"""Cycle models: air-standard and fuel-air, their stages, gas exchange, ladder and exergy."""

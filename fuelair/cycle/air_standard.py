@@ -17,7 +17,7 @@ from fuelair.air import DryAir
 from fuelair.charge import Charge
 from fuelair.cycle.breathing import Settings
 from fuelair.cycle.result import CycleResult, Point, WorkParts, performance
-from fuelair.gas.engine import Array, Engine, GasState, Pair, Status, worst
+from fuelair.gas.engine import Array, Codes, Engine, GasState, Mask, Pair, Status, worst
 from fuelair.gas.species import build
 
 COLD_K, COLD_R = 1.4, 287.05
@@ -57,8 +57,17 @@ class ColdAir:
         bad = ~(T > 0.0) | ~(p > 0.0)
         status = np.where(bad, Status.NO_SOLUTION, Status.OK).astype(np.int8)
         return GasState(
-            T=T, p=p, v=r * T / p, u=cv * T, h=cp * T, s=s, cp=np.full(n, cp), sound=np.sqrt(np.abs(self.k * r * T)),
-            amounts=np.zeros((n, 0)), status=status, iterations=np.zeros(n, np.int32),
+            T=T,
+            p=p,
+            v=r * T / p,
+            u=cv * T,
+            h=cp * T,
+            s=s,
+            cp=np.full(n, cp),
+            sound=np.sqrt(np.abs(self.k * r * T)),
+            amounts=np.zeros((n, 0)),
+            status=status,
+            iterations=np.zeros(n, np.int32),
         )
 
 
@@ -73,8 +82,15 @@ def variable_air(engine: Engine, air: DryAir) -> StateOf:
     return state
 
 
-def run(model: str, state: StateOf, charge: Charge, settings: Settings, *, heat: Array | None = None,
-        cutoff_ratio: Array | None = None) -> CycleResult:
+def run(
+    model: str,
+    state: StateOf,
+    charge: Charge,
+    settings: Settings,
+    *,
+    heat: Array | None = None,
+    cutoff_ratio: Array | None = None,
+) -> CycleResult:
     """Run an air-standard cycle beside a charge.
 
     Parameters
@@ -101,30 +117,54 @@ def run(model: str, state: StateOf, charge: Charge, settings: Settings, *, heat:
     work = WorkParts(taken, np.where(limited, burned.p * (burned.v - compressed.v), 0.0), burned.u - release.u)
     supplied = q if own else charge.fuel_mass * charge.lower_heating_value
     figures = performance(
-        trapped=start, volumes=volumes, work=work, fuel_mass=charge.fuel_mass * (supplied / (charge.fuel_mass * charge.lower_heating_value)),
-        fuel_energy=supplied, intake_pressure=settings.intake_pressure, exhaust_pressure=settings.exhaust_pressure,
+        trapped=start,
+        volumes=volumes,
+        work=work,
+        fuel_mass=charge.fuel_mass * (supplied / (charge.fuel_mass * charge.lower_heating_value)),
+        fuel_energy=supplied,
+        intake_pressure=settings.intake_pressure,
+        exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
     )
     figures |= {
-        "compression_temperature_K": compressed.T, "compression_pressure_Pa": compressed.p,
-        "peak_temperature_K": burned.T, "peak_pressure_Pa": burned.p,
-        "release_temperature_K": release.T, "release_pressure_Pa": release.p,
-        "exhaust_temperature_K": leaving.T, "blowdown_temperature_K": remaining.T,
-        "cutoff_ratio": np.where(limited, burned.v / compressed.v, 1.0), "residual_fraction": stays,
-        "heat_added_J_per_kg": q, "blowdown_energy_J_per_kg": available,
+        "compression_temperature_K": compressed.T,
+        "compression_pressure_Pa": compressed.p,
+        "peak_temperature_K": burned.T,
+        "peak_pressure_Pa": burned.p,
+        "release_temperature_K": release.T,
+        "release_pressure_Pa": release.p,
+        "exhaust_temperature_K": leaving.T,
+        "blowdown_temperature_K": remaining.T,
+        "cutoff_ratio": np.where(limited, burned.v / compressed.v, 1.0),
+        "residual_fraction": stays,
+        "heat_added_J_per_kg": q,
+        "blowdown_energy_J_per_kg": available,
     }
     points = [Point("trapped", start, one, start.v), Point("compressed", compressed, one, compressed.v)]
     is_limited = limited & (settings.heat_addition == "pressure-limited")
     if is_limited.any():
         at = state("TV", np.where(is_limited, compressed.T * settings.pressure_limit / compressed.p, np.nan), compressed.v)
         points.append(Point("limit", at, one, at.v))
-    points += [Point("burned", burned, one, burned.v), Point("release", release, one, release.v),
-               Point("blown-down", remaining, stays, stays * remaining.v), Point("exhaust", leaving, leaves, leaves * leaving.v)]
+    points += [
+        Point("burned", burned, one, burned.v),
+        Point("release", release, one, release.v),
+        Point("blown-down", remaining, stays, stays * remaining.v),
+        Point("exhaust", leaving, leaves, leaves * leaving.v),
+    ]
     scale = np.maximum(np.abs(q), 1e3)
-    ledger = {"energy_closed_part": (start.u + exchanged + q - release.u + work.compression - work.burning - work.expansion) / scale}
+    ledger = {
+        "energy_closed_part": (start.u + exchanged + q - release.u + work.compression - work.burning - work.expansion) / scale
+    }
     status = worst(charge.status, status, start.status, compressed.status, burned.status, release.status)
-    return CycleResult(model, None, tuple(points), figures, ledger,
-                       {"limited": is_limited, "back-flow": release.p < settings.exhaust_pressure}, status)
+    return CycleResult(
+        model,
+        None,
+        tuple(points),
+        figures,
+        ledger,
+        {"limited": is_limited, "back-flow": release.p < settings.exhaust_pressure},
+        status,
+    )
 
 
 def _compress(state: StateOf, start: GasState, settings: Settings) -> tuple[GasState, Array, Array]:
@@ -140,7 +180,7 @@ def _compress(state: StateOf, start: GasState, settings: Settings) -> tuple[GasS
 
 def _burn(
     state: StateOf, compressed: GasState, settings: Settings, q: Array, cutoff_ratio: Array | None
-) -> tuple[GasState, Array, Array, Array]:
+) -> tuple[GasState, Mask, Array, Codes]:
     """Burned state, where the constant-pressure part exists, heat added, status."""
     n, limit = len(q), settings.pressure_limit
     status = np.zeros(n, np.int8)
@@ -158,10 +198,16 @@ def _burn(
     if settings.heat_addition == "constant-volume":
         return burned, ~all_, q, status
     limited = burned.p > limit
-    held = state("HP", np.where(limited, compressed.u + q + limit * compressed.v, compressed.h), np.where(limited, limit, compressed.p))
+    held = state(
+        "HP", np.where(limited, compressed.u + q + limit * compressed.v, compressed.h), np.where(limited, limit, compressed.p)
+    )
     chosen = {k: np.where(limited, getattr(held, k), getattr(burned, k)) for k in ("T", "p", "v", "u", "h", "s", "cp", "sound")}
-    both = GasState(amounts=burned.amounts, status=np.where(limited, held.status, burned.status).astype(np.int8),
-                    iterations=burned.iterations, **chosen)
+    both = GasState(
+        amounts=burned.amounts,
+        status=np.where(limited, held.status, burned.status).astype(np.int8),
+        iterations=burned.iterations,
+        **chosen,
+    )
     return both, limited, q, status
 
 

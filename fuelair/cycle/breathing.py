@@ -18,7 +18,7 @@ from fuelair.charge import BurnedGas, Charge, Recipe, compose
 from fuelair.cycle.geometry import Volumes
 from fuelair.cycle.stages import HeatAddition, choose, freeze_composition
 from fuelair.gas.complete import composition
-from fuelair.gas.engine import Array, Engine, GasState, Status, total, worst
+from fuelair.gas.engine import Array, Engine, GasState, Mask, Status, total
 from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL, SpeciesTable
 from fuelair.roots import bracketed
@@ -85,13 +85,20 @@ class Exhaust:
     leaving: GasState
     remaining_mass: Array
     leaving_mass: Array
-    back_flow: Array
+    back_flow: Mask
     blowdown_work: Array
 
 
 def exhaust(
-    engine: Engine, table: SpeciesTable, burned: GasState, release: GasState, *, mass: Array, trapped_volume: Array,
-    settings: Settings, shifting: bool,
+    engine: Engine,
+    table: SpeciesTable,
+    burned: GasState,
+    release: GasState,
+    *,
+    mass: Array,
+    trapped_volume: Array,
+    settings: Settings,
+    shifting: bool,
 ) -> Exhaust:
     """Blow down from ``release`` and mix what leaves.
 
@@ -108,7 +115,7 @@ def exhaust(
         frozen = freeze_composition(engine, table, burned, release, settings.freeze_temperature)
         start = engine.state(table, "UV", release.u, release.v, frozen)
         remaining = engine.state(table, "SP", start.s, p_e, frozen)
-        hot = (release.T > settings.freeze_temperature) & np.isfinite(release.T)
+        hot = (settings.freeze_temperature < release.T) & np.isfinite(release.T)
         if hot.any():
             remaining = choose(hot, _shift_then_freeze(engine, table, release, hot, settings), remaining)
     else:
@@ -129,9 +136,7 @@ def exhaust(
     return Exhaust(remaining, leaving, stays, leaves, back, np.asarray(np.where(back, 0.0, available)))
 
 
-def _shift_then_freeze(
-    engine: Engine, table: SpeciesTable, release: GasState, hot: Array, settings: Settings
-) -> GasState:
+def _shift_then_freeze(engine: Engine, table: SpeciesTable, release: GasState, hot: Mask, settings: Settings) -> GasState:
     """Isentropic blowdown that shifts down to the freeze temperature, then stays frozen."""
     entropy = np.where(hot, release.s, np.nan)
     p_e = settings.exhaust_pressure
@@ -145,8 +150,13 @@ def _shift_then_freeze(
 
 
 def solve_charge(
-    recipe: Recipe, engine: Engine, settings: Settings, run: Callable[[Charge], tuple[CycleResult, Exhaust]],
-    *, fuel_mass: Array | None = None, cutoff_ratio: Array | None = None,
+    recipe: Recipe,
+    engine: Engine,
+    settings: Settings,
+    run: Callable[[Charge], tuple[CycleResult, Exhaust]],
+    *,
+    fuel_mass: Array | None = None,
+    cutoff_ratio: Array | None = None,
 ) -> Charge:
     """Trapped charge with residual and recirculated gas of its own cycle.
 
@@ -174,7 +184,10 @@ def solve_charge(
 
 
 def _fixed_point(
-    recipe: Recipe, engine: Engine, settings: Settings, run: Callable[[Charge], tuple[CycleResult, Exhaust]],
+    recipe: Recipe,
+    engine: Engine,
+    settings: Settings,
+    run: Callable[[Charge], tuple[CycleResult, Exhaust]],
     fuel_mass: Array | None,
 ) -> Charge:
     burned = _first_guess(recipe, settings)
@@ -208,9 +221,9 @@ def _first_guess(recipe: Recipe, settings: Settings) -> BurnedGas:
     dry = table.amounts({k: v for k, v in recipe.air.composition().items() if v > 0.0})
     mixture = np.tile(dry, (n, 1))
     mixture[:, table.index("H2O")] += recipe.humidity / table.molar_mass[table.index("H2O")]
-    mixture[:, table.index(FUEL)] += recipe.equivalence_ratio / recipe.stoichiometric_air_fuel_ratio / table.molar_mass[
-        table.index(FUEL)
-    ]
+    mixture[:, table.index(FUEL)] += (
+        recipe.equivalence_ratio / recipe.stoichiometric_air_fuel_ratio / table.molar_mass[table.index(FUEL)]
+    )
     mixture /= total(mixture * table.molar_mass)[:, None]
     amounts, _ = composition(table, mixture, np.full(n, DEFAULT_FREEZE))
     hot = np.full(n, FIRST_RESIDUAL_TEMPERATURE)
@@ -244,15 +257,23 @@ def _change(new: BurnedGas, old: BurnedGas) -> Array:
         return np.asarray(np.maximum.reduce([moved, h, v, np.abs(new.fraction - old.fraction)]))
 
 
-def _hold(active: Array, new: BurnedGas, old: BurnedGas) -> BurnedGas:
+def _hold(active: Mask, new: BurnedGas, old: BurnedGas) -> BurnedGas:
     return BurnedGas(
-        np.where(active[:, None], new.amounts, old.amounts), np.where(active, new.fraction, old.fraction),
-        np.where(active, new.h, old.h), np.where(active, new.v, old.v),
+        np.where(active[:, None], new.amounts, old.amounts),
+        np.where(active, new.fraction, old.fraction),
+        np.where(active, new.h, old.h),
+        np.where(active, new.v, old.v),
     )
 
 
 def short_circuit(
-    engine: Engine, table: SpeciesTable, out: Exhaust, *, extra: Array, extra_enthalpy: Array, extra_amounts: Array,
+    engine: Engine,
+    table: SpeciesTable,
+    out: Exhaust,
+    *,
+    extra: Array,
+    extra_enthalpy: Array,
+    extra_amounts: Array,
     pressure: Array,
 ) -> GasState:
     """Exhaust after fresh gas that passed straight through has mixed in.
@@ -265,6 +286,3 @@ def short_circuit(
     amounts = (out.leaving.amounts * out.leaving_mass[:, None] + extra_amounts * extra[:, None]) / whole[:, None]
     h = (out.leaving.h * out.leaving_mass + extra_enthalpy * extra) / whole
     return engine.state(table, "HP", h, pressure, amounts)
-
-
-__all__ = ["DEFAULT_FREEZE", "Exhaust", "Settings", "exhaust", "short_circuit", "solve_charge", "worst"]

@@ -68,7 +68,10 @@ def element_potentials(table: SpeciesTable) -> Array:
 
     oxygen = 0.5 * potential("O2")
     values = {
-        "O": oxygen, "N": 0.5 * potential("N2"), "Ar": potential("Ar"), "C": potential("CO2") - 2.0 * oxygen,
+        "O": oxygen,
+        "N": 0.5 * potential("N2"),
+        "Ar": potential("Ar"),
+        "C": potential("CO2") - 2.0 * oxygen,
         "H": 0.5 * (potential("H2O") - oxygen),
     }
     if table.has("SO2"):
@@ -160,10 +163,18 @@ def balance(run: Run) -> ExergyBalance:
     displaced = (out.leaving.p - P0) * (v4 - v6)
     work = run.result.figures["work_J_per_kg"]
     return ExergyBalance(
-        fuel=charge.fuel_mass * per_kg, trapped=nonflow(table, charge.trapped), burned=mass * nonflow(table, burned),
-        release=release, work=work, destroyed_by_entropy=T0 * generated, destroyed_by_balance=by_balance,
-        leaving=leaving, remaining=remaining, destroyed_blowdown=np.asarray(release + displaced - leaving - remaining),
-        fuel_per_kg=per_kg, from_correlation=marked,
+        fuel=charge.fuel_mass * per_kg,
+        trapped=nonflow(table, charge.trapped),
+        burned=mass * nonflow(table, burned),
+        release=release,
+        work=work,
+        destroyed_by_entropy=T0 * generated,
+        destroyed_by_balance=by_balance,
+        leaving=leaving,
+        remaining=remaining,
+        destroyed_blowdown=np.asarray(release + displaced - leaving - remaining),
+        fuel_per_kg=per_kg,
+        from_correlation=marked,
     )
 
 

@@ -10,7 +10,7 @@ from fuelair.charge import Charge
 from fuelair.cycle.breathing import Exhaust, Settings, exhaust
 from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, performance
 from fuelair.cycle.stages import Burn, Compression, Expansion, burn, compress, end_of_constant_volume, expand
-from fuelair.gas.engine import Array, Chemistry, Engine, GasState, total, weighted, worst
+from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, total, weighted, worst
 from fuelair.gas.mixture import mix
 from fuelair.gas.species import SpeciesTable
 
@@ -44,9 +44,7 @@ class Run:
     result: CycleResult
 
 
-def run(
-    engine: Engine, charge: Charge, settings: Settings, model: str, *, headline: bool = True, points: bool = True
-) -> Run:
+def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headline: bool = True, points: bool = True) -> Run:
     """Run one fuel-air model on a charge.
 
     Parameters
@@ -63,8 +61,15 @@ def run(
     compression = compress(engine, table, charge.trapped, volumes.effective_compression, settings.compression_exponent)
     reactants = charge.reactants()
     burned = burn(
-        engine, table, compression.state, reactants=reactants, injected=charge.injected, fuel_enthalpy=charge.fuel_enthalpy,
-        heat_addition=settings.heat_addition, pressure_limit=settings.pressure_limit, chemistry=kind.chemistry,
+        engine,
+        table,
+        compression.state,
+        reactants=reactants,
+        injected=charge.injected,
+        fuel_enthalpy=charge.fuel_enthalpy,
+        heat_addition=settings.heat_addition,
+        pressure_limit=settings.pressure_limit,
+        chemistry=kind.chemistry,
     )
     mass = 1.0 + charge.injected
     v1 = charge.trapped.v
@@ -72,19 +77,31 @@ def run(
     freeze = settings.freeze_temperature if kind.freezes else None
     release = expand(engine, table, burned.state, release_volume, kind.expansion, freeze)
     out = exhaust(
-        engine, table, burned.state, release, mass=mass, trapped_volume=v1, settings=settings,
+        engine,
+        table,
+        burned.state,
+        release,
+        mass=mass,
+        trapped_volume=v1,
+        settings=settings,
         shifting=kind.expansion == "equilibrium",
     )
     work = WorkParts(compression.work, burned.expansion_work * mass, mass * (burned.state.u - release.u))
     energy = charge.fuel_mass * charge.lower_heating_value
     figures = performance(
-        trapped=charge.trapped, volumes=volumes, work=work, fuel_mass=charge.fuel_mass, fuel_energy=energy,
-        intake_pressure=settings.intake_pressure, exhaust_pressure=settings.exhaust_pressure,
+        trapped=charge.trapped,
+        volumes=volumes,
+        work=work,
+        fuel_mass=charge.fuel_mass,
+        fuel_energy=energy,
+        intake_pressure=settings.intake_pressure,
+        exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
     ) | _state_figures(charge, compression, burned, release, out)
     ledger = _ledger(charge, compression, burned, release, out, settings, headline)
-    status = worst(charge.status, compression.state.status, burned.status, release.status, out.remaining.status,
-                   out.leaving.status)
+    status = worst(
+        charge.status, compression.state.status, burned.status, release.status, out.remaining.status, out.leaving.status
+    )
     limited = burned.limited & (settings.heat_addition == "pressure-limited")
     named = _points(engine, charge, settings, compression, burned, release, out, kind, limited if points else None)
     result = CycleResult(
@@ -111,16 +128,32 @@ def _state_figures(charge: Charge, compression: Compression, burned: Burn, relea
 
 
 def _points(
-    engine: Engine, charge: Charge, settings: Settings, compression: Compression, burned: Burn, release: GasState,
-    out: Exhaust, kind: Kind, limited: Array | None,
+    engine: Engine,
+    charge: Charge,
+    settings: Settings,
+    compression: Compression,
+    burned: Burn,
+    release: GasState,
+    out: Exhaust,
+    kind: Kind,
+    limited: Mask | None,
 ) -> tuple[Point, ...]:
     table, one = charge.recipe.table, np.ones(len(charge.recipe))
     mass = one + charge.injected
-    named = [Point("trapped", charge.trapped, one, charge.trapped.v), Point("compressed", compression.state, one, compression.state.v)]
+    named = [
+        Point("trapped", charge.trapped, one, charge.trapped.v),
+        Point("compressed", compression.state, one, compression.state.v),
+    ]
     if limited is not None and limited.any():
         at, share = end_of_constant_volume(
-            engine, table, compression.state, reactants=charge.reactants(), injected=charge.injected,
-            fuel_enthalpy=charge.fuel_enthalpy, pressure_limit=settings.pressure_limit, limited=limited,
+            engine,
+            table,
+            compression.state,
+            reactants=charge.reactants(),
+            injected=charge.injected,
+            fuel_enthalpy=charge.fuel_enthalpy,
+            pressure_limit=settings.pressure_limit,
+            limited=limited,
             chemistry=kind.chemistry,
         )
         present = one + charge.injected * share
@@ -135,7 +168,12 @@ def _points(
 
 
 def _ledger(
-    charge: Charge, compression: Compression, burned: Burn, release: GasState, out: Exhaust, settings: Settings,
+    charge: Charge,
+    compression: Compression,
+    burned: Burn,
+    release: GasState,
+    out: Exhaust,
+    settings: Settings,
     headline: bool,
 ) -> dict[str, Array]:
     """Relative residuals of mass, elements, energy and entropy, each from states evaluated afresh.
@@ -162,8 +200,11 @@ def _ledger(
     leaving = left + settings.exhaust_pressure * (v4 - out.remaining_mass * out.remaining.v)
     combustion = (mass * u3 + burned.expansion_work * mass) - (_energy(table, compression.state) + supplied)
     out_ledger = {
-        "mass": kilograms, "elements": elements, "energy_combustion": combustion / scale,
-        "energy_closed_part": closed_part / scale, "energy_exhaust": leaving / scale,
+        "mass": kilograms,
+        "elements": elements,
+        "energy_combustion": combustion / scale,
+        "energy_closed_part": closed_part / scale,
+        "energy_exhaust": leaving / scale,
     }
     if settings.compression_exponent is None:
         out_ledger["entropy_compression"] = compression.state.s / charge.trapped.s - 1.0

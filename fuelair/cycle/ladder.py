@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -10,8 +11,15 @@ from fuelair.cycle.result import MODELS, REFERENCE_MODEL, CycleResult
 from fuelair.gas.engine import Status
 
 QUANTITIES: tuple[str, ...] = (
-    "compression_temperature_K", "compression_pressure_Pa", "peak_temperature_K", "peak_pressure_Pa",
-    "release_temperature_K", "release_pressure_Pa", "exhaust_temperature_K", "imep_gross_Pa", "work_J_per_kg",
+    "compression_temperature_K",
+    "compression_pressure_Pa",
+    "peak_temperature_K",
+    "peak_pressure_Pa",
+    "release_temperature_K",
+    "release_pressure_Pa",
+    "exhaust_temperature_K",
+    "imep_gross_Pa",
+    "work_J_per_kg",
     "indicated_efficiency",
 )
 """Quantities that the ladder and the overprediction table show."""
@@ -42,9 +50,9 @@ def steps(results: dict[str, CycleResult], case: int = 0) -> list[Step]:
     """
     there = [m for m in MODELS if m in results and results[m].status[case] == Status.OK]
     out = []
-    for lower, upper in zip(there, there[1:], strict=False):
+    for lower, upper in pairwise(there):
         between = MODELS[MODELS.index(lower) : MODELS.index(upper) + 1]
-        words = "; ".join(ASSUMPTION[pair] for pair in zip(between, between[1:], strict=False))
+        words = "; ".join(ASSUMPTION[pair] for pair in pairwise(between))
         a, b = results[lower].figures, results[upper].figures
         out.append(Step(lower, upper, words, {k: float(b[k][case] - a[k][case]) for k in QUANTITIES}))
     return out

@@ -5,16 +5,20 @@ All per-kg values are per kg of *trapped* gas; states are per kg of the gas pres
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 
 from fuelair.cycle.geometry import Volumes
-from fuelair.gas.engine import Array, Codes, GasState, Status
+from fuelair.gas.engine import Array, Codes, GasState, Mask, Status
 from fuelair.gas.species import SpeciesTable
 
 MODELS: tuple[str, ...] = (
-    "air-cold", "air-variable", "fuel-air-complete", "fuel-air-frozen", "fuel-air-equilibrium",
+    "air-cold",
+    "air-variable",
+    "fuel-air-complete",
+    "fuel-air-frozen",
+    "fuel-air-equilibrium",
 )
 """Model ids in the order of the ladder, crudest first."""
 REFERENCE_MODEL = "fuel-air-equilibrium"
@@ -54,9 +58,8 @@ class CycleResult:
     points: tuple[Point, ...]
     figures: dict[str, Array]
     ledger: dict[str, Array]
-    flags: dict[str, Array]
+    flags: dict[str, Mask]
     status: Codes
-    reasons: dict[int, str] = field(default_factory=dict)
 
     def point(self, name: str) -> Point:
         """The named state; KeyError if this model has none of that name."""
@@ -80,8 +83,15 @@ class WorkParts:
 
 
 def performance(
-    *, trapped: GasState, volumes: Volumes, work: WorkParts, fuel_mass: Array, fuel_energy: Array,
-    intake_pressure: Array, exhaust_pressure: Array, four_stroke: bool,
+    *,
+    trapped: GasState,
+    volumes: Volumes,
+    work: WorkParts,
+    fuel_mass: Array,
+    fuel_energy: Array,
+    intake_pressure: Array,
+    exhaust_pressure: Array,
+    four_stroke: bool,
 ) -> dict[str, Array]:
     """Work, mean pressures, efficiency and consumption (N,) from the parts of the work.
 

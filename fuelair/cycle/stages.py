@@ -12,7 +12,7 @@ from typing import Literal
 
 import numpy as np
 
-from fuelair.gas.engine import Array, Chemistry, Codes, Engine, GasState, Status, worst
+from fuelair.gas.engine import Array, Chemistry, Codes, Engine, GasState, Mask, Status, worst
 from fuelair.gas.graphite import carbon_activity
 from fuelair.gas.species import FUEL, UNBURNED, SpeciesTable
 from fuelair.roots import bracketed
@@ -54,7 +54,7 @@ class Burn:
     state: GasState
     expansion_work: Array
     volume_ratio: Array
-    limited: Array
+    limited: Mask
     status: Codes
 
 
@@ -72,15 +72,25 @@ def compress(
     pressure = start.p * volume_ratio**exponent
     temperature = start.T * volume_ratio ** (exponent - 1.0)  # holds for an ideal gas only
     state = engine.state(table, "TP", temperature, pressure, start.amounts)
-    work = (state.p * state.v - start.p * start.v) / (exponent - 1.0) if exponent != 1.0 else start.p * start.v * np.log(
-        volume_ratio
+    work = (
+        (state.p * state.v - start.p * start.v) / (exponent - 1.0)
+        if exponent != 1.0
+        else start.p * start.v * np.log(volume_ratio)
     )
     return Compression(state, np.asarray(work), np.asarray(state.u - start.u - work))
 
 
 def burn(
-    engine: Engine, table: SpeciesTable, compressed: GasState, *, reactants: Array, injected: Array, fuel_enthalpy: Array,
-    heat_addition: HeatAddition, pressure_limit: Array, chemistry: Chemistry,
+    engine: Engine,
+    table: SpeciesTable,
+    compressed: GasState,
+    *,
+    reactants: Array,
+    injected: Array,
+    fuel_enthalpy: Array,
+    heat_addition: HeatAddition,
+    pressure_limit: Array,
+    chemistry: Chemistry,
 ) -> Burn:
     """Adiabatic combustion of all gas and injected fuel.
 
@@ -107,7 +117,9 @@ def burn(
         limited = np.zeros(n, np.bool_)
         if heat_addition == "pressure-limited":
             limited = state.p > pressure_limit * (1.0 + LIMIT_SLACK)
-            held = engine.state(table, "HP", np.where(limited, u2 + pressure_limit * v2, np.nan), pressure_limit, reactants, chemistry)
+            held = engine.state(
+                table, "HP", np.where(limited, u2 + pressure_limit * v2, np.nan), pressure_limit, reactants, chemistry
+            )
             state = choose(limited, held, state)
             status[compressed.p > pressure_limit] = Status.LIMIT_BELOW_COMPRESSION
     work = np.where(limited, state.p * (state.v - v2), 0.0)
@@ -115,8 +127,16 @@ def burn(
 
 
 def end_of_constant_volume(
-    engine: Engine, table: SpeciesTable, compressed: GasState, *, reactants: Array, injected: Array, fuel_enthalpy: Array,
-    pressure_limit: Array, limited: Array, chemistry: Chemistry,
+    engine: Engine,
+    table: SpeciesTable,
+    compressed: GasState,
+    *,
+    reactants: Array,
+    injected: Array,
+    fuel_enthalpy: Array,
+    pressure_limit: Array,
+    limited: Mask,
+    chemistry: Chemistry,
 ) -> tuple[GasState, Array]:
     """State at which the pressure reaches its limit at constant volume, and the share of fuel burned by then.
 
@@ -145,7 +165,11 @@ def end_of_constant_volume(
 
 
 def expand(
-    engine: Engine, table: SpeciesTable, burned: GasState, volume: Array, expansion: Expansion,
+    engine: Engine,
+    table: SpeciesTable,
+    burned: GasState,
+    volume: Array,
+    expansion: Expansion,
     freeze_temperature: Array | None = None,
 ) -> GasState:
     """Isentropic expansion of burned gas to a specific ``volume`` [m3/kg].
@@ -158,8 +182,10 @@ def expand(
         return engine.state(table, "SV", burned.s, volume, burned.amounts)
     shifting = engine.state(table, "SV", burned.s, volume, burned.amounts, "equilibrium")
     if freeze_temperature is not None:
-        frozen = engine.state(table, "SV", burned.s, volume, freeze_composition(engine, table, burned, shifting, freeze_temperature))
-        shifting = choose(shifting.T < freeze_temperature, frozen, shifting)
+        frozen = engine.state(
+            table, "SV", burned.s, volume, freeze_composition(engine, table, burned, shifting, freeze_temperature)
+        )
+        shifting = choose(freeze_temperature > shifting.T, frozen, shifting)
     return carbon_frozen(engine, table, burned, shifting, volume)
 
 
@@ -200,7 +226,7 @@ def carbon_frozen(engine: Engine, table: SpeciesTable, burned: GasState, release
     return choose(sooting, frozen, released)
 
 
-def choose(where: Array, one: GasState, other: GasState) -> GasState:
+def choose(where: Mask, one: GasState, other: GasState) -> GasState:
     """Element-wise choice between two batches of states."""
     fields = {}
     for name in ("T", "p", "v", "u", "h", "s", "cp", "sound", "status", "iterations"):

@@ -50,8 +50,7 @@ def blend(components: Sequence[tuple[str | Fuel, float]], basis: str = "mass") -
     total = sum(share for _, share in components)
     shares = [(part, share / total) for part, (_, share) in zip(parts, components, strict=True)]
     fuel = _mix(shares, basis)
-    records = tuple((f"{basis}_fraction_{part.vapour.name}", Value(share, "-", "Given", "given"))
-                    for part, share in shares)
+    records = tuple((f"{basis}_fraction_{part.vapour.name}", Value(share, "-", "Given", "given")) for part, share in shares)
     title = " + ".join(f"{100.0 * share:.4g} % {part.vapour.name}" for part, share in shares) + f" by {basis}"
     names = ", ".join(part.vapour.name for part, _ in shares)
     fuel = replace(fuel, kind="blend", title=title, records=records)

@@ -83,8 +83,9 @@ def mix_vapour(parts: Sequence[Part], mass_fractions: Sequence[float], name: str
     entropies = [part.vapour.entropy for part in parts]
     entropy = None
     if all(s is not None for s in entropies):
-        entropy = sum(x * (s or 0.0) - GAS_CONSTANT * (x * math.log(x) if x > 0.0 else 0.0)
-                      for x, s in zip(moles, entropies, strict=True))
+        entropy = sum(
+            x * (s or 0.0) - GAS_CONSTANT * (x * math.log(x) if x > 0.0 else 0.0) for x, s in zip(moles, entropies, strict=True)
+        )
     lower = sum(w * part.vapour.lower_heating_value for part, w in zip(parts, mass_fractions, strict=True))
     made = formula.ordered(atoms)
     return Vapour(name, made, formula.molar_mass(made), lower, tuple(shape.items()), entropy)
@@ -113,14 +114,19 @@ def liquid_from_mass(fuels: Sequence[Fuel], mass: Sequence[float], vapour: Vapou
     volumes = [w / density_at(fuel) for w, fuel in zip(mass, fuels, strict=True)]
     reference = [w / density_at(fuel, REFERENCE_TEMPERATURE) for w, fuel in zip(mass, fuels, strict=True)]
     expansivity = sum(v * (fuel.expansivity or 0.0) for v, fuel in zip(reference, fuels, strict=True)) / sum(reference)
-    parts = tuple((w / fuel.molar_mass * vapour.molar_mass, fuel.saturation)
-                  for w, fuel in zip(mass, fuels, strict=True))
+    parts = tuple((w / fuel.molar_mass * vapour.molar_mass, fuel.saturation) for w, fuel in zip(mass, fuels, strict=True))
     known = tuple((x, s) for x, s in parts if s is not None)
     return Fuel(
-        name=name, title=name, kind="blend", vapour=vapour,
-        latent_heat=mean([fuel.latent_heat for fuel in fuels]), density=1.0 / sum(volumes),
-        density_temperature=BLEND_TEMPERATURE, liquid_cp=mean([fuel.liquid_cp for fuel in fuels]),
-        expansivity=expansivity, saturation=ideal_solution(known) if len(known) == len(parts) else None,
+        name=name,
+        title=name,
+        kind="blend",
+        vapour=vapour,
+        latent_heat=mean([fuel.latent_heat for fuel in fuels]),
+        density=1.0 / sum(volumes),
+        density_temperature=BLEND_TEMPERATURE,
+        liquid_cp=mean([fuel.liquid_cp for fuel in fuels]),
+        expansivity=expansivity,
+        saturation=ideal_solution(known) if len(known) == len(parts) else None,
         pressure_terms=_pressure_terms(fuels, mass),
         always_liquid=any(fuel.always_liquid for fuel in fuels),
         warnings=tuple(dict.fromkeys(w for fuel in fuels for w in fuel.warnings)),

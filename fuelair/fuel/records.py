@@ -25,11 +25,27 @@ FROM_HEATING_VALUE = "From the lower heating value of the liquid, the latent hea
 PER_KG = {"J/kg": 1.0, "kJ/kg": 1e3, "MJ/kg": 1e6, "J/(kg K)": 1.0, "kJ/(kg K)": 1e3}
 PER_KMOL = {"J/mol": 1e3, "kJ/mol": 1e6, "J/(mol K)": 1e3}
 SYNONYMS = {
-    "petrol": "gasoline", "e10": "gasoline-e10", "hvo": "renewable-diesel", "gtl": "renewable-diesel",
-    "biodiesel": "fame", "rme": "fame", "cng": "natural-gas", "lng": "natural-gas", "mgo": "marine-distillate",
-    "mdo": "marine-distillate", "hfo": "marine-residual", "jet-a": "kerosene", "jet-a1": "kerosene",
-    "gas-oil": "diesel", "cetane": "n-hexadecane", "isooctane": "iso-octane", "dimethyl-ether": "dme",
-    "lpg": "propane", "h2": "hydrogen", "ch4": "methane", "nh3": "ammonia",
+    "petrol": "gasoline",
+    "e10": "gasoline-e10",
+    "hvo": "renewable-diesel",
+    "gtl": "renewable-diesel",
+    "biodiesel": "fame",
+    "rme": "fame",
+    "cng": "natural-gas",
+    "lng": "natural-gas",
+    "mgo": "marine-distillate",
+    "mdo": "marine-distillate",
+    "hfo": "marine-residual",
+    "jet-a": "kerosene",
+    "jet-a1": "kerosene",
+    "gas-oil": "diesel",
+    "cetane": "n-hexadecane",
+    "isooctane": "iso-octane",
+    "dimethyl-ether": "dme",
+    "lpg": "propane",
+    "h2": "hydrogen",
+    "ch4": "methane",
+    "nh3": "ammonia",
 }
 """Other words of the trade: only to offer the recorded name, never accepted in its place."""
 
@@ -122,8 +138,13 @@ def _saturation(data: Mapping[str, Any]) -> Saturation | None:
         return None
     low, high = table["valid"]
     result = Saturation(
-        table["form"], tuple(map(float, table["coefficients"])), (float(low), float(high)), (),
-        table["source"], table["standing"], table.get("note", ""),
+        table["form"],
+        tuple(map(float, table["coefficients"])),
+        (float(low), float(high)),
+        (),
+        table["source"],
+        table["standing"],
+        table.get("note", ""),
     )
     if FORMS[result.form] != len(result.coefficients) or result.standing not in STANDINGS or not result.source:
         raise ValueError("saturation is incomplete")
@@ -135,8 +156,9 @@ def _substance(data: Mapping[str, Any]) -> Fuel:
     if data["kind"] == "pure":
         atoms = formula.ordered(data["atoms"])
     else:
-        fractions = {e: values[f"mass_fraction_{n}"].value for e, n in formula.ELEMENT_NAMES.items()
-                     if f"mass_fraction_{n}" in values}
+        fractions = {
+            e: values[f"mass_fraction_{n}"].value for e, n in formula.ELEMENT_NAMES.items() if f"mass_fraction_{n}" in values
+        }
         if abs(sum(fractions.values()) - 1.0) > 1e-6:
             raise ValueError("element mass fractions do not sum to one")
         atoms = formula.from_mass_fractions(fractions, values["molar_mass"].value)
@@ -150,13 +172,24 @@ def _substance(data: Mapping[str, Any]) -> Fuel:
         return per_kg(values.get(key), mass)
 
     fuel = Fuel(
-        name=data["name"], title=data["title"], kind=data["kind"], vapour=vapour, latent_heat=latent,
-        density=si("density"), density_temperature=si("density_temperature"), liquid_cp=si("liquid_cp"),
-        expansivity=si("expansivity"), pressure_terms=(slope.value, bend.value) if slope and bend else None,
-        critical_temperature=si("critical_temperature"), saturation=_saturation(data),
-        always_liquid=data["kind"] == "commercial", chemical_exergy_vapour=si("chemical_exergy_vapour"),
-        chemical_exergy_liquid=si("chemical_exergy_liquid"), warnings=tuple(data.get("warnings", ())),
-        records=tuple(values.items()), others=_others(data),
+        name=data["name"],
+        title=data["title"],
+        kind=data["kind"],
+        vapour=vapour,
+        latent_heat=latent,
+        density=si("density"),
+        density_temperature=si("density_temperature"),
+        liquid_cp=si("liquid_cp"),
+        expansivity=si("expansivity"),
+        pressure_terms=(slope.value, bend.value) if slope and bend else None,
+        critical_temperature=si("critical_temperature"),
+        saturation=_saturation(data),
+        always_liquid=data["kind"] == "commercial",
+        chemical_exergy_vapour=si("chemical_exergy_vapour"),
+        chemical_exergy_liquid=si("chemical_exergy_liquid"),
+        warnings=tuple(data.get("warnings", ())),
+        records=tuple(values.items()),
+        others=_others(data),
     )
     if latent is not None and None in (fuel.density, fuel.density_temperature, fuel.liquid_cp, fuel.expansivity):
         raise ValueError("liquid data are incomplete")
@@ -214,10 +247,23 @@ def _mixture(data: Mapping[str, Any]) -> Fuel:
         fuel = gas_mixture(parts)
     else:
         raise ValueError(f"unknown basis {data['basis']!r}")
-    shares = tuple((f"{data['basis']}_fraction_{name}", Value(share, "m3/m3" if data["basis"] == "volume" else
-                    "kmol/kmol", data["source"], data["standing"])) for name, share in pairs)
+    shares = tuple(
+        (
+            f"{data['basis']}_fraction_{name}",
+            Value(share, "m3/m3" if data["basis"] == "volume" else "kmol/kmol", data["source"], data["standing"]),
+        )
+        for name, share in pairs
+    )
     vapour = replace(fuel.vapour, name=data["name"])
     warnings = tuple(dict.fromkeys((*data.get("warnings", ()), *fuel.warnings)))
-    fuel = replace(fuel, name=data["name"], title=data["title"], kind=data["kind"], vapour=vapour, warnings=warnings,
-                   records=shares, others=_others(data))
+    fuel = replace(
+        fuel,
+        name=data["name"],
+        title=data["title"],
+        kind=data["kind"],
+        vapour=vapour,
+        warnings=warnings,
+        records=shares,
+        others=_others(data),
+    )
     return with_derived(fuel, f"Mixture rules over the records of {', '.join(n for n, _ in pairs)}")

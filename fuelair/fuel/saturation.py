@@ -50,6 +50,11 @@ def ideal_solution(parts: tuple[tuple[float, Saturation], ...]) -> Saturation:
     low = max(part.valid[0] for _, part in parts)
     high = min(part.valid[1] for _, part in parts)
     return Saturation(
-        "ideal-solution", (), (low, high), parts, "Raoult's law over the components", "computed",
+        "ideal-solution",
+        (),
+        (low, high),
+        parts,
+        "Raoult's law over the components",
+        "computed",
         "An estimate: real solutions deviate, gasoline with alcohol upwards.",
     )

@@ -89,8 +89,12 @@ def own(
     """
     draft = _Draft()
     numbers = {
-        "lower_heating_value": lower_heating_value, "density": density, "molar_mass": molar_mass,
-        "latent_heat": latent_heat, "liquid_cp": liquid_cp, "expansivity": expansivity,
+        "lower_heating_value": lower_heating_value,
+        "density": density,
+        "molar_mass": molar_mass,
+        "latent_heat": latent_heat,
+        "liquid_cp": liquid_cp,
+        "expansivity": expansivity,
     }
     for key, number in numbers.items():
         _in_range(draft, key, number)
@@ -129,9 +133,7 @@ def _is_liquid(draft: _Draft, phase: str | None, density: float | None, rest: tu
     return liquid
 
 
-def _atoms(
-    draft: _Draft, text: str | None, fractions: Mapping[str, float] | None, mass: float | None, liquid: bool
-) -> Atoms:
+def _atoms(draft: _Draft, text: str | None, fractions: Mapping[str, float] | None, mass: float | None, liquid: bool) -> Atoms:
     if (text is None) == (fractions is None):
         allowed = "exactly one of the two"
         draft.bad("formula or mass fractions", "formula", text, allowed, "C12H26, or C = 0.85, H = 0.15")
@@ -219,10 +221,20 @@ def _assemble(
     records = dict(draft.records)
     heat = records.pop("lower_heating_value")
     records["lower_heating_value_liquid" if liquid else "lower_heating_value_vapour"] = Value(
-        heat.value / 1e6, "MJ/kg", heat.source, heat.standing)
+        heat.value / 1e6, "MJ/kg", heat.source, heat.standing
+    )
     fuel = Fuel(
-        name=name, title=f"Own fuel {name!r}, vapour cp as {chosen}", kind="own", vapour=vapour, latent_heat=latent,
-        density=given["density"] if liquid else None, density_temperature=288.15 if liquid else None, liquid_cp=cp,
-        expansivity=beta, always_liquid=liquid, warnings=tuple(draft.warnings), records=tuple(records.items()),
+        name=name,
+        title=f"Own fuel {name!r}, vapour cp as {chosen}",
+        kind="own",
+        vapour=vapour,
+        latent_heat=latent,
+        density=given["density"] if liquid else None,
+        density_temperature=288.15 if liquid else None,
+        liquid_cp=cp,
+        expansivity=beta,
+        always_liquid=liquid,
+        warnings=tuple(draft.warnings),
+        records=tuple(records.items()),
     )
     return with_derived(fuel, "From the user's figures")

@@ -1,0 +1,1 @@
+"""The gas: species, states, engines. Cantera is imported only in this room."""

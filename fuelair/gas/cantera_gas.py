@@ -12,9 +12,10 @@ Frozen and complete states need no equilibrium solver and share ``frozen.py`` an
 from __future__ import annotations
 
 import json
+import threading
 import warnings
 from functools import lru_cache
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 import numpy.typing as npt
@@ -25,8 +26,11 @@ from fuelair.gas.frozen import assemble, frozen_state, temperature
 from fuelair.gas.mixture import gibbs, mix
 from fuelair.gas.species import SpeciesTable
 
-SOLVERS: tuple[tuple[str, float], ...] = (
-    ("element_potential", 1e-12), ("element_potential", 1e-9), ("gibbs", 1e-10), ("vcs", 1e-10),
+SOLVERS: tuple[tuple[Literal["element_potential", "gibbs", "vcs"], float], ...] = (
+    ("element_potential", 1e-12),
+    ("element_potential", 1e-9),
+    ("gibbs", 1e-10),
+    ("vcs", 1e-10),
 )
 """Solvers of Cantera and their relative tolerances, in the order they are tried."""
 MAX_STEPS = 5000
@@ -42,14 +46,23 @@ CARBON_LIMIT = 1.0 - 1e-9
 """Carbon over oxygen atoms from which on solid carbon must form."""
 
 
+Solvable = Literal["TP", "TV", "HP", "UV", "SP", "SV"]
+
+
 class CanteraGas:
     """Reference engine. Stateless for its caller: equal calls give equal bits."""
 
     name = "reference"
 
     def state(
-        self, table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array,
-        chemistry: Chemistry = "frozen", guess: Array | None = None,
+        self,
+        table: SpeciesTable,
+        pair: Pair,
+        x: Array,
+        y: Array,
+        amounts: Array,
+        chemistry: Chemistry = "frozen",
+        guess: Array | None = None,
     ) -> GasState:
         """States of a batch; see `fuelair.gas.engine.Engine.state`. ``guess`` is not needed and not used."""
         x, y = np.broadcast_arrays(np.asarray(x, float), np.asarray(y, float))
@@ -62,7 +75,7 @@ class CanteraGas:
 
     def _equilibrium(self, table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
         n = len(x)
-        start, short = composition(table, amounts, np.full(n, START_TEMPERATURE))
+        start, _ = composition(table, amounts, np.full(n, START_TEMPERATURE))
         carbon, oxygen, excess = _balance(table, amounts)
         refused = carbon > oxygen * CARBON_LIMIT
         out = start.copy()
@@ -104,11 +117,13 @@ class _Phase:
 
     def solve(self, pair: Pair, x: float, y: float, start: Array) -> tuple[Array, int] | None:
         """Equilibrium amounts (S,) and the number of solvers tried, or None."""
-        kind: str = pair
         if pair == "ST":
-            kind, y = "SP", self._pressure(x, y, start)
+            pair, y = "SP", self._pressure(x, y, start)
+        return self._solve(pair, x, y, start) if np.isfinite(y) else None
+
+    def _solve(self, kind: Solvable, x: float, y: float, start: Array) -> tuple[Array, int] | None:
         for count, (solver, tolerance) in enumerate(SOLVERS, start=1):
-            if solver == "gibbs" and kind[1] == "V" or not np.isfinite(y):
+            if solver == "gibbs" and kind[1] == "V":
                 continue
             with warnings.catch_warnings():
                 warnings.simplefilter("ignore")  # Cantera warns of temperatures outside the data; the status says it
@@ -121,9 +136,9 @@ class _Phase:
             amounts = self._amounts(start)
             if self._good(kind, x, y, amounts, start):
                 return amounts, count
-        return self._bracketed(kind, x, y, start) if kind[0] in "HUS" and np.isfinite(y) else None
+        return self._bracketed(kind, x, y, start) if kind[0] in "HUS" else None
 
-    def _bracketed(self, kind: str, x: float, y: float, start: Array) -> tuple[Array, int] | None:
+    def _bracketed(self, kind: Solvable, x: float, y: float, start: Array) -> tuple[Array, int] | None:
         """Last resort: temperature by bisection over equilibria at given temperature; each property rises with it.
 
         Cold, rich, dense gas needs it: no frozen gas of the start composition is cold enough for the pair.
@@ -132,11 +147,11 @@ class _Phase:
         amounts = start
         for _ in range(BISECTIONS):
             T = 0.5 * (low + high)
-            found = self.solve("TP" if kind[1] == "P" else "TV", T, y, start)
+            found = self._solve("TP" if kind[1] == "P" else "TV", T, y, start)
             if found is None:
                 return None
             amounts = found[0]
-            t, _, lost = temperature(mix(self.table, amounts[None]), kind, np.array([x]), np.array([y]))  # type: ignore[arg-type]
+            t, _, lost = temperature(mix(self.table, amounts[None]), kind, np.array([x]), np.array([y]))
             if lost[0] or t[0] < T:
                 high = T
             else:
@@ -186,14 +201,14 @@ class _Phase:
                 break
         return float(np.exp(log_p))
 
-    def _good(self, pair: str, x: float, y: float, amounts: Array, start: Array) -> bool:
+    def _good(self, pair: Solvable, x: float, y: float, amounts: Array, start: Array) -> bool:
         """Judge an answer: elements kept, the pair met at the solver's temperature, free energy at its minimum."""
         if not np.all(np.isfinite(amounts)):
             return False
         want = self._sum(start, self.table.atoms)
         if np.max(np.abs(self._sum(amounts, self.table.atoms) - want)) > ACCEPTED_RESIDUAL * np.max(np.abs(want)):
             return False
-        found, _, lost = temperature(mix(self.table, amounts[None]), pair, np.array([x]), np.array([y]))  # type: ignore[arg-type]
+        found, _, lost = temperature(mix(self.table, amounts[None]), pair, np.array([x]), np.array([y]))
         if lost[0] or abs(float(found[0]) / self.phase.T - 1.0) > ACCEPTED_RESIDUAL:
             return False
         return self.optimality(amounts) <= OPTIMALITY_TOLERANCE
@@ -215,15 +230,13 @@ class _Phase:
 
 
 @lru_cache(maxsize=32)
-def _phases(digest: str, rich: bool) -> list[_Phase]:
-    return []
+def _made(table: SpeciesTable, rich: bool, thread: int) -> _Phase:
+    return _Phase(table, rich)
 
 
 def _phase(table: SpeciesTable, rich: bool) -> _Phase:
-    kept = _phases(table.digest, rich)
-    if not kept:
-        kept.append(_Phase(table, rich))
-    return kept[0]
+    """The phase of a table: made once a thread, for a Cantera phase must not be shared between threads."""
+    return _made(table, rich, threading.get_ident())
 
 
 def _definition(table: SpeciesTable, chosen: npt.NDArray[np.intp]) -> dict[str, Any]:
@@ -242,15 +255,20 @@ def _definition(table: SpeciesTable, chosen: npt.NDArray[np.intp]) -> dict[str, 
             atoms: dict[str, float] = {symbol: 1.0}
         else:
             atoms = {e: float(a) for e, a in zip(table.elements, table.atoms[j], strict=True) if a}
-        species.append({
-            "name": name, "composition": atoms,
-            "thermo": {
-                "model": "NASA7", "reference-pressure": table.reference_pressure,
-                "temperature-ranges": [float(table.t_min[j]), 1000.0, float(table.t_max[j])],
-                "data": [[float(c) for c in table.low[j]], [float(c) for c in table.high[j]]],
-            },
-        })
+        species.append(
+            {
+                "name": name,
+                "composition": atoms,
+                "thermo": {
+                    "model": "NASA7",
+                    "reference-pressure": table.reference_pressure,
+                    "temperature-ranges": [float(table.t_min[j]), 1000.0, float(table.t_max[j])],
+                    "data": [[float(c) for c in table.low[j]], [float(c) for c in table.high[j]]],
+                },
+            }
+        )
     return {
         "phases": [{"name": "gas", "thermo": "ideal-gas", "elements": elements, "species": [s["name"] for s in species]}],
-        "elements": own, "species": species,
+        "elements": own,
+        "species": species,
     }

@@ -55,8 +55,13 @@ def composition(table: SpeciesTable, amounts: Array, T: Array) -> tuple[Array, n
     h2 = np.clip(missing - co, 0.0, 0.5 * hydrogen)
     out = np.where(table.inert, amounts, 0.0)
     for name, value in (
-        ("CO", co), ("CO2", carbon - co), ("H2", h2), ("H2O", 0.5 * hydrogen - h2),
-        ("O2", np.maximum(excess, 0.0) / 2.0), ("N2", _of(table, b, "N") / 2.0), ("Ar", _of(table, b, "Ar")),
+        ("CO", co),
+        ("CO2", carbon - co),
+        ("H2", h2),
+        ("H2O", 0.5 * hydrogen - h2),
+        ("O2", np.maximum(excess, 0.0) / 2.0),
+        ("N2", _of(table, b, "N") / 2.0),
+        ("Ar", _of(table, b, "Ar")),
     ):
         out[:, table.index(name)] = np.maximum(value, 0.0)
     if table.has("SO2"):

@@ -18,6 +18,7 @@ from fuelair.gas.species import SpeciesTable
 
 Array = npt.NDArray[np.float64]
 Codes = npt.NDArray[np.int8]
+Mask = npt.NDArray[np.bool_]
 Pair = Literal["TP", "TV", "HP", "UV", "SP", "SV", "ST"]
 Chemistry = Literal["frozen", "complete", "equilibrium"]
 
@@ -61,7 +62,7 @@ _REASONS = {
     Status.LIMIT_BELOW_COMPRESSION: "this model's own compression pressure already exceeds the pressure limit; "
     "raise the limit or lower the compression ratio or the trapped pressure",
     Status.VAPOUR_ABOVE_SATURATION: "the trapped charge is too cold to hold all the fuel as vapour; warm the charge, "
-    "take less fuel, lower evaporated_by_gas or inject at combustion (admission = \"direct\")",
+    'take less fuel, lower evaporated_by_gas or inject at combustion (admission = "direct")',
     Status.CUTOFF_NOT_REACHED: "even a stoichiometric mixture does not expand to this cut-off ratio; "
     "give a smaller cutoff_ratio or a fuel amount",
     Status.NOT_CONVERGED: "the gas exchange (residual gas, recirculated exhaust) found no fixed point; "

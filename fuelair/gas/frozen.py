@@ -83,8 +83,14 @@ def temperature(mixture: Mixture, pair: Pair, x: Array, y: Array) -> tuple[Array
 
 
 def assemble(
-    mixture: Mixture, pair: Pair, T: Array, x: Array, y: Array, amounts: Array,
-    iterations: npt.NDArray[np.int32], failed: npt.NDArray[np.bool_],
+    mixture: Mixture,
+    pair: Pair,
+    T: Array,
+    x: Array,
+    y: Array,
+    amounts: Array,
+    iterations: npt.NDArray[np.int32],
+    failed: npt.NDArray[np.bool_],
 ) -> GasState:
     """Fill a state record from temperature and the pair's second property."""
     cp, h, s0 = mixture.thermal(np.where(failed, START, T))
@@ -100,13 +106,21 @@ def assemble(
         s = s0 - gas_constant * np.log(p / mixture.reference_pressure)
         sound = np.sqrt(cp / (cp - gas_constant) * gas_constant * T)
     status = np.zeros(len(T), np.int8)
-    outside = (T < mixture.t_min) | (T > mixture.t_max) | ~(p <= PRESSURE_LIMIT_OF_DATA) | ~(p > 0.0)
+    outside = (mixture.t_min > T) | (mixture.t_max < T) | ~(p <= PRESSURE_LIMIT_OF_DATA) | ~(p > 0.0)
     status[outside] = Status.OUTSIDE_DATA
     status[failed] = Status.NO_SOLUTION
     return GasState(
-        T=_masked(T, failed), p=_masked(p, failed), v=_masked(v, failed), u=_masked(h - p * v, failed),
-        h=_masked(h, failed), s=_masked(s, failed), cp=_masked(cp, failed), sound=_masked(sound, failed),
-        amounts=amounts, status=status, iterations=iterations,
+        T=_masked(T, failed),
+        p=_masked(p, failed),
+        v=_masked(v, failed),
+        u=_masked(h - p * v, failed),
+        h=_masked(h, failed),
+        s=_masked(s, failed),
+        cp=_masked(cp, failed),
+        sound=_masked(sound, failed),
+        amounts=amounts,
+        status=status,
+        iterations=iterations,
     )
 
 

@@ -60,7 +60,12 @@ def mix(table: SpeciesTable, amounts: Array) -> Mixture:
     t_min = np.where(present, table.t_min, 0.0).max(axis=1)
     t_max = np.where(present, table.t_max, np.inf).min(axis=1)
     return Mixture(
-        low=both[:, :7], high=both[:, 7:], moles=moles, mixing=total(terms), t_min=t_min, t_max=t_max,
+        low=both[:, :7],
+        high=both[:, 7:],
+        moles=moles,
+        mixing=total(terms),
+        t_min=t_min,
+        t_max=t_max,
         reference_pressure=table.reference_pressure,
     )
 

@@ -13,6 +13,7 @@ that jump, so that enthalpy and entropy are continuous and every inversion has o
 from __future__ import annotations
 
 import hashlib
+import json
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property, lru_cache
@@ -105,7 +106,7 @@ class SpeciesTable:
     def digest(self) -> str:
         """Hash of names, composition and data; equal tables have equal digests."""
         h = hashlib.sha256("|".join(self.names + self.elements).encode())
-        for part in (self.atoms, self.low, self.high, self.t_min, self.t_max, self.graphite):
+        for part in (self.atoms, self.low, self.high, self.t_min, self.t_max, self.lean, self.rich, self.inert, self.graphite):
             h.update(np.ascontiguousarray(part).tobytes())
         return h.hexdigest()[:16]
 
@@ -118,15 +119,25 @@ class SpeciesTable:
 
 
 @lru_cache(maxsize=1)
-def _bundled() -> tuple[dict[str, Any], dict[str, tuple[str, ...]], Array]:
-    """Cantera species by name, the species sets, and graphite's coefficients."""
+def _sets() -> dict[str, tuple[str, ...]]:
+    """Names of the species sets in ``mechanisms/phases``."""
     import cantera as ct
 
     path = str(resources.folder("mechanisms/phases") / _PHASES)
-    sets = {n: tuple(ct.Solution(path, n).species_names) for n in ("lean", "rich", "sulfur")}
-    species = {s.name: s for s in ct.Species.list_from_file(_SPECIES_FILE)}
-    solid = {s.name: s for s in ct.Species.list_from_file(GRAPHITE_FILE)}[GRAPHITE]
-    return species, sets, _ranges(solid)[:2]
+    return {n: tuple(ct.Solution(path, n).species_names) for n in ("lean", "rich", "sulfur")}
+
+
+@lru_cache(maxsize=64)
+def _species(names: tuple[str, ...], file: str = _SPECIES_FILE) -> dict[str, Any]:
+    """Species of a bundled data file by name; only those asked for are built."""
+    import cantera as ct
+
+    phase = {"name": "chosen", "thermo": "ideal-gas", "species": [{f"{file}/species": list(names)}]}
+    try:
+        made = ct.Solution(yaml=json.dumps({"phases": [phase]}))
+    except ct.CanteraError:
+        raise DataError(f"not all of these species are in {file}: {', '.join(names)}") from None
+    return {n: made.species(n) for n in names}
 
 
 def data_versions() -> dict[str, str]:
@@ -166,16 +177,17 @@ def _entropy(ranges: Array, t: float) -> float:
 
 def _vapour_ranges(vapour: Vapour, mass: float) -> tuple[Array, float, float]:
     """Polynomial of a fuel vapour: shape from named species, enthalpy from the heating value."""
-    species, _, _ = _bundled()
-    unknown = [n for n, _ in vapour.shape if n not in species]
-    if unknown:
-        raise DataError(f"fuel {vapour.name}: shape species not in {_SPECIES_FILE}: {', '.join(unknown)}")
+    species = _species(tuple(dict.fromkeys([*(n for n, _ in vapour.shape), "O2", "CO2", "H2O", "N2", "SO2"])))
     ranges = np.zeros((2, 7))
     for name, share in vapour.shape:
         ranges += share * _ranges(species[name])
     atoms = dict(vapour.atoms)
-    products = {"CO2": atoms.get("C", 0.0), "H2O": atoms.get("H", 0.0) / 2, "N2": atoms.get("N", 0.0) / 2,
-                "SO2": atoms.get("S", 0.0)}
+    products = {
+        "CO2": atoms.get("C", 0.0),
+        "H2O": atoms.get("H", 0.0) / 2,
+        "N2": atoms.get("N", 0.0) / 2,
+        "SO2": atoms.get("S", 0.0),
+    }
     oxygen = products["CO2"] + products["H2O"] / 2 + products["SO2"] - atoms.get("O", 0.0) / 2
     target = vapour.lower_heating_value * mass - oxygen * _enthalpy(_ranges(species["O2"]), T_STANDARD)
     target += sum(n * _enthalpy(_ranges(species[k]), T_STANDARD) for k, n in products.items())
@@ -191,7 +203,7 @@ def shape_is_molecule(vapour: Vapour) -> bool:
     """Whether the species that lend the shape add up to the fuel's own atoms, so that their entropy is its own."""
     if vapour.entropy is not None:
         return True
-    species, _, _ = _bundled()
+    species = _species(tuple(n for n, _ in vapour.shape))
     atoms: dict[str, float] = {}
     for name, share in vapour.shape:
         for element, count in species[name].composition.items():
@@ -217,13 +229,11 @@ def build(vapour: Vapour | None = None, *, extra: Sequence[str] = ()) -> Species
 
 @lru_cache(maxsize=64)
 def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
-    species, sets, graphite = _bundled()
+    sets = _sets()
     sulfur = vapour is not None and any(e == "S" for e, _ in vapour.atoms)
     products = list(sets["rich"]) + (list(sets["sulfur"]) if sulfur else [])
-    missing = [n for n in extra if n not in species]
-    if missing:
-        raise DataError(f"species not in {_SPECIES_FILE}: {', '.join(missing)}")
     products += [n for n in extra if n not in products]
+    species = _species(tuple(products))
     elements = ("C", "H", "O", "N", "Ar") + (("S",) if sulfur else ())
     weight = _atomic_weights(elements)
     atoms = [[float(species[n].composition.get(e, 0.0)) for e in elements] for n in products]
@@ -253,11 +263,19 @@ def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
         raise DataError(f"species data mix reference pressures: {sorted(reference)}")
     matrix = np.array(atoms)
     return SpeciesTable(
-        names=tuple(names), elements=elements, atoms=matrix,
+        names=tuple(names),
+        elements=elements,
+        atoms=matrix,
         molar_mass=_frozen(np.array([sum(a * weight[e] for a, e in zip(row, elements, strict=True)) for row in matrix])),
-        low=np.array([r[0] for r in ranges]), high=np.array([r[1] for r in ranges]),
-        t_min=np.array(t_min), t_max=np.array(t_max), lean=np.array(lean), rich=np.array(rich),
-        inert=np.array(inert), graphite=graphite, reference_pressure=reference.pop(),
+        low=np.array([r[0] for r in ranges]),
+        high=np.array([r[1] for r in ranges]),
+        t_min=np.array(t_min),
+        t_max=np.array(t_max),
+        lean=np.array(lean),
+        rich=np.array(rich),
+        inert=np.array(inert),
+        graphite=_ranges(_species((GRAPHITE,), GRAPHITE_FILE)[GRAPHITE]),
+        reference_pressure=reference.pop(),
     )
 
 

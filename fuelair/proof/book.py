@@ -9,9 +9,10 @@ from __future__ import annotations
 import fnmatch
 import importlib.util
 import math
-from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import Any
 
 from fuelair.errors import DataError, FuelairError
 from fuelair.proof.computations import COMPUTATIONS, LOOKUPS
@@ -113,20 +114,28 @@ def run(pattern: str | None = None, *, folder: Path | None = None) -> list[RowRe
 
 def run_row(row: Row) -> RowResult:
     """Compute and judge one row; an error in the computation fails the row and is kept as text."""
-    base = {"file": row.file, "id": row.id, "source": row.source, "standing": row.standing, "quantity": row.quantity,
-            "unit": row.published.unit, "own": row.own, "explained": row.explained}
+    base = RowResult(
+        file=row.file, id=row.id, source=row.source, standing=row.standing, quantity=row.quantity, unit=row.published.unit,
+        own=row.own, explained=_explained(row),
+    )
     missing = [name for name in row.needs if importlib.util.find_spec(name) is None]
     if missing:
-        return RowResult(**base, skipped=f"needs the package {', '.join(missing)}: python -m pip install 'fuelair[test]'")  # type: ignore[arg-type]
+        return replace(base, skipped=f"needs the package {', '.join(missing)}: python -m pip install 'fuelair[test]'")
     try:
         computed = _call(COMPUTATIONS, row.compute, row)
         published, expected, tolerance = _figures(row, computed)
     except (FuelairError, ArithmeticError, LookupError, TypeError, ValueError) as error:
-        return RowResult(**base, passed=False, error=f"{type(error).__name__}: {error}")  # type: ignore[arg-type]
+        return replace(base, passed=False, error=f"{type(error).__name__}: {error}")
     difference = computed - published
-    passed = abs(difference - expected) <= tolerance  # False for NaN
-    return RowResult(**base, computed=computed, published=published, difference=difference,  # type: ignore[arg-type]
-                     expected_difference=expected, tolerance=tolerance, passed=passed, digits=_digits(difference, published))
+    return replace(
+        base, computed=computed, published=published, difference=difference, expected_difference=expected, tolerance=tolerance,
+        passed=abs(difference - expected) <= tolerance,  # False for NaN
+        digits=_digits(difference, published),
+    )
+
+
+def _explained(row: Row) -> str:
+    return " ".join(part for part in (row.explained, row.expected.reason if row.expected else "") if part)
 
 
 def summary(results: Sequence[RowResult]) -> Summary:
@@ -176,9 +185,9 @@ def _check_names(row: Row) -> None:
             raise DataError(f"{row.file}, row {row.id!r}: {name!r} is none of {', '.join(sorted(register))}")
 
 
-def _call(register: dict[str, Function], name: str, row: Row) -> float:
+def _call(register: dict[str, Function], name: str, row: Row, further: Mapping[str, Any] | None = None) -> float:
     """Value of a named function on the row's inputs, in the published unit."""
-    return float(register[name](**row.inputs)) / FACTORS[row.published.unit]
+    return float(register[name](**{**row.inputs, **(further or {})})) / FACTORS[row.published.unit]
 
 
 def _figures(row: Row, computed: float) -> tuple[float, float, float]:
@@ -192,7 +201,7 @@ def _figures(row: Row, computed: float) -> tuple[float, float, float]:
     expected = 0.0
     if row.expected is not None:
         if row.expected.lookup:
-            expected = _call(LOOKUPS, row.expected.lookup, row)
+            expected = _call(LOOKUPS, row.expected.lookup, row, row.expected.inputs)
         else:
             expected = row.expected.value or (row.expected.relative or 0.0) * published
     relative = row.tolerance.relative

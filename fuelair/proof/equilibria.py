@@ -13,8 +13,7 @@ import numpy as np
 from fuelair.errors import UnsolvedError
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.complete import water_gas_constant
-from fuelair.gas.engine import GasState, total
-from fuelair.gas.graphite import carbon_activity
+from fuelair.gas.engine import total
 from fuelair.gas.mixture import gibbs, mix
 from fuelair.gas.species import T_BREAK, R, SpeciesTable, build
 from fuelair.proof import packages
@@ -39,7 +38,7 @@ class RestrictedTable(SpeciesTable):
     def digest(self) -> str:
         """Hash of the data, the masks and the reference pressure."""
         chosen = ",".join(n for n, use in zip(self.names, self.lean, strict=True) if use)
-        return f"{SpeciesTable.digest.func(self)}|{chosen}|{self.reference_pressure!r}"  # type: ignore[attr-defined]
+        return f"{SpeciesTable.digest.func(self)}|{chosen}|{self.reference_pressure!r}"
 
 
 def restricted(species: Sequence[str], extra: Sequence[str] = (), reference_pressure: float | None = None) -> RestrictedTable:
@@ -141,11 +140,15 @@ def restricted_flame(
 
 
 @computation("log10-k")
-def log10_k(*, reaction: dict[str, float], T: float, standard_pressure: float = 0.0) -> float:
-    """log10 of the equilibrium constant from the table's free energies, at the table's own standard pressure."""
+def log10_k(*, reaction: dict[str, float], T: float) -> float:
+    """log10 of the equilibrium constant for partial pressures in bar, as the tool's equilibria have it.
+
+    From the table's free energies, which hold at the table's standard pressure.
+    """
     table = build()
     g = gibbs(table, one(T))[0]
-    return -sum(nu * float(g[table.index(n)]) for n, nu in reaction.items()) / LN10
+    own = -sum(nu * float(g[table.index(n)]) for n, nu in reaction.items()) / LN10
+    return own + math.log10(table.reference_pressure / BAR) * sum(reaction.values())
 
 
 @lookup("janaf-log10-k")
@@ -155,23 +158,34 @@ def janaf_log10_k(*, reaction: dict[str, float], T: float) -> float:
 
 
 @lookup("janaf-log10-k-known-difference")
-def known_difference(*, reaction: dict[str, float], T: float) -> float:
+def known_difference(*, reaction: dict[str, float], T: float, thermal: Sequence[str] = ()) -> float:
     """What is known to separate the tool's constant from JANAF's [dex].
 
-    The standard pressure, 1 atm in the label of the data against 1 bar: log10(1.01325) sum(nu); and the
-    enthalpy of reaction at 298.15 K, that differs by the two compilations' enthalpies of formation.
+    The standard pressure, 1 atm in the label of the data against 1 bar: log10(1.01325) sum(nu); the
+    enthalpy of reaction at 298.15 K, that differs by the two compilations' enthalpies of formation; and
+    for the species in ``thermal`` the free-energy function -[G - H(298.15)]/T.
     """
     table = build()
     label = math.log10(table.reference_pressure / BAR) * sum(reaction.values())
     ours = sum(nu * _standard_enthalpy(table, n) for n, nu in reaction.items())
     theirs = sum(nu * packages.janaf_value(n, "delta-f H", T_REFERENCE) * 1e3 for n, nu in reaction.items())
-    return label - (ours - theirs) / (R / 1e3 * T * LN10)
+    functions = 0.0
+    for name in thermal:
+        own = species_property(species=name, T=T, result="entropy") - species_property(species=name, T=T, result="enthalpy") / T
+        functions += reaction[name] * (own - packages.janaf_value(name, "-[G-H(Tr)]/T", T))
+    return label - (ours - theirs) / (R / 1e3 * T * LN10) + functions / (R / 1e3 * LN10)
 
 
 @computation("water-gas-constant")
 def water_gas(*, T: float) -> float:
     """K of CO2 + H2 = CO + H2O [-] as complete combustion and the exhaust analysis use it."""
     return float(water_gas_constant(build(), one(T))[0])
+
+
+@lookup("heywood-water-gas")
+def heywood_water_gas(*, T: float) -> float:
+    """K of CO2 + H2 = CO + H2O [-], fit of Heywood 1988 p. 105 (coefficients from memory), 400 to 3200 K."""
+    return math.exp(2.743 - 1.761e3 / T - 1.611e6 / T**2 + 0.2803e9 / T**3)
 
 
 @computation("species-property")
@@ -199,11 +213,3 @@ def janaf_species(*, species: str, T: float, result: str) -> float:
                       "formation-enthalpy": ("delta-f H", 1e3)}[result]
     return packages.janaf_value(species, column, T) * factor
 
-
-@computation("graphite-activity")
-def graphite_activity(*, carbon_monoxide: float, T: float, p: float) -> float:
-    """Activity of graphite over CO and CO2 [-] with the given share of CO."""
-    table = build()
-    amounts = table.amounts({"CO": carbon_monoxide, "CO2": 1.0 - carbon_monoxide})[None]
-    state: GasState = CanteraGas().state(table, "TP", one(T), one(p), amounts)
-    return float(carbon_activity(table, state)[0])

@@ -29,6 +29,12 @@ def janaf_value(species: str, column: str, T: float) -> float:
     return float(table[column][table["T(K)"].index(T)])
 
 
+def janaf_neighbours(species: str, T: float) -> tuple[float, float]:
+    """The printed temperatures at or around ``T`` [K]."""
+    printed = _janaf(species)["T(K)"]
+    return max(t for t in printed if t <= T), min(t for t in printed if t >= T)
+
+
 def formation_enthalpy(cas: str, method: str, phase: str) -> float:
     """Enthalpy of formation [J/mol] of a compound from the data files of the package chemicals."""
     import chemicals

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import tomllib
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -53,12 +53,17 @@ class Tolerance:
 
 @dataclass(frozen=True, slots=True)
 class Expected:
-    """A known difference, computed less published, and its cause: a value in the published unit, a share, or a lookup."""
+    """A known difference, computed less published, and its cause.
+
+    A ``value`` in the published unit, a share ``relative`` to the published figure, or a ``lookup`` with the
+    row's inputs and further ``inputs`` of its own.
+    """
 
     reason: str
     value: float | None = None
     relative: float | None = None
     lookup: str = ""
+    inputs: Mapping[str, Any] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -211,11 +216,11 @@ def _tolerance(data: Any, where: str) -> Tolerance:
 
 
 def _expected(data: Any, where: str) -> Expected:
-    data = _only(data, {"value", "relative", "lookup", "reason"}, f"{where}: expected_difference")
+    data = _only(data, {"value", "relative", "lookup", "inputs", "reason"}, f"{where}: expected_difference")
     if sum(k in data for k in ("value", "relative", "lookup")) != 1:
         raise DataError(f"{where}: expected_difference needs one of value, relative, lookup")
     return Expected(_text(data, "reason", f"{where}: expected_difference"), _number(data, "value", where),
-                    _number(data, "relative", where), data.get("lookup", ""))
+                    _number(data, "relative", where), data.get("lookup", ""), data.get("inputs", {}))
 
 
 def _only(data: Any, keys: set[str], where: str) -> dict[str, Any]:

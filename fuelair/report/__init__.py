@@ -1,0 +1,1 @@
+"""Reports: pure functions from a result to tables and files."""

@@ -30,18 +30,28 @@ def contents(a: Assessment) -> dict[str, str]:
     models = [{"model": m, "status": a.status(m).label, **a.figures(m)} for m in a.results]
     states = [{"model": m, **flat_state(s)} for m in a.results for s in a.to_states(m)]
     steps = [{"from": s.lower, "to": s.upper, "assumption": s.assumption, **s.change} for s in a.ladder]
-    over = [
-        {"model": m, "quantity": k, **both} for m, quantities in a.overprediction.items() for k, both in quantities.items()
-    ]
+    over = [{"model": m, "quantity": k, **both} for m, quantities in a.overprediction.items() for k, both in quantities.items()]
     return {
-        "assessment.json": as_json(a), "models.csv": _csv(models), "states.csv": _csv(states), "ladder.csv": _csv(steps),
-        "overprediction.csv": _csv(over), "case.toml": a.case.to_toml(), "log.txt": log(a),
+        "assessment.json": as_json(a),
+        "models.csv": _csv(models),
+        "states.csv": _csv(states),
+        "ladder.csv": _csv(steps),
+        "overprediction.csv": _csv(over),
+        "case.toml": a.case.to_toml(),
+        "log.txt": log(a),
     }
 
 
 def log(a: Assessment) -> str:
     """Versions, ledgers, warnings and sources as text."""
-    rows = [a.verdict, "", *(f"{k}: {v}" for k, v in a.versions.items()), f"gas engine: {a.engine}", f"headline: {a.headline}", ""]
+    rows = [
+        a.verdict,
+        "",
+        *(f"{k}: {v}" for k, v in a.versions.items()),
+        f"gas engine: {a.engine}",
+        f"headline: {a.headline}",
+        "",
+    ]
     rows += ["ledger (relative residuals):"]
     for model, result in a.results.items():
         rows += [f"  {model}: " + ", ".join(f"{k} {float(v[0]):.1e}" for k, v in result.ledger.items())]
