@@ -45,8 +45,10 @@ def test_every_pair_leads_back(pair):
     assert (np.abs(back.h - start.h) <= 1e-11 * scale).all()
     assert (np.abs(back.u - start.u) <= 1e-11 * scale).all()
     assert (np.abs(back.s - start.s) <= 1e-11 * scale / T).all()
-    assert back.cp == pytest.approx(start.cp, rel=1e-11)
-    assert back.sound == pytest.approx(start.sound, rel=1e-11)
+    # h and s are made continuous at 1000 K, cp is not: it jumps there by up to 2e-9
+    jump = np.where(np.abs(T - 1000.0) < 1e-6, 5e-9, 1e-11)
+    assert (np.abs(back.cp / start.cp - 1.0) <= jump).all()
+    assert (np.abs(back.sound / start.sound - 1.0) <= jump).all()
 
 
 def test_the_pair_itself_is_met_to_the_last_digits():

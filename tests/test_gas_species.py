@@ -123,9 +123,9 @@ def test_a_shape_of_other_atoms_is_not_the_molecule():
 
 
 def test_unknown_species_are_named():
-    with pytest.raises(DataError, match="not in nasa_gas.yaml: unobtainium"):
+    with pytest.raises(DataError, match=r"in nasa_gas.yaml: .*unobtainium"):
         build(extra=("unobtainium",))
-    with pytest.raises(DataError, match="shape species not in nasa_gas.yaml: unobtainium"):
+    with pytest.raises(DataError, match=r"in nasa_gas.yaml: .*unobtainium"):
         build(Vapour("x", (("H", 2.0),), 2.016, 1e8, (("unobtainium", 1.0),)))
     with pytest.raises(DataError, match="'SO2' is not in the table"):
         TABLE.index("SO2")

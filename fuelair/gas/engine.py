@@ -130,24 +130,17 @@ class Engine(Protocol):
 
 
 def total(amounts: Array) -> Array:
-    """Sum over species in fixed order, shape (N,): no bit depends on the batch."""
-    out = np.zeros(amounts.shape[0])
-    for j in range(amounts.shape[1]):
-        out += amounts[:, j]
-    return out
+    """Sum over species, shape (N,), added one after the other: no bit depends on the size of the batch."""
+    return np.asarray(np.cumsum(amounts, axis=1)[:, -1])
 
 
 def weighted(amounts: Array, weights: Array) -> Array:
-    """``amounts`` (N, S) times ``weights`` (S, K) -> (N, K), in fixed order of species.
+    """``amounts`` (N, S) times ``weights`` (S, K) -> (N, K), species added one after the other.
 
     The one place where species are summed with weights; a matrix product would give other bits for
     one case than for a thousand.
     """
-    out = np.zeros((amounts.shape[0], weights.shape[1]))
-    for j in range(amounts.shape[1]):
-        if weights[j].any():
-            out += amounts[:, j : j + 1] * weights[j]
-    return out
+    return np.asarray(np.cumsum(amounts[:, :, None] * weights, axis=1)[:, -1])
 
 
 def worst(*status: Codes) -> Codes:

@@ -12,7 +12,7 @@ import math
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 from fuelair.errors import DataError, FuelairError
 from fuelair.proof.computations import COMPUTATIONS, LOOKUPS
@@ -83,8 +83,7 @@ class Summary:
         return self.failed == 0 and self.passed > 0
 
 
-@dataclass(frozen=True, slots=True)
-class Sheet:
+class Sheet(NamedTuple):
     """What a face shows of one file: title, column heads, and text cells row by row."""
 
     title: str
@@ -102,11 +101,9 @@ def run(pattern: str | None = None, *, folder: Path | None = None) -> list[RowRe
 
     Raises
     ------
-    DataError : a file of the book is damaged, or no row fits the pattern.
+    DataError : a file of the book is damaged. A pattern that no row fits gives an empty list.
     """
     rows = [row for row in read_book(folder) if pattern is None or _fits(row, pattern)]
-    if not rows:
-        raise DataError(f"no row of the validation book fits {pattern!r}")
     for row in rows:
         _check_names(row)
     return [run_row(row) for row in rows]
@@ -138,13 +135,24 @@ def _explained(row: Row) -> str:
     return " ".join(part for part in (row.explained, row.expected.reason if row.expected else "") if part)
 
 
-def summary(results: Sequence[RowResult]) -> Summary:
+def tally(results: Sequence[RowResult]) -> Summary:
     """Count a run and name its worst row."""
     ran = [r for r in results if r.passed is not None]
     return Summary(
         rows=len(results), passed=sum(r.passed is True for r in ran), failed=sum(r.passed is False for r in ran),
         skipped=len(results) - len(ran), worst=max(ran, key=lambda r: r.used) if ran else None,
     )
+
+
+def summary(results: Sequence[RowResult]) -> str:
+    """One line on a run: counts, and the row that used most of its tolerance."""
+    t = tally(results)
+    line = f"{t.rows} rows: {t.passed} passed, {t.failed} failed, {t.skipped} skipped"
+    if t.worst is None:
+        return line
+    if math.isinf(t.worst.used):
+        return f"{line}; not computed: {t.worst.id}"
+    return f"{line}; closest to its tolerance: {t.worst.id} ({100.0 * t.worst.used:.0f} % of it)"
 
 
 def rows_for_print(results: Iterable[RowResult]) -> list[Sheet]:

@@ -19,7 +19,7 @@ from fuelair.cycle.result import REFERENCE_MODEL, CycleResult
 from fuelair.cycle.stages import HeatAddition
 from fuelair.errors import UnsolvedError
 from fuelair.gas.cantera_gas import CanteraGas
-from fuelair.gas.engine import Status
+from fuelair.gas.engine import Status, weighted
 from fuelair.gas.species import build
 from fuelair.proof.registry import computation, one, pick
 
@@ -151,13 +151,23 @@ def ratio_on_all_oxygen(**inputs: Any) -> float:
 
 
 @computation("exhaust-share")
-def exhaust_share(*, species: str, dry: bool, **inputs: Any) -> float:
+def exhaust_share(*, species: str, dry: bool, model: str = REFERENCE_MODEL, **inputs: Any) -> float:
     """Mole fraction of a species in the exhaust that leaves, wet or dry [-]."""
-    run = _fuel_air(_set(inputs), REFERENCE_MODEL)
+    run = _fuel_air(_set(inputs), model)
     table, x = run.charge.recipe.table, run.exhaust.leaving.mole_fractions()[0]
     water = float(x[table.index("H2O")]) if dry else 0.0
     return float(x[table.index(species)]) / (1.0 - water)
 
 
+@computation("exhaust-elements")
+def exhaust_elements(*, over: str, under: str, **inputs: Any) -> float:
+    """Atoms of one element over those of another in the exhaust that leaves [-]."""
+    run = _fuel_air(_set(inputs), REFERENCE_MODEL)
+    table, amounts = run.charge.recipe.table, run.exhaust.leaving.amounts
+    atoms = weighted(amounts, table.atoms)[0]
+    return float(atoms[table.elements.index(over)] / atoms[table.elements.index(under)])
+
+
 def _set(inputs: dict[str, Any]) -> Set:
-    return Set(**{k: tuple(v) if isinstance(v, list) else v for k, v in inputs.items()})
+    plain: dict[str, Any] = {k: tuple(v) if isinstance(v, list) else v for k, v in inputs.items()}
+    return Set(**plain)

@@ -6,7 +6,7 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 
@@ -38,7 +38,7 @@ class RestrictedTable(SpeciesTable):
     def digest(self) -> str:
         """Hash of the data, the masks and the reference pressure."""
         chosen = ",".join(n for n, use in zip(self.names, self.lean, strict=True) if use)
-        return f"{SpeciesTable.digest.func(self)}|{chosen}|{self.reference_pressure!r}"
+        return f"{super().digest}|{chosen}|{self.reference_pressure!r}"
 
 
 def restricted(species: Sequence[str], extra: Sequence[str] = (), reference_pressure: float | None = None) -> RestrictedTable:
@@ -105,6 +105,15 @@ def equilibrium_composition(
     if not per_mixture:
         return share
     return float(state.amounts[0, table.index(result)] / total(amounts)[0]) * sum(mixture.values())
+
+
+@lookup("label-effect")
+def label_effect(*, further: float = 0.0, **inputs: Any) -> float:
+    """What the standard pressure of the tool's label, 1 atm for 1 bar, changes in `equilibrium_composition`.
+
+    ``further`` is added: a known difference in other data, in the same measure.
+    """
+    return further + equilibrium_composition(**inputs) - equilibrium_composition(**{**inputs, "data": "bar"})
 
 
 @computation("dissociation-temperature")
@@ -190,7 +199,7 @@ def heywood_water_gas(*, T: float) -> float:
 
 @computation("species-property")
 def species_property(*, species: str, T: float, result: str) -> float:
-    """Molar ``enthalpy`` H(T) - H(298.15) [J/mol], ``entropy`` or ``heat-capacity`` [J/(mol K)], ``formation-enthalpy`` [J/mol]."""
+    """Molar ``enthalpy`` H(T) - H(298.15), ``formation-enthalpy`` [J/mol], ``entropy``, ``heat-capacity`` [J/(mol K)]."""
     table = build()
     if result == "formation-enthalpy":
         return _standard_enthalpy(table, species)

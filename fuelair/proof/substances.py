@@ -41,27 +41,31 @@ def air_table(*, T: float, base_T: float, base: float, result: str) -> float:
 
 
 @lookup("air-fit-difference")
-def air_fit_difference(*, T: float, base_T: float, base: float, result: str) -> float:
+def air_fit_difference(*, T: float, base_T: float, base: float, result: str, further: float = 0.0) -> float:
     """What the tool's polynomials of N2, O2 and CO2 change in `air_table` against the JANAF tables [SI].
 
-    Between two printed temperatures the differences are interpolated linearly.
+    Interpolated linearly between printed temperatures. ``further`` [SI] is added: a flaw of the printed row.
     """
     dh, ds = (_fit(T, p) - _fit(base_T, p) for p in ("enthalpy", "entropy"))
     _, _, r = _air(T)
     printed = air_table(T=T, base_T=base_T, base=base, result=result)
-    return pick({"h": dh, "u": dh, "s0": ds, "pr": printed * -math.expm1(-ds / r), "vr": printed * -math.expm1(ds / r)}, result)
+    changes = {"h": dh, "u": dh, "s0": ds, "pr": printed * -math.expm1(-ds / r), "vr": printed * -math.expm1(ds / r)}
+    return further + pick(changes, result)
 
 
 def _fit(T: float, result: str) -> float:
     """Tool less JANAF in the air's H - H(298.15) [J/kg] or S [J/(kg K)]."""
     air = dry_air()
     column, factor = {"enthalpy": ("H-H(Tr)", 1e3), "entropy": ("S", 1.0)}[result]
-    low, high = packages.janaf_neighbours("N2", T)
+    low, high = packages.janaf_neighbours("CO2", T)
+
+    def miss(name: str, t: float) -> float:
+        return species_property(species=name, T=t, result=result) - packages.janaf_value(name, column, t) * factor
+
+    share = 0.0 if high == low else (T - low) / (high - low)
     total = 0.0
     for name, x in (("N2", air.N2), ("O2", air.O2), ("CO2", air.CO2)):
-        ends = [species_property(species=name, T=t, result=result) - packages.janaf_value(name, column, t) * factor for t in (low, high)]
-        share = 0.0 if high == low else (T - low) / (high - low)
-        total += x * (ends[0] + share * (ends[1] - ends[0]))
+        total += x * ((1.0 - share) * miss(name, low) + share * miss(name, high))
     return total / air.molar_mass * 1e3
 
 
@@ -157,7 +161,9 @@ def carbon_fraction(*, fuel: str) -> float:
 
 
 @computation("vapour-exergy")
-def vapour_exergy(*, fuel: str = "", species: str = "", atoms: dict[str, float] | None = None, lower_heating_value: float = math.nan) -> float:
+def vapour_exergy(
+    *, fuel: str = "", species: str = "", atoms: dict[str, float] | None = None, lower_heating_value: float = math.nan
+) -> float:
     """Standard chemical exergy of a fuel vapour from species data [J/mol]."""
     record = fuels.load(fuel).vapour if fuel else named_vapour(species, atoms or {}, lower_heating_value)
     table = build(record)
@@ -174,14 +180,15 @@ def product_exergy(*, species: str) -> float:
 
 
 @lookup("szargut-known-difference")
-def szargut_known_difference(*, fuel: str, devaluation: float, per_carbon: float) -> float:
+def szargut_known_difference(*, fuel: str, devaluation: float, per_carbon: float, phase: str = "vapour") -> float:
     """What is known to separate the tool's exergy from the table's [J/mol].
 
     ``per_carbon`` [J/mol]: the exergy of CO2 in the tool's reference atmosphere less the table's, for each
     carbon atom; and the heat of combustion, the tool's less the printed ``devaluation`` enthalpy [J/mol].
     """
     record = fuels.load(fuel)
-    return dict(record.atoms).get("C", 0.0) * per_carbon + record.lower_heating_value_vapour * record.molar_mass / 1e3 - devaluation
+    heat = heating_value(fuel=fuel, result=f"lower-{phase}") * record.molar_mass / 1e3
+    return dict(record.atoms).get("C", 0.0) * per_carbon + heat - devaluation
 
 
 @computation("liquid-exergy")
