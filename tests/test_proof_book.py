@@ -37,6 +37,7 @@ def write(folder: Path, text: str, name: str = "Trial2026_water.toml") -> Path:
 def test_units_are_converted_and_digits_counted(tmp_path: Path) -> None:
     write(tmp_path, HEAD + ROW)
     (result,) = book.run(folder=tmp_path)
+    assert len(book.load(tmp_path)) == 1
     assert result.passed is True
     assert result.computed == pytest.approx(101.418, abs=1e-3)
     assert result.difference == pytest.approx(result.computed - 101.42)

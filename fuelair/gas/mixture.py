@@ -75,6 +75,16 @@ def gibbs(table: SpeciesTable, T: Array) -> Array:
     return _gibbs_over_rt(np.where((T < T_BREAK)[:, None, None], table.low, table.high), T[:, None])
 
 
+def species_thermal(table: SpeciesTable, T: Array) -> tuple[Array, Array, Array]:
+    """cp/R, h/(R T) and standard s/R of every species at ``T`` (N,), each (N, S)."""
+    a = np.where((T < T_BREAK)[:, None, None], table.low, table.high)
+    t = T[:, None]
+    cp = a[..., 0] + t * (a[..., 1] + t * (a[..., 2] + t * (a[..., 3] + t * a[..., 4])))
+    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5))) + a[..., 5] / t
+    s = a[..., 0] * np.log(t) + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
+    return cp, h, s
+
+
 def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:
     """Molar Gibbs energy over R T of graphite at ``T`` (N,) -> (N,)."""
     return _gibbs_over_rt(np.where((T < T_BREAK)[:, None], table.graphite[0], table.graphite[1]), T)

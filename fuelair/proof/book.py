@@ -91,6 +91,11 @@ class Sheet(NamedTuple):
     rows: tuple[tuple[str, ...], ...]
 
 
+def load(folder: Path | None = None) -> list[Row]:
+    """Every row of the book, not run; see `fuelair.proof.reading.read_book`."""
+    return read_book(folder)
+
+
 def run(pattern: str | None = None, *, folder: Path | None = None) -> list[RowResult]:
     """Run the rows of the book.
 
@@ -103,7 +108,7 @@ def run(pattern: str | None = None, *, folder: Path | None = None) -> list[RowRe
     ------
     DataError : a file of the book is damaged. A pattern that no row fits gives an empty list.
     """
-    rows = [row for row in read_book(folder) if pattern is None or _fits(row, pattern)]
+    rows = [row for row in load(folder) if pattern is None or _fits(row, pattern)]
     for row in rows:
         _check_names(row)
     return [run_row(row) for row in rows]
