@@ -118,7 +118,7 @@ def _gather(
     case: Case, prepared: Prepared, engine: Engine, headline: fuel_air.Run, results: dict[str, CycleResult]
 ) -> Assessment:
     balance = exergy.balance(headline)
-    engine_figures = outputs.engine_figures(prepared, headline, case.engine.cylinders)
+    engine_figures = outputs.engine_figures(prepared, headline, engine, case.engine.cylinders)
     exhaust_figures = outputs.exhaust_figures(prepared, headline, engine)
     flame = outputs.stoichiometric_flame_temperature(headline, engine)
     draft = Assessment(

@@ -136,6 +136,7 @@ class Assessment:
             "fresh_air_per_trapped_mass": fresh,
             "recirculated_per_trapped_mass": _number(c.recirculated[0]),
             "humidity_ratio": _number(recipe.humidity[0]),
+            "water_added_per_trapped_mass": _number(c.water_added[0]),
             "drained_water_per_dry_air": _number(c.drained_water[0]),
             "receiver_dew_point_K": _number(c.receiver_dew_point[0]),
             "fuel_vapour_saturation_ratio": _number(c.saturation_ratio[0]),

@@ -21,6 +21,10 @@ from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL, T_STANDARD, UNBURNED, SpeciesTable
 
 Admission = Literal["premixed", "port-liquid", "early-direct", "direct"]
+WATER_LATENT_HEAT = 44.004e6 / 18.01528
+"""Vapour less liquid water at 298.15 K [J/kg]: enthalpies of formation -241.826 and -285.830 kJ/mol (CRC)."""
+WATER_CP = 75.3e3 / 18.01528
+"""Specific heat of liquid water at 298.15 K [J/(kg K)], CRC."""
 ADMISSIONS: tuple[Admission, ...] = ("premixed", "port-liquid", "early-direct", "direct")
 
 
@@ -41,6 +45,8 @@ class Recipe:
     combustion_efficiency : share of the fuel that burns [-].
     fuel_temperature, fuel_pressure : supply state of the fuel [K], [Pa].
     evaporated_by_gas : share of the latent heat that the charge gives [-].
+    water_ratio, water_temperature : liquid water added per fuel [kg/kg], and its temperature [K]; None: no water.
+    water_at_combustion : whether that water joins at combustion; else it evaporates in the intake.
     """
 
     table: SpeciesTable
@@ -59,6 +65,9 @@ class Recipe:
     fuel_temperature: Array
     fuel_pressure: Array
     evaporated_by_gas: Array
+    water_ratio: Array | None = None
+    water_temperature: Array | None = None
+    water_at_combustion: bool = False
 
     def __len__(self) -> int:
         return len(self.pressure)
@@ -66,6 +75,11 @@ class Recipe:
     def with_equivalence_ratio(self, value: Array) -> Recipe:
         """The same recipe with another amount of fuel."""
         return replace(self, equivalence_ratio=value)
+
+    @property
+    def liquid_water_temperature(self) -> Array:
+        """Temperature of the added water [K]; 298.15 K where none is given."""
+        return np.full(len(self), T_STANDARD) if self.water_temperature is None else self.water_temperature
 
     @property
     def stoichiometric_air_fuel_ratio(self) -> float:
@@ -103,25 +117,31 @@ class Charge:
     recipe : what it was made from.
     trapped : gas state at the start of compression (status says if it cannot be).
     fuel_mass : fuel per trapped gas, wherever it is [kg/kg].
-    injected : fuel that joins at combustion [kg/kg]; zero unless ``direct``.
-    fuel_enthalpy : enthalpy of the supplied fuel [J/kg fuel] on the table's datum.
-    dry_air, water_in, recirculated, residual_fraction : make-up of the trapped gas [kg/kg].
+    fuel_injected, water_injected : what joins at combustion [kg/kg]; zero unless so admitted.
+    fuel_enthalpy, water_enthalpy : of the supplied fuel and liquid water [J/kg] on the table's datum.
+    dry_air, water_in, recirculated, residual_fraction : make-up of the trapped gas [kg/kg];
+        ``water_in`` is the vapour of the air.
+    water_added : liquid water added in intake or cylinder [kg/kg].
     residual_amounts : composition of the residual gas (N, S) [kmol/kg].
     drained_water : condensed and drained in the receiver and the exhaust cooler [kg/kg dry air].
     receiver_dew_point : of the fresh gas [K], NaN if dry.
     intake_enthalpy : (1 - x_r) h_i [J/kg trapped], fuel included when it comes with the air.
     wall_heat : latent heat that walls, not the gas, gave [J/kg trapped].
     saturation_ratio : partial pressure of fuel vapour over its saturation pressure [-].
+    water_saturation_ratio : the same of water vapour [-].
     status : why the charge cannot be, if so.
     """
 
     recipe: Recipe
     trapped: GasState
     fuel_mass: Array
-    injected: Array
+    fuel_injected: Array
+    water_injected: Array
     fuel_enthalpy: Array
+    water_enthalpy: Array
     dry_air: Array
     water_in: Array
+    water_added: Array
     recirculated: Array
     residual_fraction: Array
     residual_amounts: Array
@@ -130,6 +150,7 @@ class Charge:
     intake_enthalpy: Array
     wall_heat: Array
     saturation_ratio: Array
+    water_saturation_ratio: Array
     status: Codes
 
     @property
@@ -142,6 +163,18 @@ class Charge:
         """Fuel energy that burns, per trapped gas [J/kg]."""
         return np.asarray(self.fuel_mass * self.recipe.combustion_efficiency * self.lower_heating_value)
 
+    @property
+    def injected(self) -> Array:
+        """Mass that joins at combustion, fuel and water [kg/kg trapped]."""
+        return np.asarray(self.fuel_injected + self.water_injected)
+
+    @property
+    def injected_enthalpy(self) -> Array:
+        """Enthalpy of what joins at combustion [J/kg injected]; that of the fuel where nothing does."""
+        mass = self.injected
+        whole = self.fuel_injected * self.fuel_enthalpy + self.water_injected * self.water_enthalpy
+        return np.where(mass > 0.0, whole / np.where(mass > 0.0, mass, 1.0), self.fuel_enthalpy)
+
     def reactants(self) -> Array:
         """Composition of all gas and fuel at combustion (N, S), per kg present [kmol/kg].
 
@@ -150,7 +183,8 @@ class Charge:
         table, recipe = self.recipe.table, self.recipe
         burns, rests = table.index(FUEL), table.index(UNBURNED)
         out = self.trapped.amounts.copy()
-        fuel = out[:, burns] + self.injected / table.molar_mass[burns]
+        fuel = out[:, burns] + self.fuel_injected / table.molar_mass[burns]
+        out[:, table.index("H2O")] += self.water_injected / table.molar_mass[table.index("H2O")]
         out[:, burns] = fuel * recipe.combustion_efficiency
         out[:, rests] += fuel * (1.0 - recipe.combustion_efficiency)
         return np.asarray(out / (1.0 + self.injected)[:, None])
@@ -197,6 +231,17 @@ def supply_enthalpy(recipe: Recipe) -> Array:
     return np.where(liquid, standard + fuel.liquid_enthalpy(recipe.fuel_temperature, recipe.fuel_pressure), warm)
 
 
+def water_enthalpy(recipe: Recipe) -> Array:
+    """Enthalpy of the added liquid water [J/kg] on the table's datum, shape (N,).
+
+    Vapour at 298.15 K less the latent heat, plus constant specific heat (273 to 373 K, within 1 kJ/kg of
+    IAPWS-95 up to 353 K). Latent heat and specific heat: CRC Handbook, as in package chemicals 1.5.2.
+    """
+    table = recipe.table
+    _, vapour, _ = mix(table, _pure(table, "H2O", len(recipe))).thermal(np.full(len(recipe), T_STANDARD))
+    return np.asarray(vapour - WATER_LATENT_HEAT + WATER_CP * (recipe.liquid_water_temperature - T_STANDARD))
+
+
 def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     """Mix the trapped charge from the recipe and burned gas that comes back.
 
@@ -205,16 +250,21 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     table, n = recipe.table, len(recipe)
     before = recipe.admission != "direct"
     fresh, egr, fuel, drained, dew = _streams(recipe, burned)
+    water = fuel * (0.0 if recipe.water_ratio is None else recipe.water_ratio)
+    at_combustion = np.where(recipe.water_at_combustion, water, 0.0)
+    early = water - at_combustion
     x = burned.fraction
     fresh_mass = _mass(table, fresh)
     egr_mass = _mass(table, egr)
     intake = fresh + egr
     if before:
         intake[:, table.index(FUEL)] += fuel / table.molar_mass[table.index(FUEL)]
-    intake_mass = fresh_mass + egr_mass + (fuel if before else 0.0)
+    intake[:, table.index("H2O")] += early / table.molar_mass[table.index("H2O")]
+    intake_mass = fresh_mass + egr_mass + early + (fuel if before else 0.0)
     share = (1.0 - x) / intake_mass  # kg of fresh dry air per kg trapped
     amounts = intake * share[:, None] + burned.amounts * x[:, None]
-    enthalpy_in, wall = _intake_enthalpy(recipe, fresh, egr, fuel, share)
+    enthalpy_in, wall = _intake_enthalpy(recipe, engine, fresh, egr, fuel, share)
+    enthalpy_in = enthalpy_in + early * share * water_enthalpy(recipe)
     if recipe.from_intake:
         returned = burned.h + burned.v * (recipe.pressure - recipe.exhaust_pressure)
         h1 = enthalpy_in + np.where(x > 0.0, x * returned, 0.0)
@@ -222,17 +272,22 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     else:
         trapped = engine.state(table, "TP", recipe.temperature, recipe.pressure, amounts)
     ratio = _saturation_ratio(recipe, trapped, before)
+    wet = trapped.mole_fractions()[:, table.index("H2O")] * trapped.p / water_saturation_pressure(trapped.T)
     status = trapped.status.copy()
-    status[((status == Status.OK) | (status == Status.OUTSIDE_DATA)) & (ratio > 1.0)] = Status.VAPOUR_ABOVE_SATURATION
+    cold = (ratio > 1.0) | ((wet > 1.0) & (early > 0.0))
+    status[((status == Status.OK) | (status == Status.OUTSIDE_DATA)) & cold] = Status.VAPOUR_ABOVE_SATURATION
     status[~(x < 1.0)] = Status.NO_FRESH_CHARGE
     return Charge(
         recipe=recipe,
         trapped=trapped,
         fuel_mass=fuel * share,
-        injected=np.zeros(n) if before else fuel * share,
+        fuel_injected=np.zeros(n) if before else fuel * share,
+        water_injected=at_combustion * share,
         fuel_enthalpy=supply_enthalpy(recipe),
+        water_enthalpy=water_enthalpy(recipe),
         dry_air=share,
         water_in=(fresh_mass - 1.0) * share,
+        water_added=water * share,
         recirculated=egr_mass * share,
         residual_fraction=x,
         residual_amounts=burned.amounts,
@@ -241,6 +296,7 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
         intake_enthalpy=enthalpy_in,
         wall_heat=wall,
         saturation_ratio=ratio,
+        water_saturation_ratio=wet,
         status=status,
     )
 
@@ -281,21 +337,32 @@ def drain(table: SpeciesTable, amounts: Array, T: Array, pressure: Array) -> Arr
     return np.asarray(taken)
 
 
-def _intake_enthalpy(recipe: Recipe, fresh: Array, egr: Array, fuel: Array, share: Array) -> tuple[Array, Array]:
+def _intake_enthalpy(
+    recipe: Recipe, engine: Engine, fresh: Array, egr: Array, fuel: Array, share: Array
+) -> tuple[Array, Array]:
     """Enthalpy brought in [J/kg trapped] and the part of it given by walls as latent heat."""
     table = recipe.table
     cooled = np.where(np.isfinite(recipe.egr_temperature), recipe.egr_temperature, recipe.temperature)
-    _, h_fresh, _ = mix(table, fresh).thermal(recipe.temperature)
-    _, h_egr, _ = mix(table, egr).thermal(cooled)
-    enthalpy, wall = (h_fresh + h_egr) * share, np.zeros(len(recipe))
+    mixture = fresh.copy()
     if recipe.admission == "premixed":
-        _, h_fuel, _ = mix(table, _pure(table, FUEL, len(recipe))).thermal(recipe.temperature)
-        enthalpy = enthalpy + h_fuel * fuel * share
-    elif recipe.admission != "direct":
+        mixture[:, table.index(FUEL)] += fuel / table.molar_mass[table.index(FUEL)]
+    enthalpy = _stream_enthalpy(engine, table, mixture, recipe.temperature, recipe.pressure) * share
+    if np.any(recipe.egr_fraction > 0.0):
+        enthalpy = enthalpy + _stream_enthalpy(engine, table, egr, cooled, recipe.pressure) * share
+    wall = np.zeros(len(recipe))
+    if recipe.admission in ("port-liquid", "early-direct"):
         latent = recipe.fuel.latent_heat or 0.0
         wall = np.where(enters_as_liquid(recipe), (1.0 - recipe.evaporated_by_gas) * latent, 0.0) * fuel * share
         enthalpy = enthalpy + supply_enthalpy(recipe) * fuel * share + wall
     return enthalpy, wall
+
+
+def _stream_enthalpy(engine: Engine, table: SpeciesTable, amounts: Array, T: Array, pressure: Array) -> Array:
+    """Enthalpy of a stream given by its amounts per kg of dry air [J/kg dry air]; zero where it is empty."""
+    mass = _mass(table, amounts)
+    there = mass > 0.0
+    state = engine.state(table, "TP", T, pressure, amounts / np.where(there, mass, 1.0)[:, None])
+    return np.where(there, mass * np.where(there, state.h, 0.0), 0.0)
 
 
 def _saturation_ratio(recipe: Recipe, trapped: GasState, before: bool) -> Array:

@@ -10,7 +10,6 @@ from fuelair.cycle.breathing import short_circuit
 from fuelair.cycle.fuel_air import Run
 from fuelair.gas.complete import oxygen_excess
 from fuelair.gas.engine import Array, Engine, GasState, weighted
-from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL
 from fuelair.prepare import Prepared
 
@@ -18,7 +17,7 @@ CARBON_DIOXIDE_PER_CARBON = 44.0095 / 12.0107
 """Mass of carbon dioxide per mass of carbon."""
 
 
-def engine_figures(prepared: Prepared, run: Run, cylinders: int) -> dict[str, float | None]:
+def engine_figures(prepared: Prepared, run: Run, engine: Engine, cylinders: int) -> dict[str, float | None]:
     """Power and flows of the whole engine; None where geometry or speed are not given."""
     charge, swept, rate = run.charge, prepared.swept_volume, prepared.cycles_per_second
     volumes = prepared.settings.volumes
@@ -29,7 +28,7 @@ def engine_figures(prepared: Prepared, run: Run, cylinders: int) -> dict[str, fl
     fresh = float((charge.dry_air + charge.water_in)[0])
     passing = fresh * (1.0 + _bypass(prepared, charge))
     recipe = charge.recipe
-    density = float(recipe.pressure[0] / (_fresh_gas_constant(charge) * recipe.temperature[0]))
+    density = 1.0 / float(engine.state(recipe.table, "TP", recipe.temperature, recipe.pressure, _fresh(charge)).v[0])
     volumetric = fresh / float(charge.trapped.v[0]) * float(volumes.intake_closing[0]) / density
 
     def flow(mass: float) -> float | None:
@@ -85,7 +84,7 @@ def mixed_exhaust(prepared: Prepared, run: Run, engine: Engine) -> GasState:
         return run.exhaust.leaving
     table, recipe = charge.recipe.table, charge.recipe
     fresh = _fresh(charge)
-    _, h, _ = mix(table, fresh).thermal(recipe.temperature)
+    h = engine.state(table, "TP", recipe.temperature, recipe.pressure, fresh).h
     extra = (charge.dry_air + charge.water_in) * bypass
     return short_circuit(
         engine,
@@ -113,10 +112,6 @@ def _fresh(charge: Charge) -> Array:
     amounts = dry[None] * charge.dry_air[:, None]
     amounts[:, table.index("H2O")] += charge.water_in / table.molar_mass[table.index("H2O")]
     return np.asarray(amounts / (charge.dry_air + charge.water_in)[:, None])
-
-
-def _fresh_gas_constant(charge: Charge) -> float:
-    return float(mix(charge.recipe.table, _fresh(charge)).gas_constant()[0])
 
 
 def exhaust_equivalence_ratio(charge: Charge, amounts: Array) -> float | None:

@@ -82,6 +82,9 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
         fuel_temperature=_one(case.fuel.temperature),
         fuel_pressure=_one(case.fuel.pressure),
         evaporated_by_gas=_one(case.fuel.evaporated_by_gas),
+        water_ratio=None if charge.water_fuel_ratio is None else _one(charge.water_fuel_ratio),
+        water_temperature=None if charge.water_temperature is None else _one(charge.water_temperature),
+        water_at_combustion=charge.water_admission == "cylinder",
     )
     phi = equivalence_ratio(case, recipe.stoichiometric_air_fuel_ratio)
     swept = _swept_volume(case)

@@ -19,16 +19,37 @@ from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.species import build
 
 RECIPE = {
-    "equivalence_ratio": 1.0, "humidity": 0.0, "pressure": 101325.0, "temperature": 350.0, "egr_fraction": 0.0,
-    "egr_temperature": np.nan, "combustion_efficiency": 1.0, "fuel_temperature": 298.15, "fuel_pressure": 101325.0,
-    "evaporated_by_gas": 1.0, "exhaust_pressure": np.nan,
+    "equivalence_ratio": 1.0,
+    "humidity": 0.0,
+    "pressure": 101325.0,
+    "temperature": 350.0,
+    "egr_fraction": 0.0,
+    "egr_temperature": np.nan,
+    "combustion_efficiency": 1.0,
+    "fuel_temperature": 298.15,
+    "fuel_pressure": 101325.0,
+    "evaporated_by_gas": 1.0,
+    "exhaust_pressure": np.nan,
+    "water_ratio": 0.0,
+    "water_temperature": 298.15,
 }
 SETTINGS = {"pressure_limit": np.nan, "freeze_temperature": DEFAULT_FREEZE, "swept_volume": np.nan}
 
 
 def make(
-    fuel="iso-octane", admission="premixed", heat_addition="constant-volume", *, r=8.0, volumes=None, air=None, from_intake=False,
-    residual=0.0, four_stroke=True, exponent=None, size=None, **given,
+    fuel="iso-octane",
+    admission="premixed",
+    heat_addition="constant-volume",
+    *,
+    r=8.0,
+    volumes=None,
+    air=None,
+    from_intake=False,
+    residual=0.0,
+    four_stroke=True,
+    exponent=None,
+    size=None,
+    **given,
 ):
     """Recipe and settings of a batch; every physical key may be a number or an array."""
     values = RECIPE | SETTINGS | given
@@ -38,14 +59,22 @@ def make(
     full["exhaust_pressure"] = np.where(np.isnan(full["exhaust_pressure"]), full["pressure"], full["exhaust_pressure"])
     record = fuels.load(fuel) if isinstance(fuel, str) else fuel
     recipe = Recipe(
-        table=build(record.vapour), fuel=record, air=air or dry_air(), admission=admission, from_intake=from_intake,
+        table=build(record.vapour),
+        fuel=record,
+        air=air or dry_air(),
+        admission=admission,
+        from_intake=from_intake,
         **{k: full[k] for k in RECIPE},
     )
     settings = Settings(
         volumes=volumes or Volumes.dead_centres(np.array(np.broadcast_to(np.asarray(r, float), (n,)))),
-        heat_addition=heat_addition, residual=None if residual is None else np.array(np.broadcast_to(residual_array, (n,))),
-        exhaust_pressure=full["exhaust_pressure"], intake_pressure=full["pressure"], four_stroke=four_stroke,
-        compression_exponent=exponent, **{k: full[k] for k in SETTINGS},
+        heat_addition=heat_addition,
+        residual=None if residual is None else np.array(np.broadcast_to(residual_array, (n,))),
+        exhaust_pressure=full["exhaust_pressure"],
+        intake_pressure=full["pressure"],
+        four_stroke=four_stroke,
+        compression_exponent=exponent,
+        **{k: full[k] for k in SETTINGS},
     )
     return recipe, settings
 

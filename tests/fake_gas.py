@@ -20,8 +20,15 @@ HEATING_VALUE = 47e6
 REFERENCE_PRESSURE = 101325.0
 ELEMENTS = ("C", "H", "O", "N", "Ar")
 ATOMS = {
-    "CO2": (1, 0, 2, 0, 0), "CO": (1, 0, 1, 0, 0), "H2O": (0, 2, 1, 0, 0), "H2": (0, 2, 0, 0, 0), "O2": (0, 0, 2, 0, 0),
-    "N2": (0, 0, 0, 2, 0), "Ar": (0, 0, 0, 0, 1), "fuel": (2, 4, 0, 0, 0), "unburned-fuel": (2, 4, 0, 0, 0),
+    "CO2": (1, 0, 2, 0, 0),
+    "CO": (1, 0, 1, 0, 0),
+    "H2O": (0, 2, 1, 0, 0),
+    "H2": (0, 2, 0, 0, 0),
+    "O2": (0, 0, 2, 0, 0),
+    "N2": (0, 0, 0, 2, 0),
+    "Ar": (0, 0, 0, 0, 1),
+    "fuel": (2, 4, 0, 0, 0),
+    "unburned-fuel": (2, 4, 0, 0, 0),
 }
 WEIGHTS = np.array([12.0, 1.0, 16.0, 14.0, 40.0])
 VAPOUR = Vapour("ethylene", (("C", 2.0), ("H", 4.0)), 28.0, HEATING_VALUE, (("C2H4", 1.0),))
@@ -37,9 +44,19 @@ def fake_table() -> SpeciesTable:
     burns = np.array([name.endswith("fuel") for name in ATOMS])
     data[burns, 5] = HEATING_VALUE * mass[burns] / R
     return SpeciesTable(
-        names=tuple(ATOMS), elements=ELEMENTS, atoms=atoms, molar_mass=mass, low=data, high=data.copy(), t_min=np.full(n, 1.0),
-        t_max=np.full(n, 1e5), lean=~burns, rich=~burns, inert=np.array([name == "unburned-fuel" for name in ATOMS]),
-        graphite=np.zeros((2, 7)), reference_pressure=REFERENCE_PRESSURE,
+        names=tuple(ATOMS),
+        elements=ELEMENTS,
+        atoms=atoms,
+        molar_mass=mass,
+        low=data,
+        high=data.copy(),
+        t_min=np.full(n, 1.0),
+        t_max=np.full(n, 1e5),
+        lean=~burns,
+        rich=~burns,
+        inert=np.array([name == "unburned-fuel" for name in ATOMS]),
+        graphite=np.zeros((2, 7)),
+        reference_pressure=REFERENCE_PRESSURE,
     )
 
 
@@ -68,7 +85,10 @@ class FakeGas:
         cp, cv = CP * r, (CP - 1.0) * r
         with np.errstate(invalid="ignore", divide="ignore"):
             T = {
-                "TP": lambda: x, "TV": lambda: x, "ST": lambda: y, "HP": lambda: (x - formation) / cp,
+                "TP": lambda: x,
+                "TV": lambda: x,
+                "ST": lambda: y,
+                "HP": lambda: (x - formation) / cp,
                 "UV": lambda: (x - formation) / cv,
                 "SP": lambda: np.exp((x - mixing + r * np.log(y / REFERENCE_PRESSURE)) / cp),
                 "SV": lambda: np.exp((x - mixing + r * np.log(r / (y * REFERENCE_PRESSURE))) / cv),
@@ -80,6 +100,15 @@ class FakeGas:
             s = cp * np.log(T) + mixing - r * np.log(p / REFERENCE_PRESSURE)
             bad = ~(T > 0.0) | ~(p > 0.0)
             return GasState(
-                T=T, p=p, v=r * T / p, u=cv * T + formation, h=cp * T + formation, s=s, cp=cp, sound=np.sqrt(np.abs(K * r * T)),
-                amounts=n, status=np.where(bad, Status.NO_SOLUTION, Status.OK).astype(np.int8), iterations=np.zeros(len(x), np.int32),
+                T=T,
+                p=p,
+                v=r * T / p,
+                u=cv * T + formation,
+                h=cp * T + formation,
+                s=s,
+                cp=cp,
+                sound=np.sqrt(np.abs(K * r * T)),
+                amounts=n,
+                status=np.where(bad, Status.NO_SOLUTION, Status.OK).astype(np.int8),
+                iterations=np.zeros(len(x), np.int32),
             )

@@ -11,14 +11,31 @@ from fuelair import air
 from fuelair.air import DryAir
 
 # Saturation pressure of water [Pa], computed with CoolProp (IAPWS-IF97).
-SATURATION_IF97 = {273.16: 611.66, 283.15: 1228.2, 293.15: 2339.2, 298.15: 3169.7, 303.15: 4246.7, 313.15: 7384.4,
-                   318.15: 9594.4, 333.15: 19946.0, 373.15: 101418.0}
+SATURATION_IF97 = {
+    273.16: 611.66,
+    283.15: 1228.2,
+    293.15: 2339.2,
+    298.15: 3169.7,
+    303.15: 4246.7,
+    313.15: 7384.4,
+    318.15: 9594.4,
+    333.15: 19946.0,
+    373.15: 101418.0,
+}
 # Humidity ratio of moist air as a real gas (ASHRAE RP-1485 as in CoolProp, computed): T, p, relative humidity, W.
-HUMIDITY_REAL = [(298.15, 100e3, 0.30, 0.005997), (298.15, 101325.0, 0.50, 0.009926), (318.15, 100e3, 0.60, 0.03819),
-                 (303.15, 101325.0, 0.60, 0.01612)]
+HUMIDITY_REAL = [
+    (298.15, 100e3, 0.30, 0.005997),
+    (298.15, 101325.0, 0.50, 0.009926),
+    (318.15, 100e3, 0.60, 0.03819),
+    (303.15, 101325.0, 0.60, 0.01612),
+]
 # US Standard Atmosphere 1976 (= ISO 2533 here), geometric height; computed with the package `fluids`.
-ATMOSPHERE = {1000.0: (281.651, 89876.0, 1.1117), 2000.0: (275.154, 79501.0, 1.0066), 3000.0: (268.659, 70121.0, 0.9093),
-              5000.0: (255.676, 54048.0, 0.7364)}
+ATMOSPHERE = {
+    1000.0: (281.651, 89876.0, 1.1117),
+    2000.0: (275.154, 79501.0, 1.0066),
+    3000.0: (268.659, 70121.0, 0.9093),
+    5000.0: (255.676, 54048.0, 0.7364),
+}
 
 
 @pytest.mark.parametrize(("T", "p"), SATURATION_IF97.items())
@@ -42,8 +59,13 @@ def test_saturation_pressure_at_and_above_the_critical_point():
     assert (np.diff(cold) > 0.0).all()
     # supercooled liquid at 250 K: 95.6 Pa by the hypsometric extension of IAPWS-95 (Murphy and Koop 2005 eq. 10, below)
     t = 250.0
-    murphy_koop = np.exp(54.842763 - 6763.22 / t - 4.210 * np.log(t) + 0.000367 * t + np.tanh(0.0415 * (t - 218.8)) * (
-        53.878 - 1331.22 / t - 9.44523 * np.log(t) + 0.014025 * t))  # coefficients from memory
+    murphy_koop = np.exp(
+        54.842763
+        - 6763.22 / t
+        - 4.210 * np.log(t)
+        + 0.000367 * t
+        + np.tanh(0.0415 * (t - 218.8)) * (53.878 - 1331.22 / t - 9.44523 * np.log(t) + 0.014025 * t)
+    )  # coefficients from memory
     assert cold[1] == pytest.approx(murphy_koop, rel=0.01)
 
 
@@ -96,22 +118,29 @@ def test_dry_air_of_the_standard():
     old = air.dry_air(1976)
     assert old.molar_mass == pytest.approx(28.9644, abs=8e-4)
     assert sum(old.composition().values()) == pytest.approx(1.0, abs=1e-15)
-    assert old.CO2 == pytest.approx(314e-6, rel=1e-4)
+    assert pytest.approx(314e-6, rel=1e-4) == old.CO2
     assert air.dry_air(2020).CO2 > air.dry_air(2010).CO2 > air.dry_air(2005).CO2 > air.dry_air(2000).CO2
     assert air.dry_air(2040) == air.dry_air(2025)
-    assert old.O2 / old.N2 == pytest.approx(0.209476 / 0.78084, rel=1e-14)
+    assert pytest.approx(0.209476 / 0.78084, rel=1e-14) == old.O2 / old.N2
 
 
 def test_simplified_air():
     mixture = DryAir.from_ratio(3.76)
-    assert mixture.N2 / mixture.O2 == pytest.approx(3.76, rel=1e-15)
+    assert pytest.approx(3.76, rel=1e-15) == mixture.N2 / mixture.O2
     assert mixture.molar_mass == pytest.approx((31.9988 + 3.76 * 28.0134) / 4.76, rel=1e-12)
 
 
-@pytest.mark.parametrize("parts", [
-    {"N2": 0.79, "O2": 0.22}, {"N2": 0.79, "O2": 0.2}, {"N2": 1.01, "O2": -0.01}, {"N2": 0.995, "O2": 0.005},
-    {"N2": 0.8, "O2": 0.21, "Ar": -0.01}, {"N2": float("nan"), "O2": 0.21},
-])
+@pytest.mark.parametrize(
+    "parts",
+    [
+        {"N2": 0.79, "O2": 0.22},
+        {"N2": 0.79, "O2": 0.2},
+        {"N2": 1.01, "O2": -0.01},
+        {"N2": 0.995, "O2": 0.005},
+        {"N2": 0.8, "O2": 0.21, "Ar": -0.01},
+        {"N2": float("nan"), "O2": 0.21},
+    ],
+)
 def test_dry_air_that_is_none_is_refused(parts):
     with pytest.raises(ValueError, match="dry air must be mole fractions"):
         DryAir(**parts)

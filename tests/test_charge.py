@@ -131,17 +131,22 @@ def test_unburned_fuel_that_comes_back_stays_unburned(gas, make, trap, admission
 
 def test_water_that_cannot_stay_vapour_is_drained_and_balances(gas, make):
     humidity = 0.035
-    recipe, _ = make("n-dodecane", "direct", equivalence_ratio=0.5, humidity=humidity, pressure=4e5, temperature=318.15, from_intake=True)
+    recipe, _ = make(
+        "n-dodecane", "direct", equivalence_ratio=0.5, humidity=humidity, pressure=4e5, temperature=318.15, from_intake=True
+    )
     charge = compose(recipe, gas, nothing(recipe))
     saturation = float(air.water_saturation_pressure(318.15))
     table = recipe.table
-    ratio = table.molar_mass[table.index("H2O")] / (1.0 / total(table.amounts(
-        {k: v for k, v in recipe.air.composition().items() if v})[None])[0])
+    ratio = table.molar_mass[table.index("H2O")] / (
+        1.0 / total(table.amounts({k: v for k, v in recipe.air.composition().items() if v})[None])[0]
+    )
     left = ratio * saturation / (4e5 - saturation)
     assert charge.drained_water[0] == pytest.approx(humidity - left, rel=1e-10)
     assert charge.water_in[0] / charge.dry_air[0] == pytest.approx(left, rel=1e-10)
     assert charge.receiver_dew_point[0] == pytest.approx(318.15, abs=1e-6)
-    warm, _ = make("n-dodecane", "direct", equivalence_ratio=0.5, humidity=humidity, pressure=1e5, temperature=330.0, from_intake=True)
+    warm, _ = make(
+        "n-dodecane", "direct", equivalence_ratio=0.5, humidity=humidity, pressure=1e5, temperature=330.0, from_intake=True
+    )
     kept = compose(warm, gas, nothing(warm))
     assert kept.drained_water[0] == 0.0
     assert kept.water_in[0] / kept.dry_air[0] == pytest.approx(humidity, rel=1e-12)
@@ -150,7 +155,9 @@ def test_water_that_cannot_stay_vapour_is_drained_and_balances(gas, make):
 
 def test_drain_leaves_saturated_gas_and_everything_else():
     table = build()
-    amounts = np.array([table.amounts({"N2": 0.8, "H2O": 0.2}), table.amounts({"N2": 0.99, "H2O": 0.01}), table.amounts({"H2O": 1.0})])
+    amounts = np.array(
+        [table.amounts({"N2": 0.8, "H2O": 0.2}), table.amounts({"N2": 0.99, "H2O": 0.01}), table.amounts({"H2O": 1.0})]
+    )
     before = amounts.copy()
     taken = drain(table, amounts, np.array([320.0, 320.0, 380.0]), np.full(3, 1e5))
     x = amounts[0, table.index("H2O")] / amounts[0].sum()
@@ -173,8 +180,20 @@ def test_recirculated_water_condenses_in_the_cooler(gas, make, trap):
 
 def test_hot_recirculated_gas_is_not_drained_at_the_temperature_of_the_air(gas, make, trap):
     """Air at 300 K with a third of gas at 500 K mixes to 360 K or so, where its vapour can stay."""
-    charge = trap(gas, *make("methane", "direct", r=12.0, egr_temperature=500.0, equivalence_ratio=0.95, egr_fraction=0.35,
-                             pressure=1.5e5, temperature=300.0, from_intake=True))
+    charge = trap(
+        gas,
+        *make(
+            "methane",
+            "direct",
+            r=12.0,
+            egr_temperature=500.0,
+            equivalence_ratio=0.95,
+            egr_fraction=0.35,
+            pressure=1.5e5,
+            temperature=300.0,
+            from_intake=True,
+        ),
+    )
     T = float(charge.trapped.T[0])
     x = charge.trapped.mole_fractions()[0, charge.recipe.table.index("H2O")]
     could = float(air.water_saturation_pressure(T)) / float(charge.trapped.p[0])
@@ -183,8 +202,16 @@ def test_hot_recirculated_gas_is_not_drained_at_the_temperature_of_the_air(gas, 
 
 
 def test_enthalpy_of_intake_and_residual_by_hand(gas, make):
-    recipe, _ = make("methane", "premixed", equivalence_ratio=0.9, pressure=0.5e5, exhaust_pressure=1.1e5, temperature=310.0,
-                     from_intake=True, air=AIR)
+    recipe, _ = make(
+        "methane",
+        "premixed",
+        equivalence_ratio=0.9,
+        pressure=0.5e5,
+        exhaust_pressure=1.1e5,
+        temperature=310.0,
+        from_intake=True,
+        air=AIR,
+    )
     table = recipe.table
     burned, _ = composition(table, table.amounts({"O2": 2.0, "N2": 7.52, FUEL: 0.9})[None], np.array([1740.0]))
     residual = gas.state(table, "TP", np.array([1000.0]), np.array([1.1e5]), burned)
@@ -196,13 +223,22 @@ def test_enthalpy_of_intake_and_residual_by_hand(gas, make):
     assert charge.trapped.p[0] == 0.5e5
     assert charge.trapped.amounts[0] == pytest.approx(((1.0 - x) * fresh + x * burned)[0], rel=1e-12, abs=1e-18)
     assert charge.residual_fraction[0] == x
-    assert charge.fuel_mass[0] == pytest.approx((1.0 - x) * float(fresh[0, table.index(FUEL)] * table.molar_mass[table.index(FUEL)]), rel=1e-12)
+    assert charge.fuel_mass[0] == pytest.approx(
+        (1.0 - x) * float(fresh[0, table.index(FUEL)] * table.molar_mass[table.index(FUEL)]), rel=1e-12
+    )
 
 
 @pytest.mark.parametrize("share", [0.0, 0.4, 1.0])
 def test_the_charge_gives_its_share_of_the_latent_heat(gas, make, share):
-    recipe, _ = make("ethanol", "port-liquid", equivalence_ratio=0.6, temperature=360.0, from_intake=True, evaporated_by_gas=share,
-                     fuel_temperature=298.15)
+    recipe, _ = make(
+        "ethanol",
+        "port-liquid",
+        equivalence_ratio=0.6,
+        temperature=360.0,
+        from_intake=True,
+        evaporated_by_gas=share,
+        fuel_temperature=298.15,
+    )
     charge = compose(recipe, gas, nothing(recipe))
     table, fuel = recipe.table, recipe.fuel
     assert charge.status[0] == Status.OK
@@ -214,7 +250,9 @@ def test_the_charge_gives_its_share_of_the_latent_heat(gas, make, share):
 
 
 def test_more_evaporation_by_the_gas_is_colder(gas, make):
-    recipe, _ = make("ethanol", "port-liquid", equivalence_ratio=0.6, temperature=360.0, from_intake=True, evaporated_by_gas=[0.0, 0.5, 1.0])
+    recipe, _ = make(
+        "ethanol", "port-liquid", equivalence_ratio=0.6, temperature=360.0, from_intake=True, evaporated_by_gas=[0.0, 0.5, 1.0]
+    )
     T = compose(recipe, gas, nothing(recipe)).trapped.T
     assert (np.diff(T) < -10.0).all()
 
@@ -269,14 +307,18 @@ def test_supplied_liquid_carries_temperature_and_pressure(make):
 
 def test_premixed_fuel_brings_the_temperature_at_which_it_is_supplied(gas, make):
     """``fuel_temperature`` is the fuel's own, at the mixer; the air's is the receiver's."""
-    recipe, _ = make("hydrogen", "premixed", equivalence_ratio=1.0, temperature=320.0, from_intake=True, fuel_temperature=[250.0, 320.0])
+    recipe, _ = make(
+        "hydrogen", "premixed", equivalence_ratio=1.0, temperature=320.0, from_intake=True, fuel_temperature=[250.0, 320.0]
+    )
     T = compose(recipe, gas, nothing(recipe)).trapped.T
     assert T[0] < T[1] - 1.0
 
 
 def test_more_residual_than_charge_is_a_status(gas, make):
     recipe, _ = make("methane", equivalence_ratio=[0.8, 0.8], from_intake=True, exhaust_pressure=5e5)
-    burned = BurnedGas(np.tile(recipe.table.amounts({"N2": 0.8, "CO2": 0.2}), (2, 1)), np.array([1.2, 0.1]), np.full(2, 1e6), np.full(2, 1.0))
+    burned = BurnedGas(
+        np.tile(recipe.table.amounts({"N2": 0.8, "CO2": 0.2}), (2, 1)), np.array([1.2, 0.1]), np.full(2, 1e6), np.full(2, 1.0)
+    )
     charge = compose(recipe, gas, burned)
     assert charge.status[0] == Status.NO_FRESH_CHARGE
     assert charge.status[1] == Status.OK

@@ -39,7 +39,9 @@ def test_otto(charge, r):
     q = float(c.fuel_mass[0]) * 44.652e6
     assert figure(result, "heat_added_J_per_kg") == pytest.approx(q, rel=1e-3)  # 44.652 MJ/kg: the vapour's
     assert figure(result, "peak_temperature_K") == pytest.approx(350.0 * r**0.4 + float(c.heat_added[0]) / CV, rel=1e-13)
-    assert figure(result, "peak_pressure_Pa") == pytest.approx(101325.0 * r * figure(result, "peak_temperature_K") / 350.0, rel=1e-12)
+    assert figure(result, "peak_pressure_Pa") == pytest.approx(
+        101325.0 * r * figure(result, "peak_temperature_K") / 350.0, rel=1e-12
+    )
     assert figure(result, "release_temperature_K") == pytest.approx(figure(result, "peak_temperature_K") * r**-0.4, rel=1e-12)
 
 
@@ -78,7 +80,7 @@ def test_every_pair_of_the_cold_air_leads_back():
     letters = {"T": start.T, "P": start.p, "H": start.h, "U": start.u, "S": start.s, "V": start.v}
     for pair in ("TP", "TV", "HP", "UV", "SP", "SV"):
         back = COLD(pair, letters[pair[0]], letters[pair[1]])
-        assert back.T == pytest.approx(start.T, rel=1e-13)
+        assert pytest.approx(start.T, rel=1e-13) == back.T
         assert back.p == pytest.approx(start.p, rel=1e-13)
         assert back.s == pytest.approx(start.s, rel=1e-12)
     assert start.sound == pytest.approx(np.sqrt(1.4 * 287.05 * start.T), rel=1e-14)

@@ -52,7 +52,9 @@ def test_otto(cold, r, phi):
     assert figure(run, "peak_temperature_K") == pytest.approx(350.0 * r**0.4 + q / cv, rel=1e-12)
     assert figure(run, "heat_added_J_per_kg") == pytest.approx(q, rel=1e-14)
     assert figure(run, "work_J_per_kg") == pytest.approx(q * (1.0 - r**-0.4), rel=1e-12)
-    assert figure(run, "imep_gross_Pa") == pytest.approx(q * (1.0 - r**-0.4) / (run.charge.trapped.v[0] * (1.0 - 1.0 / r)), rel=1e-12)
+    assert figure(run, "imep_gross_Pa") == pytest.approx(
+        q * (1.0 - r**-0.4) / (run.charge.trapped.v[0] * (1.0 - 1.0 / r)), rel=1e-12
+    )
     assert figure(run, "isfc_kg_per_J") == pytest.approx(1.0 / (47e6 * (1.0 - r**-0.4)), rel=1e-12)
 
 
@@ -104,14 +106,21 @@ def test_pressure_limited_lies_between_the_two(gas, make, solve):
     limits = np.linspace(float(cp.burn.state.p[0]), float(cv.burn.state.p[0]), 7)[1:-1]
     held = solve(gas, *make("n-heptane", "direct", "pressure-limited", pressure_limit=limits, **common))
     assert (held.result.status == Status.OK).all()
-    for key, sign in (("peak_temperature_K", 1), ("indicated_efficiency", 1), ("release_temperature_K", -1), ("cutoff_ratio", -1)):
+    for key, sign in (
+        ("peak_temperature_K", 1),
+        ("indicated_efficiency", 1),
+        ("release_temperature_K", -1),
+        ("cutoff_ratio", -1),
+    ):
         values = [float(cp.result.figures[key][0]), *held.result.figures[key], float(cv.result.figures[key][0])]
         assert (np.diff(values) * sign > 0.0).all(), key
     assert np.array_equal(held.burn.state.p, limits)
 
 
 def test_a_limit_below_the_compression_pressure_is_a_status(gas, make, solve):
-    run = solve(gas, *make("n-heptane", "direct", "pressure-limited", r=15.0, equivalence_ratio=0.6, pressure_limit=[30e5, 200e5]))
+    run = solve(
+        gas, *make("n-heptane", "direct", "pressure-limited", r=15.0, equivalence_ratio=0.6, pressure_limit=[30e5, 200e5])
+    )
     assert run.result.status.tolist() == [Status.LIMIT_BELOW_COMPRESSION, Status.OK]
 
 
@@ -124,6 +133,7 @@ def test_compression_and_expansion_work_are_the_integrals_of_p_dv(gas, make, sol
         def pressure(v):
             n = np.tile(state.amounts, (len(v), 1))
             return gas.state(table, "SV", np.full(len(v), state.s[0]), v, n, chemistry).p
+
         return pressure
 
     v1, v2 = float(start.v[0]), float(run.compression.state.v[0])
@@ -147,7 +157,7 @@ def test_polytropic_compression_books_its_heat(gas, make):
         assert end.state.v == pytest.approx(start.v / ratio, rel=1e-13)
         for i in range(2):
             v1 = float(start.v[i])
-            work = work_along(lambda v, i=i, v1=v1: float(start.p[i]) * (v1 / v) ** n, v1 / ratio[i], v1)
+            work = work_along(lambda v, i=i, v1=v1, n=n: float(start.p[i]) * (v1 / v) ** n, v1 / ratio[i], v1)
             assert end.work[i] == pytest.approx(work, rel=1e-12)
         assert end.heat == pytest.approx(end.state.u - start.u - end.work, abs=1e-6)
         # heat goes in only above the isentropic exponent of this air, some 1.36 to 1.39 over the stroke
@@ -176,8 +186,15 @@ def test_the_burned_amount_at_the_limit_gives_the_limit(gas, make, solve):
         run = solve(gas, *make(fuel, admission, "pressure-limited", r=14.0, equivalence_ratio=[0.4, 0.8], pressure_limit=65e5))
         charge = run.charge
         at, share = end_of_constant_volume(
-            gas, charge.recipe.table, run.compression.state, reactants=charge.reactants(), injected=charge.injected,
-            fuel_enthalpy=charge.fuel_enthalpy, pressure_limit=np.full(2, 65e5), limited=run.burn.limited, chemistry="equilibrium",
+            gas,
+            charge.recipe.table,
+            run.compression.state,
+            reactants=charge.reactants(),
+            injected=charge.injected,
+            fuel_enthalpy=charge.fuel_enthalpy,
+            pressure_limit=np.full(2, 65e5),
+            limited=run.burn.limited,
+            chemistry="equilibrium",
         )
         assert run.burn.limited.all()
         assert at.p == pytest.approx(np.full(2, 65e5), rel=1e-8)
@@ -253,7 +270,16 @@ def test_burning_nothing_changes_nothing(gas):
     start = gas.state(table, "TP", np.array([800.0]), np.array([40e5]), n)
     nothing = np.zeros(1)
     for mode in ("constant-volume", "constant-pressure"):
-        end = burn(gas, table, start, reactants=n, injected=nothing, fuel_enthalpy=nothing, heat_addition=mode,
-                   pressure_limit=np.full(1, np.nan), chemistry="complete")
+        end = burn(
+            gas,
+            table,
+            start,
+            reactants=n,
+            injected=nothing,
+            fuel_enthalpy=nothing,
+            heat_addition=mode,
+            pressure_limit=np.full(1, np.nan),
+            chemistry="complete",
+        )
         assert end.state.T[0] == pytest.approx(800.0, rel=1e-12)
         assert end.volume_ratio[0] == pytest.approx(1.0, rel=1e-12)

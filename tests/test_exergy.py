@@ -34,7 +34,11 @@ def test_the_reference_gases_have_the_exergy_of_their_own_dilution():
         n[0, table.index(name)] = 1.0
         from fuelair.gas.mixture import gibbs
 
-        g = 8314.46261815324 * 298.15 * (gibbs(table, np.array([298.15]))[0, table.index(name)] + np.log(101325.0 / table.reference_pressure))
+        g = (
+            8314.46261815324
+            * 298.15
+            * (gibbs(table, np.array([298.15]))[0, table.index(name)] + np.log(101325.0 / table.reference_pressure))
+        )
         own = g - float(weighted(n, table.atoms)[0] @ potential)
         assert own == pytest.approx(8314.46261815324 * 298.15 * np.log(101325.0 / pressure), abs=1.0)
 
@@ -57,13 +61,32 @@ def test_styrylo_ratio_of_a_gas_oil():
     assert 1.06 < exergy.styrylo_ratio(fuels.load("diesel")) < 1.08
 
 
-@pytest.mark.parametrize(("fuel", "admission", "mode"), [
-    ("methane", "premixed", "constant-volume"), ("hydrogen", "direct", "pressure-limited"), ("methanol", "direct", "constant-pressure"),
-    ("methanol", "port-liquid", "constant-volume"), ("renewable-diesel", "direct", "pressure-limited"), ("gasoline", "early-direct", "constant-volume"),
-])
+@pytest.mark.parametrize(
+    ("fuel", "admission", "mode"),
+    [
+        ("methane", "premixed", "constant-volume"),
+        ("hydrogen", "direct", "pressure-limited"),
+        ("methanol", "direct", "constant-pressure"),
+        ("methanol", "port-liquid", "constant-volume"),
+        ("renewable-diesel", "direct", "pressure-limited"),
+        ("gasoline", "early-direct", "constant-volume"),
+    ],
+)
 def test_destruction_computed_twice_agrees_and_is_positive(gas, make, solve, fuel, admission, mode):
-    run = solve(gas, *make(fuel, admission, mode, r=13.0, equivalence_ratio=[0.1, 0.4, 0.9, 1.2], temperature=400.0, pressure_limit=70e5,
-                           fuel_pressure=300e5, combustion_efficiency=0.97))
+    run = solve(
+        gas,
+        *make(
+            fuel,
+            admission,
+            mode,
+            r=13.0,
+            equivalence_ratio=[0.1, 0.4, 0.9, 1.2],
+            temperature=400.0,
+            pressure_limit=70e5,
+            fuel_pressure=300e5,
+            combustion_efficiency=0.97,
+        ),
+    )
     assert (run.result.status == Status.OK).all()
     b = exergy.balance(run)
     assert b.destroyed_by_balance == pytest.approx(b.destroyed_by_entropy, rel=1e-9)
@@ -79,8 +102,19 @@ def test_destruction_computed_twice_agrees_and_is_positive(gas, make, solve, fue
 def test_the_balance_of_the_closed_part_adds_up(gas, make, solve, admission, fuel):
     """``work`` is the exergy of the work from the start of compression to release, against p0."""
     volumes = Volumes(*(np.array([x]) for x in (0.07, 1.0, 0.96, 0.07)))
-    run = solve(gas, *make(fuel, admission, equivalence_ratio=0.6, pressure=2.9e5, exhaust_pressure=2.7e5, temperature=335.0,
-                           volumes=volumes, fuel_pressure=400e5))
+    run = solve(
+        gas,
+        *make(
+            fuel,
+            admission,
+            equivalence_ratio=0.6,
+            pressure=2.9e5,
+            exhaust_pressure=2.7e5,
+            temperature=335.0,
+            volumes=volumes,
+            fuel_pressure=400e5,
+        ),
+    )
     b = exergy.balance(run)
     brought = b.fuel if admission == "direct" else 0.0
     left = b.trapped + brought - b.destroyed_by_entropy - b.release
@@ -113,4 +147,6 @@ def test_every_demo(name):
     b = a.exergy
     assert b.destroyed_by_balance[0] == pytest.approx(float(b.destroyed_by_entropy[0]), rel=1e-9)
     assert 0.1 < b.destroyed_by_entropy[0] / b.fuel[0] < 0.35
-    assert a.exergy_figures()["fuel_basis"] == ("species data" if name in ("hydrogen-genset", "methanol-ferry") else "Szargut-Styrylo ratio")
+    assert a.exergy_figures()["fuel_basis"] == (
+        "species data" if name in ("hydrogen-genset", "methanol-ferry") else "Szargut-Styrylo ratio"
+    )

@@ -8,7 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from fuelair import fuel as fuels
-from fuelair.gas.complete import composition, complete_state, oxygen_excess, water_gas_constant
+from fuelair.gas.complete import complete_state, composition, oxygen_excess, water_gas_constant
 from fuelair.gas.engine import Status, weighted
 from fuelair.gas.species import build
 
@@ -86,7 +86,7 @@ def test_every_pair_leads_back(pair):
     letters = {"T": start.T, "P": start.p, "H": start.h, "U": start.u, "S": start.s, "V": start.v}
     back = complete_state(TABLE, pair, letters[pair[0]], letters[pair[1]], amounts)
     assert (back.status == Status.OK).all()
-    assert back.T == pytest.approx(start.T, rel=1e-11)
+    assert pytest.approx(start.T, rel=1e-11) == back.T
     assert back.p == pytest.approx(start.p, rel=1e-11)
     assert back.amounts == pytest.approx(start.amounts, rel=1e-10, abs=1e-16)
 
@@ -96,7 +96,9 @@ def test_too_little_oxygen_for_carbon_monoxide():
     burned, short = composition(TABLE, charge(3.999), np.array([2000.0]))
     assert not short[0]
     assert parts(burned)["CO"] == pytest.approx(3.999, rel=1e-3)
-    state = complete_state(TABLE, "TP", np.array([2000.0, 2000.0]), np.array([1e5, 1e5]), np.vstack([charge(4.01), charge(3.999)]))
+    state = complete_state(
+        TABLE, "TP", np.array([2000.0, 2000.0]), np.array([1e5, 1e5]), np.vstack([charge(4.01), charge(3.999)])
+    )
     assert state.status.tolist() == [Status.OXYGEN_BELOW_CARBON_MONOXIDE, Status.OK]
 
 

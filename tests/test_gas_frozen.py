@@ -106,10 +106,21 @@ def test_outside_the_data_is_said_and_still_has_numbers():
     assert np.isfinite(state.h).all()
 
 
-@pytest.mark.parametrize(("pair", "x", "y"), [
-    ("HP", 1e9, 1e5), ("HP", -1e9, 1e5), ("UV", 1e9, 1.0), ("SV", -1e5, 1.0), ("HP", np.nan, 1e5), ("UV", 0.0, np.nan),
-    ("HP", 0.0, -1e5), ("UV", 0.0, 0.0), ("TP", np.nan, 1e5), ("ST", 7000.0, np.nan),
-])
+@pytest.mark.parametrize(
+    ("pair", "x", "y"),
+    [
+        ("HP", 1e9, 1e5),
+        ("HP", -1e9, 1e5),
+        ("UV", 1e9, 1.0),
+        ("SV", -1e5, 1.0),
+        ("HP", np.nan, 1e5),
+        ("UV", 0.0, np.nan),
+        ("HP", 0.0, -1e5),
+        ("UV", 0.0, 0.0),
+        ("TP", np.nan, 1e5),
+        ("ST", 7000.0, np.nan),
+    ],
+)
 def test_a_pair_that_no_gas_can_have_is_no_solution_and_kills_no_neighbour(pair, x, y):
     amounts = np.tile(TABLE.amounts(BURNED), (2, 1))
     good = frozen_state(TABLE, "TP", np.array([1500.0]), np.array([1e6]), amounts[:1])
@@ -122,8 +133,10 @@ def test_a_pair_that_no_gas_can_have_is_no_solution_and_kills_no_neighbour(pair,
 
 def test_validity_is_that_of_the_species_present():
     table = TABLE
-    narrow = type(table)(**{f: getattr(table, f) for f in table.__dataclass_fields__} | {
-        "t_max": np.where(np.array(table.names) == "fuel", 1500.0, table.t_max)})
+    narrow = type(table)(
+        **{f: getattr(table, f) for f in table.__dataclass_fields__}
+        | {"t_max": np.where(np.array(table.names) == "fuel", 1500.0, table.t_max)}
+    )
     T, p = np.array([1600.0, 1600.0]), np.array([1e5, 1e5])
     amounts = np.array([table.amounts(FRESH), table.amounts(BURNED)])
     assert frozen_state(narrow, "TP", T, p, amounts).status.tolist() == [Status.OUTSIDE_DATA, Status.OK]
@@ -134,7 +147,9 @@ def test_entropy_of_mixing():
     state = frozen_state(TABLE, "TP", np.array([500.0]), np.array([TABLE.reference_pressure]), both)
     parts = 0.0
     for name, x in (("N2", 0.79), ("O2", 0.21)):
-        pure = frozen_state(TABLE, "TP", np.array([500.0]), np.array([TABLE.reference_pressure]), TABLE.amounts({name: 1.0})[None])
+        pure = frozen_state(
+            TABLE, "TP", np.array([500.0]), np.array([TABLE.reference_pressure]), TABLE.amounts({name: 1.0})[None]
+        )
         mass = TABLE.molar_mass[TABLE.index(name)]
         parts += x * (pure.s[0] * mass - R * np.log(x))
     mean = 0.79 * TABLE.molar_mass[TABLE.index("N2")] + 0.21 * TABLE.molar_mass[TABLE.index("O2")]

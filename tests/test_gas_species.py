@@ -81,8 +81,10 @@ def test_complete_combustion_at_298_k_releases_the_record_s_heating_value(name):
     atoms = dict(fuel.atoms)
     c, h, o, n, s = (atoms.get(e, 0.0) for e in "CHONS")
     products = {"CO2": c, "H2O": h / 2.0, "N2": n / 2.0, **({"SO2": s} if s else {})}
-    enthalpy = {k: float(mix(table, pure(table, k)).thermal(np.array([298.15]))[1][0]) * table.molar_mass[table.index(k)]
-                for k in (*products, "O2", FUEL)}
+    enthalpy = {
+        k: float(mix(table, pure(table, k)).thermal(np.array([298.15]))[1][0]) * table.molar_mass[table.index(k)]
+        for k in (*products, "O2", FUEL)
+    }
     oxygen = c + h / 4.0 + s - o / 2.0
     released = enthalpy[FUEL] + oxygen * enthalpy["O2"] - sum(v * enthalpy[k] for k, v in products.items())
     mass = table.molar_mass[table.index(FUEL)]
@@ -103,7 +105,9 @@ def test_unburned_fuel_is_the_same_gas_but_inert():
 
 def test_equal_tables_have_equal_digests_and_others_do_not():
     vapour = fuels.load("methane").vapour
-    other = Vapour(vapour.name, vapour.atoms, vapour.molar_mass, vapour.lower_heating_value * (1.0 + 1e-9), vapour.shape, vapour.entropy)
+    other = Vapour(
+        vapour.name, vapour.atoms, vapour.molar_mass, vapour.lower_heating_value * (1.0 + 1e-9), vapour.shape, vapour.entropy
+    )
     assert build(vapour).digest == build(vapour).digest
     assert len({build(vapour).digest, build(other).digest, build().digest, build(vapour, extra=("C2H2,acetylene",)).digest}) == 4
 

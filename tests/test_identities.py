@@ -103,7 +103,7 @@ def test_speed_of_sound(gas, named):
     name, T, p, _ = named
     base = at(gas, name, "TP", np.array([T]), np.array([p]), "frozen")
     line, step = around(gas, name, "SV", float(base.s[0]), float(base.v[0]), "frozen", 1)
-    close(base.sound[0] ** 2, -float(base.v[0]) ** 2 * slope(line.p, step), "sound")
+    close(base.sound[0] ** 2, -(float(base.v[0]) ** 2) * slope(line.p, step), "sound")
 
 
 @pytest.mark.parametrize("name", EQUILIBRIUM)

@@ -36,7 +36,9 @@ def test_slope_against_the_velocity_formula(offset):
     """dx/dt = a sin t (1 + (cos t - e/(a ...))...): here from the angle of the rod, not from the formula under test."""
     t = np.linspace(-170.0, 170.0, 41)
     step = 1e-3
-    numeric = (relative_volume(t + step, pin_offset=offset, **CRANK) - relative_volume(t - step, pin_offset=offset, **CRANK)) / (2 * step)
+    numeric = (relative_volume(t + step, pin_offset=offset, **CRANK) - relative_volume(t - step, pin_offset=offset, **CRANK)) / (
+        2 * step
+    )
     # the piston moves with the crank pin's velocity along the rod: v_piston cos b = v_pin along the rod
     a, rod = 0.095, 0.32
     dead = np.arcsin(offset / (rod + a))
@@ -52,8 +54,9 @@ def test_slope_against_the_velocity_formula(offset):
 def test_volume_stays_between_its_dead_centres(offset, angle, r, rod):
     v = float(relative_volume(angle, stroke=0.19, rod_length=rod, compression_ratio=r, pin_offset=offset))
     assert 1.0 / (r - 1.0) - 1e-12 <= v <= 1.0 / (r - 1.0) + 1.0 + 1e-12
-    assert float(relative_volume(angle + 360.0, stroke=0.19, rod_length=rod, compression_ratio=r, pin_offset=offset)) == pytest.approx(
-        v, abs=1e-9)
+    assert float(
+        relative_volume(angle + 360.0, stroke=0.19, rod_length=rod, compression_ratio=r, pin_offset=offset)
+    ) == pytest.approx(v, abs=1e-9)
 
 
 @pytest.mark.parametrize("offset", [0.0, 0.015, -0.015])
@@ -70,7 +73,9 @@ def test_the_offset_mirrors_the_turn():
     t = np.linspace(-180.0, 180.0, 37)
     one, other = (relative_volume(s * t, pin_offset=s * 0.015, **CRANK) for s in (1.0, -1.0))
     assert one == pytest.approx(other, rel=1e-13)
-    assert relative_volume(60.0, pin_offset=0.015, **CRANK) != pytest.approx(float(relative_volume(-60.0, pin_offset=0.015, **CRANK)), rel=1e-4)
+    assert relative_volume(60.0, pin_offset=0.015, **CRANK) != pytest.approx(
+        float(relative_volume(-60.0, pin_offset=0.015, **CRANK)), rel=1e-4
+    )
 
 
 def test_positive_offset_lies_on_the_thrust_side_of_expansion():
@@ -93,9 +98,13 @@ def test_positive_offset_lies_on_the_thrust_side_of_expansion():
 def test_swept_volume():
     assert swept_volume(bore=0.16, stroke=0.19, rod_length=0.32) == pytest.approx(0.25 * np.pi * 0.16**2 * 0.19, rel=1e-14)
     # an offset lengthens the travel: by about e^2 a / (l^2 - a^2)
-    longer = swept_volume(bore=0.16, stroke=0.19, rod_length=0.32, pin_offset=0.015) / swept_volume(bore=0.16, stroke=0.19, rod_length=0.32)
+    longer = swept_volume(bore=0.16, stroke=0.19, rod_length=0.32, pin_offset=0.015) / swept_volume(
+        bore=0.16, stroke=0.19, rod_length=0.32
+    )
     assert longer - 1.0 == pytest.approx(0.5 * 0.015**2 / (0.32**2 - 0.095**2), rel=0.01)
-    assert swept_volume(bore=0.1, stroke=0.1, rod_length=0.2, pin_offset=0.01) == swept_volume(bore=0.1, stroke=0.1, rod_length=0.2, pin_offset=-0.01)
+    assert swept_volume(bore=0.1, stroke=0.1, rod_length=0.2, pin_offset=0.01) == swept_volume(
+        bore=0.1, stroke=0.1, rod_length=0.2, pin_offset=-0.01
+    )
 
 
 @pytest.mark.parametrize("offset", [0.005, -0.005])

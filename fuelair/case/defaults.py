@@ -19,6 +19,8 @@ def follow(draft: Draft) -> dict[str, Any]:
         "engine.exhaust_closing": BOTTOM_BEFORE if two_stroke else GAS_EXCHANGE_CENTRE,
         "charge.exhaust_pressure": pressure,
         "charge.egr_temperature": temperature if draft.get("charge.egr_fraction") else None,
+        "charge.water_admission": "intake" if draft.get("charge.water_fuel_ratio") else None,
+        "charge.water_temperature": 298.15 if draft.get("charge.water_fuel_ratio") else None,
         "charge.residual_fraction": 0.0 if efficiency is None else 1.0 - efficiency,
     }
     outside = ambient(draft.get("charge.altitude"), draft.get("charge.reference"))

@@ -190,6 +190,12 @@ def _recirculated(draft: Draft) -> Iterator[Problem]:
         yield Problem("has no meaning without charge.egr_fraction", key, draft.raw(key), hint='egr_fraction = "10 %"')
 
 
+def _water(draft: Draft) -> Iterator[Problem]:
+    for key in draft.given("charge.water_admission", "charge.water_temperature"):
+        if not draft.has("charge.water_fuel_ratio"):
+            yield Problem("has no meaning without charge.water_fuel_ratio", key, draft.raw(key), hint="water_fuel_ratio = 0.5")
+
+
 def _geometry(draft: Draft) -> Iterator[Problem]:
     bore, stroke, rod = "engine.bore", "engine.stroke", "engine.rod_length"
     for one, other in ((bore, stroke), (stroke, bore)):
@@ -285,6 +291,6 @@ def _as_fuel_sees_it(build: Callable[[], object]) -> Iterator[Problem]:
 
 RULES: Final[tuple[Rule, ...]] = (
     _one_amount, _one_pair, _residual, _two_stroke, _heat_addition, _gas, _ambient, _evaporation, _recirculated,
-    _geometry, _timing,
+    _water, _geometry, _timing,
     _one_fuel, _fuel_name, _blend, _own,
 )  # fmt: skip

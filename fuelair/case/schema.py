@@ -18,6 +18,7 @@ Admission = Literal["premixed", "port-liquid", "early-direct", "direct"]
 HeatAddition = Literal["constant-volume", "constant-pressure", "pressure-limited"]
 Expansion = Literal["equilibrium", "frozen"]
 Reference = Literal["iso-3046", "iso-1585", "iacs-m28", "isa"]
+WaterAdmission = Literal["intake", "cylinder"]
 GasModel = Literal["ideal"]
 FuelPhase = Literal["liquid", "vapour"]
 
@@ -155,6 +156,15 @@ class ChargeSection(Section):
     )
     egr_temperature: Annotated[float | None, Within("temperature", 250.0, 1200.0, "K")] = _key(
         "of the recirculated exhaust after its cooler; default the temperature of the pair", example="90 degC"
+    )
+    water_fuel_ratio: Annotated[float | None, Within("ratio", 0.0, 3.0)] = _key(
+        "liquid water added, mass over the mass of fuel", example=0.5
+    )
+    water_admission: Annotated[WaterAdmission | None, Choice(get_args(WaterAdmission))] = _key(
+        "intake (default): the water evaporates before compression; cylinder: it joins at combustion", example="cylinder"
+    )
+    water_temperature: Annotated[float | None, Within("temperature", 273.15, 373.15, "degC")] = _key(
+        "of the added water; default 298.15 K", example="40 degC"
     )
     scavenging_efficiency: Annotated[float | None, Within("ratio", 0.1, 1.0, "%")] = _key(
         "two-stroke: fresh charge trapped over trapped mass", example="92 %"

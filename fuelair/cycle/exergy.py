@@ -13,7 +13,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fuelair.charge import Charge, enters_as_liquid
+from fuelair.air import M_H2O, water_saturation_pressure
+from fuelair.charge import WATER_CP, Charge, enters_as_liquid
 from fuelair.cycle.fuel_air import Run
 from fuelair.fuel import Fuel
 from fuelair.gas.engine import Array, GasState, weighted
@@ -92,8 +93,7 @@ def flow(table: SpeciesTable, state: GasState) -> Array:
 
 def standard_vapour_exergy(table: SpeciesTable) -> float:
     """Chemical exergy of the fuel vapour at the dead state from species data [J/kg fuel]."""
-    amounts = np.zeros((1, len(table)))
-    amounts[0, table.index(FUEL)] = 1.0 / table.molar_mass[table.index(FUEL)]
+    amounts = _only(table, FUEL, 1)
     mixture = mix(table, amounts)
     _, h, s = mixture.thermal(np.array([T0]))
     s = s - mixture.gas_constant() * np.log(P0 / table.reference_pressure)
@@ -121,9 +121,7 @@ def fuel_exergy(charge: Charge) -> tuple[Array, bool]:
     liquid = enters_as_liquid(recipe)
     exact = shape_is_molecule(fuel.vapour)
     vapour = standard_vapour_exergy(table) if exact else styrylo_ratio(fuel) * fuel.lower_heating_value_vapour
-    amounts = np.zeros((len(recipe), len(table)))
-    amounts[:, table.index(FUEL)] = 1.0 / table.molar_mass[table.index(FUEL)]
-    mixture = mix(table, amounts)
+    mixture = mix(table, _only(table, FUEL, len(recipe)))
     r = mixture.gas_constant()
     _, h0, s0 = mixture.thermal(np.full(len(recipe), T0))
     if recipe.admission == "premixed":
@@ -143,15 +141,25 @@ def fuel_exergy(charge: Charge) -> tuple[Array, bool]:
     return np.where(liquid, base + heating + pressing, warm), not exact
 
 
+def water_exergy(charge: Charge) -> Array:
+    """Flow exergy of the added liquid water [J/kg]: as its vapour at saturation, plus what warming takes."""
+    T, n = charge.recipe.liquid_water_temperature, len(charge.recipe)
+    at_rest = R * T0 / M_H2O * np.log(water_saturation_pressure(T0) / REFERENCE_PRESSURES["H2O"])
+    return np.asarray(np.full(n, at_rest) + WATER_CP * (T - T0 - T0 * np.log(T / T0)))
+
+
 def balance(run: Run) -> ExergyBalance:
     """Exergy balance of a solved fuel-air cycle."""
     charge, table = run.charge, run.charge.recipe.table
     mass = 1.0 + charge.injected
     per_kg, marked = fuel_exergy(charge)
     compressed, burned = run.compression.state, run.burn.state
-    supplied = charge.injected * per_kg
-    entropy_of_fuel = (charge.fuel_enthalpy - per_kg - _elements(table, _fuel_only(table, len(mass)))) / T0
-    generated = mass * burned.s - compressed.s - charge.injected * entropy_of_fuel
+    water = water_exergy(charge)
+    supplied = charge.fuel_injected * per_kg + charge.water_injected * water
+    entropy_of_fuel = (charge.fuel_enthalpy - per_kg - _elements(table, _only(table, FUEL, len(mass)))) / T0
+    entropy_of_water = (charge.water_enthalpy - water - _elements(table, _only(table, "H2O", len(mass)))) / T0
+    brought = charge.fuel_injected * entropy_of_fuel + charge.water_injected * entropy_of_water
+    generated = mass * burned.s - compressed.s - brought
     useful = run.burn.expansion_work * mass - P0 * (mass * burned.v - compressed.v)
     by_balance = nonflow(table, compressed) + supplied - mass * nonflow(table, burned) - useful
     release = mass * nonflow(table, run.release)
@@ -182,7 +190,7 @@ def _elements(table: SpeciesTable, amounts: Array) -> Array:
     return weighted(amounts, (table.atoms * element_potentials(table)).sum(axis=1, keepdims=True))[:, 0]
 
 
-def _fuel_only(table: SpeciesTable, n: int) -> Array:
+def _only(table: SpeciesTable, name: str, n: int) -> Array:
     amounts = np.zeros((n, len(table)))
-    amounts[:, table.index(FUEL)] = 1.0 / table.molar_mass[table.index(FUEL)]
+    amounts[:, table.index(name)] = 1.0 / table.molar_mass[table.index(name)]
     return amounts

@@ -11,8 +11,6 @@ from fuelair.cycle.breathing import Exhaust, Settings, exhaust
 from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, performance
 from fuelair.cycle.stages import Burn, Compression, Expansion, burn, compress, end_of_constant_volume, expand
 from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, total, weighted, worst
-from fuelair.gas.mixture import mix
-from fuelair.gas.species import SpeciesTable
 
 
 @dataclass(frozen=True, slots=True)
@@ -66,7 +64,7 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
         compression.state,
         reactants=reactants,
         injected=charge.injected,
-        fuel_enthalpy=charge.fuel_enthalpy,
+        fuel_enthalpy=charge.injected_enthalpy,
         heat_addition=settings.heat_addition,
         pressure_limit=settings.pressure_limit,
         chemistry=kind.chemistry,
@@ -98,7 +96,7 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
         exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
     ) | _state_figures(charge, compression, burned, release, out)
-    ledger = _ledger(charge, compression, burned, release, out, settings, headline)
+    ledger = _ledger(engine, charge, compression, burned, release, out, settings, headline)
     status = worst(
         charge.status, compression.state.status, burned.status, release.status, out.remaining.status, out.leaving.status
     )
@@ -151,7 +149,7 @@ def _points(
             compression.state,
             reactants=charge.reactants(),
             injected=charge.injected,
-            fuel_enthalpy=charge.fuel_enthalpy,
+            fuel_enthalpy=charge.injected_enthalpy,
             pressure_limit=settings.pressure_limit,
             limited=limited,
             chemistry=kind.chemistry,
@@ -168,6 +166,7 @@ def _points(
 
 
 def _ledger(
+    engine: Engine,
     charge: Charge,
     compression: Compression,
     burned: Burn,
@@ -178,8 +177,8 @@ def _ledger(
 ) -> dict[str, Array]:
     """Relative residuals of mass, elements, energy and entropy, each from states evaluated afresh.
 
-    Energy of a state is taken from its composition and temperature through the mixed polynomials, not
-    from the value that the solver was asked to meet. Energies are relative to the fuel's.
+    Energy of a state is taken from its composition, temperature and volume, not from the value that the
+    solver was asked to meet. Energies are relative to the fuel's.
     """
     table, mass = charge.recipe.table, 1.0 + charge.injected
     atoms, target = table.atoms, charge.reactants()
@@ -191,14 +190,17 @@ def _ledger(
     for state in (burned.state, release, out.remaining, out.leaving):
         elements = np.maximum(elements, np.max(np.abs(weighted(state.amounts, atoms) - whole), axis=1) / biggest)
         kilograms = np.maximum(kilograms, np.abs(total(state.amounts * table.molar_mass) - 1.0))
-    u1, u3, u4 = (_energy(table, s) for s in (charge.trapped, burned.state, release))
-    supplied = charge.injected * charge.fuel_enthalpy
+    first, second, third, fourth, stays, leaves = (
+        engine.state(table, "TV", s.T, s.v, s.amounts)
+        for s in (charge.trapped, compression.state, burned.state, release, out.remaining, out.leaving)
+    )
+    supplied = charge.injected * charge.injected_enthalpy
     work = -compression.work + burned.expansion_work * mass + mass * (burned.state.u - release.u)
-    closed_part = u1 + supplied + compression.heat - mass * u4 - work
-    left = mass * u4 - out.remaining_mass * _energy(table, out.remaining) - out.leaving_mass * _enthalpy(table, out.leaving)
+    closed_part = first.u + supplied + compression.heat - mass * fourth.u - work
+    left = mass * fourth.u - out.remaining_mass * stays.u - out.leaving_mass * leaves.h
     v4 = charge.trapped.v * settings.volumes.exhaust_opening / settings.volumes.intake_closing
     leaving = left + settings.exhaust_pressure * (v4 - out.remaining_mass * out.remaining.v)
-    combustion = (mass * u3 + burned.expansion_work * mass) - (_energy(table, compression.state) + supplied)
+    combustion = mass * (third.u + burned.expansion_work) - (second.u + supplied)
     out_ledger = {
         "mass": kilograms,
         "elements": elements,
@@ -207,22 +209,14 @@ def _ledger(
         "energy_exhaust": leaving / scale,
     }
     if settings.compression_exponent is None:
-        out_ledger["entropy_compression"] = compression.state.s / charge.trapped.s - 1.0
-    out_ledger["entropy_expansion"] = release.s / burned.state.s - 1.0
+        out_ledger["entropy_compression"] = second.s / first.s - 1.0
+    out_ledger["entropy_expansion"] = fourth.s / third.s - 1.0
     if charge.recipe.from_intake and headline:
         x = charge.residual_fraction
         p_i, p_e = charge.recipe.pressure, settings.exhaust_pressure
         inside = out.remaining.h + out.remaining.v * (p_i - p_e)
-        mixed = charge.intake_enthalpy + np.where(x > 0.0, x * inside, 0.0) - _enthalpy(table, charge.trapped)
+        mixed = charge.intake_enthalpy + np.where(x > 0.0, x * inside, 0.0) - first.h
         out_ledger["energy_intake"] = mixed / scale
         out_ledger["residual"] = out.remaining_mass - x
     return out_ledger
 
-
-def _enthalpy(table: SpeciesTable, state: GasState) -> Array:
-    return mix(table, state.amounts).thermal(state.T)[1]
-
-
-def _energy(table: SpeciesTable, state: GasState) -> Array:
-    mixture = mix(table, state.amounts)
-    return np.asarray(mixture.thermal(state.T)[1] - mixture.gas_constant() * state.T)

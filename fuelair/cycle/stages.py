@@ -25,6 +25,8 @@ SPLIT_TOLERANCE = 1e-10
 """Width at which the share of fuel burned at constant volume is found."""
 LIMIT_SLACK = 1e-12
 """A constant-volume peak this close above the limit counts as below it."""
+POLYTROPIC_WIDTH = 1e-11
+"""Width at which the end temperature of polytropic compression is found [K]."""
 CARBON_WIDTH = 1e-3
 """Width at which the temperature where graphite would begin to form is found [K]."""
 
@@ -70,8 +72,13 @@ def compress(
         state = engine.state(table, "SV", start.s, v, start.amounts)
         return Compression(state, state.u - start.u, np.zeros_like(v))
     pressure = start.p * volume_ratio**exponent
-    temperature = start.T * volume_ratio ** (exponent - 1.0)  # holds for an ideal gas only
-    state = engine.state(table, "TP", temperature, pressure, start.amounts)
+
+    def miss(T: Array) -> Array:
+        return np.asarray(engine.state(table, "TV", T, v, start.amounts).p / pressure - 1.0)
+
+    ideal = start.T * volume_ratio ** (exponent - 1.0)
+    T, _ = bracketed(miss, 0.5 * ideal, 2.0 * ideal, width=POLYTROPIC_WIDTH)
+    state = engine.state(table, "TV", T, v, start.amounts)
     work = (
         (state.p * state.v - start.p * start.v) / (exponent - 1.0)
         if exponent != 1.0

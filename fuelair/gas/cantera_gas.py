@@ -20,7 +20,7 @@ from typing import Any, Literal
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.complete import complete_state, composition, element_amounts
+from fuelair.gas.complete import complete_state, composition, solid_carbon
 from fuelair.gas.engine import Array, Chemistry, GasState, Pair, Status, weighted
 from fuelair.gas.frozen import assemble, frozen_state, temperature
 from fuelair.gas.mixture import gibbs, mix
@@ -42,8 +42,6 @@ ACCEPTED_RESIDUAL = 1e-8
 OPTIMALITY_TOLERANCE = 1e-5
 """Largest allowed |mu - sum of element potentials| over R T of species above ``TRACE``."""
 TRACE = 1e-6
-CARBON_LIMIT = 1.0 - 1e-9
-"""Carbon over oxygen atoms from which on solid carbon must form."""
 
 
 Solvable = Literal["TP", "TV", "HP", "UV", "SP", "SV"]
@@ -76,14 +74,12 @@ class CanteraGas:
     def _equilibrium(self, table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
         n = len(x)
         start, _ = composition(table, amounts, np.full(n, START_TEMPERATURE))
-        carbon, oxygen, excess = _balance(table, amounts)
-        refused = carbon > oxygen * CARBON_LIMIT
+        refused = solid_carbon(table, amounts)
         out = start.copy()
         failed = refused | ~np.isfinite(x) | ~np.isfinite(y)
         iterations = np.zeros(n, np.int32)
         for i in np.flatnonzero(~failed):
-            phase = _phase(table, bool(excess[i] < 0.0))
-            solved = phase.solve(pair, float(x[i]), float(y[i]), start[i])
+            solved = _phase(table).solve(pair, float(x[i]), float(y[i]), start[i])
             if solved is None:
                 failed[i] = True
                 continue
@@ -95,20 +91,13 @@ class CanteraGas:
         return state
 
 
-def _balance(table: SpeciesTable, amounts: Array) -> tuple[Array, Array, Array]:
-    b = element_amounts(table, amounts)
-    c, h, o = (b[:, table.elements.index(e)] for e in "CHO")
-    s = b[:, table.elements.index("S")] if "S" in table.elements else np.zeros(len(b))
-    return c, o - 2.0 * s, o - 2.0 * c - 0.5 * h - 2.0 * s
-
-
 class _Phase:
     """One Cantera phase over a fixed subset of the table, with its own solver ladder."""
 
-    def __init__(self, table: SpeciesTable, rich: bool) -> None:
+    def __init__(self, table: SpeciesTable) -> None:
         import cantera as ct
 
-        chosen = np.flatnonzero((table.rich if rich else table.lean) | table.inert)
+        chosen = np.flatnonzero(table.rich | table.inert)
         self.table, self.columns, self.error = table, chosen, ct.CanteraError
         self.phase = ct.Solution(yaml=json.dumps(_definition(table, chosen)))
         self.active_atoms = table.reactive_atoms[chosen]
@@ -230,13 +219,13 @@ class _Phase:
 
 
 @lru_cache(maxsize=32)
-def _made(table: SpeciesTable, rich: bool, thread: int) -> _Phase:
-    return _Phase(table, rich)
+def _made(table: SpeciesTable, thread: int) -> _Phase:
+    return _Phase(table)
 
 
-def _phase(table: SpeciesTable, rich: bool) -> _Phase:
+def _phase(table: SpeciesTable) -> _Phase:
     """The phase of a table: made once a thread, for a Cantera phase must not be shared between threads."""
-    return _made(table, rich, threading.get_ident())
+    return _made(table, threading.get_ident())
 
 
 def _definition(table: SpeciesTable, chosen: npt.NDArray[np.intp]) -> dict[str, Any]:

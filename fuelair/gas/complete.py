@@ -10,7 +10,7 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.engine import Array, GasState, Pair, Status, weighted
+from fuelair.gas.engine import Array, GasState, Mask, Pair, Status, weighted
 from fuelair.gas.frozen import assemble, frozen_state, temperature
 from fuelair.gas.mixture import gibbs, mix
 from fuelair.gas.species import SpeciesTable
@@ -18,6 +18,8 @@ from fuelair.gas.species import SpeciesTable
 TOLERANCE = 1e-13
 """Relative change of temperature at which composition and energy agree."""
 MAX_ITERATIONS = 80
+CARBON_LIMIT = 1.0 - 1e-9
+"""Carbon over oxygen atoms from which on solid carbon must form."""
 START = 2000.0
 """Temperature of the first water-gas composition [K]."""
 
@@ -32,6 +34,12 @@ def oxygen_excess(table: SpeciesTable, amounts: Array) -> Array:
     b = element_amounts(table, amounts)
     need = 2.0 * _of(table, b, "C") + 0.5 * _of(table, b, "H") + 2.0 * _of(table, b, "S")
     return np.asarray(_of(table, b, "O") - need)
+
+
+def solid_carbon(table: SpeciesTable, amounts: Array) -> Mask:
+    """Where carbon atoms reach the oxygen atoms (those beside sulfur dioxide), so that solid carbon must form."""
+    b = element_amounts(table, amounts)
+    return np.asarray(_of(table, b, "C") > (_of(table, b, "O") - 2.0 * _of(table, b, "S")) * CARBON_LIMIT)
 
 
 def water_gas_constant(table: SpeciesTable, T: Array) -> Array:

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.complete import composition, oxygen_excess
+from fuelair.gas.complete import composition, oxygen_excess, solid_carbon
 from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, GasState, Mask, Pair, Status, total
 from fuelair.gas.frozen import frozen_state
 from fuelair.gas.gibbs import Departure, equilibrate
@@ -25,8 +25,6 @@ TOLERANCE = 1e-14
 STALL = 1e-11
 """Relative change of the unknown at which a search is done; the second when it no longer shrinks."""
 MAX_ITERATIONS = 80
-STARTS_FROM = "the ideal-gas state of the same pair"
-CARBON_LIMIT = 1.0 - 1e-9
 WATER_GAS_STEPS = 60
 
 
@@ -71,9 +69,8 @@ class RealGas:
 
 
 def _equilibrium(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
-    excess = oxygen_excess(table, amounts)
-    allowed = np.where((excess < 0.0)[:, None], table.rich, table.lean)
-    refused = _too_much_carbon(table, amounts)
+    allowed = np.tile(table.rich, (len(x), 1))
+    refused = solid_carbon(table, amounts)
 
     def departure(T: Array, size: Array, n: Array, at_pressure: bool) -> Departure:
         return _departure(gas, T, size, n, at_pressure)
@@ -86,15 +83,6 @@ def _equilibrium(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y:
     bad = (status == Status.NO_SOLUTION) | refused
     fields = {k: np.where(bad, np.nan, getattr(state, k)) for k in ("T", "p", "v", "u", "h", "s", "cp", "sound")}
     return GasState(amounts=found.amounts, status=status, iterations=found.iterations, **fields)
-
-
-def _too_much_carbon(table: SpeciesTable, amounts: Array) -> Mask:
-    from fuelair.gas.complete import element_amounts
-
-    b = element_amounts(table, amounts)
-    oxygen = b[:, table.elements.index("O")]
-    sulfur = b[:, table.elements.index("S")] if "S" in table.elements else 0.0
-    return np.asarray(b[:, table.elements.index("C")] > (oxygen - 2.0 * sulfur) * CARBON_LIMIT)
 
 
 def _complete(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:

@@ -130,7 +130,7 @@ def combustion_irreversibility(*, basis: str = "fuel", **inputs: Any) -> float:
     whole = balance.fuel
     if basis == "reactants":
         table = run.charge.recipe.table
-        whole = exergy.nonflow(table, run.compression.state) + run.charge.injected * balance.fuel_per_kg
+        whole = exergy.nonflow(table, run.compression.state) + run.charge.fuel_injected * balance.fuel_per_kg
     return float(balance.destroyed_by_entropy[0] / whole[0])
 
 

@@ -252,7 +252,7 @@ def exergy(a: Assessment) -> Table:
     fuel = float(e.fuel[0])
     parts = (
         ("brought by the fuel", fuel),
-        ("brought by the trapped gas", float(e.trapped[0]) - (0.0 if a.charge.injected[0] > 0.0 else fuel)),
+        ("brought by the trapped gas", float(e.trapped[0]) - (0.0 if a.charge.fuel_injected[0] > 0.0 else fuel)),
         ("destroyed by combustion", float(e.destroyed_by_entropy[0])),
         ("indicated work", float(e.work[0])),
         ("leaves with the exhaust", float(e.leaving[0])),
