@@ -38,7 +38,7 @@ class DryAir:
 
     def __post_init__(self) -> None:
         parts = self.composition()
-        if min(parts.values()) < 0.0 or not 0.01 < self.O2 < 1.0 or abs(sum(parts.values()) - 1.0) > 1e-9:
+        if not (min(parts.values()) >= 0.0 and 0.01 < self.O2 <= 1.0 and abs(sum(parts.values()) - 1.0) <= 1e-9):
             raise ValueError(f"dry air must be mole fractions >= 0 that sum to 1 with O2 above 0.01, got {parts}")
 
     def composition(self) -> dict[str, float]:

@@ -92,7 +92,7 @@ def companions(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> di
         }
     share = float(charge.oxygen_excess_ratio()[0])
     if float(charge.oxygen_left()[0]) < 0.0:
-        heat = charge.heat_added * max(share, 0.0)
+        heat = np.minimum(charge.fuel_mass * charge.lower_heating_value * max(share, 0.0), charge.heat_added)
         out["oxygen-limited-heat"] = {k: air_standard.run(k, state, charge, settings, heat=heat) for k, state in airs.items()}
     return out
 

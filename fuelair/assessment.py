@@ -52,7 +52,7 @@ class Assessment:
     results: dict[str, CycleResult]
     companions: dict[str, dict[str, CycleResult]]
     ladder: tuple[Step, ...]
-    overprediction: dict[str, dict[str, dict[str, float]]]
+    overprediction: dict[str, dict[str, dict[str, float | None]]]
     exergy: ExergyBalance
     engine_figures: dict[str, float | None]
     exhaust_figures: dict[str, float | None]
@@ -180,6 +180,7 @@ class Assessment:
             "burned",
             "release",
             "work",
+            "indicated_work",
             "destroyed_by_entropy",
             "destroyed_by_balance",
             "leaving",
@@ -205,7 +206,11 @@ class Assessment:
             "charge": self.charge_figures(),
             "models": {m: self._model(m) for m in self.results},
             "companions": {
-                basis: {m: {k: _number(v[0]) for k, v in r.figures.items()} for m, r in group.items()}
+                basis: {
+                    m: {"status": Status(int(r.status[0])).label}
+                    | {k: _number(v[0]) if r.status[0] == Status.OK else None for k, v in r.figures.items()}
+                    for m, r in group.items()
+                }
                 for basis, group in self.companions.items()
             },
             "states": {m: self.to_states(m) for m in self.results},

@@ -14,6 +14,7 @@ from fuelair.crank import kinematics
 from fuelair.cycle.breathing import DEFAULT_FREEZE, Settings
 from fuelair.cycle.geometry import Volumes
 from fuelair.cycle.result import FREEZE_MODEL, REFERENCE_MODEL
+from fuelair.errors import InputError, Problem
 from fuelair.fuel import Fuel
 from fuelair.gas.engine import Array
 from fuelair.gas.species import build
@@ -65,6 +66,19 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
         (charge.intake_pressure, charge.intake_temperature) if from_intake else (charge.pressure, charge.temperature)
     )
     humidity = air.humidity_ratio(outside.relative_humidity, outside.temperature, outside.pressure, mixture.molar_mass)
+    if not np.isfinite(humidity):
+        most = outside.pressure / float(air.water_saturation_pressure(outside.temperature))
+        raise InputError(
+            case.place(
+                Problem(
+                    "the water vapour alone would exceed the ambient pressure",
+                    "charge.relative_humidity",
+                    outside.relative_humidity,
+                    f"below {most:.1%} at {outside.temperature:g} K and {outside.pressure / 1e5:g} bar ambient",
+                    "check charge.ambient_temperature and charge.ambient_pressure",
+                )
+            )
+        )
     recipe = Recipe(
         table=build(fuel.vapour),
         fuel=fuel,

@@ -109,7 +109,7 @@ def _validity(a: Assessment) -> Iterator[str]:
     if density > DENSE:
         yield (
             "Ideal-gas law: for air at r = 16 it puts compression pressure 2 % (1 bar), 7 % (3 bar) and 13 % (6 bar trapped) "
-            "below the reference equation of state (Lemmon et al. 2000); peak pressure is as much too low wherever no limit holds it."
+            "below the reference equation of state (Lemmon et al. 2000); so is peak pressure wherever no limit holds it."
         )
     for model, result in a.results.items():
         status = Status(int(result.status[0]))

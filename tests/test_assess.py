@@ -24,12 +24,14 @@ def demos() -> dict[str, fuelair.Assessment]:
 
 
 def small(**changes: object) -> fuelair.Case:
-    case = fuelair.Case.from_dict({
-        "engine": {"compression_ratio": 10.0},
-        "fuel": {"name": "methane", "admission": "premixed"},
-        "charge": {"equivalence_ratio": 0.9, "pressure": 1e5, "temperature": 330.0},
-        "combustion": {"heat_addition": "constant-volume"},
-    })
+    case = fuelair.Case.from_dict(
+        {
+            "engine": {"compression_ratio": 10.0},
+            "fuel": {"name": "methane", "admission": "premixed"},
+            "charge": {"equivalence_ratio": 0.9, "pressure": 1e5, "temperature": 330.0},
+            "combustion": {"heat_addition": "constant-volume"},
+        }
+    )
     return case.replace({k.replace("__", "."): v for k, v in changes.items()}) if changes else case
 
 
@@ -58,7 +60,9 @@ def test_ladder_adds_up_and_overprediction_matches_the_table(demos: dict[str, fu
         whole = sum(s.change[key] for s in a.ladder)
         assert whole == pytest.approx(table.loc[MODELS[-1], key] - table.loc[MODELS[0], key], rel=1e-12, abs=1e-9)
     cold = a.overprediction["air-cold"]["peak_temperature_K"]
-    assert cold["absolute"] == pytest.approx(table.loc["air-cold", "peak_temperature_K"] - table.loc[MODELS[-1], "peak_temperature_K"])
+    assert cold["absolute"] == pytest.approx(
+        table.loc["air-cold", "peak_temperature_K"] - table.loc[MODELS[-1], "peak_temperature_K"]
+    )
     assert cold["absolute"] > 300.0
 
 
@@ -67,8 +71,20 @@ def test_json_is_strict_complete_and_repeatable(demos: dict[str, fuelair.Assessm
     a = demos[name]
     text = json.dumps(a.to_dict(), allow_nan=False)
     data = json.loads(text)
-    for key in ("format", "versions", "engine", "case", "charge", "models", "states", "ladder", "overprediction", "ledger",
-                "warnings", "sources"):
+    for key in (
+        "format",
+        "versions",
+        "engine",
+        "case",
+        "charge",
+        "models",
+        "states",
+        "ladder",
+        "overprediction",
+        "ledger",
+        "warnings",
+        "sources",
+    ):
         assert key in data
     assert data["format"] == 1
     assert data["engine"] == "reference"
@@ -99,7 +115,9 @@ def test_engine_figures_agree_with_each_other(demos: dict[str, fuelair.Assessmen
         e, f = a.engine_figures, a.figures()
         assert None not in (e["indicated_power_W"], e["fuel_mass_flow_kg_per_s"], f["isfc_kg_per_J"])
         assert e["fuel_mass_flow_kg_per_s"] == pytest.approx(e["indicated_power_W"] * f["isfc_kg_per_J"], rel=1e-12)  # type: ignore[operator]
-        assert e["exhaust_mass_flow_kg_per_s"] == pytest.approx(e["air_mass_flow_kg_per_s"] + e["fuel_mass_flow_kg_per_s"], rel=1e-9)  # type: ignore[operator]
+        assert e["exhaust_mass_flow_kg_per_s"] == pytest.approx(
+            e["air_mass_flow_kg_per_s"] + e["fuel_mass_flow_kg_per_s"], rel=1e-9
+        )  # type: ignore[operator]
         swept = a.swept_volume
         assert swept is not None
         assert a.case.engine.speed is not None
@@ -130,10 +148,16 @@ def test_fuel_mass_gives_back_the_equivalence_ratio() -> None:
 
 
 def test_cutoff_ratio_gives_back_itself() -> None:
-    case = small().replace({
-        "fuel.name": "diesel", "fuel.admission": "direct", "engine.compression_ratio": 18.0,
-        "combustion.heat_addition": "constant-pressure", "charge.equivalence_ratio": None, "combustion.cutoff_ratio": 2.2,
-    })
+    case = small().replace(
+        {
+            "fuel.name": "diesel",
+            "fuel.admission": "direct",
+            "engine.compression_ratio": 18.0,
+            "combustion.heat_addition": "constant-pressure",
+            "charge.equivalence_ratio": None,
+            "combustion.cutoff_ratio": 2.2,
+        }
+    )
     a = fuelair.assess(case)
     assert a.figures()["cutoff_ratio"] == pytest.approx(2.2, rel=1e-10)
     same = a.companions["same-cutoff-ratio"]["air-cold"].figures
@@ -143,10 +167,16 @@ def test_cutoff_ratio_gives_back_itself() -> None:
 
 
 def test_a_cutoff_ratio_out_of_reach_is_a_named_status() -> None:
-    case = small().replace({
-        "fuel.name": "diesel", "fuel.admission": "direct", "engine.compression_ratio": 18.0,
-        "combustion.heat_addition": "constant-pressure", "charge.equivalence_ratio": None, "combustion.cutoff_ratio": 9.0,
-    })
+    case = small().replace(
+        {
+            "fuel.name": "diesel",
+            "fuel.admission": "direct",
+            "engine.compression_ratio": 18.0,
+            "combustion.heat_addition": "constant-pressure",
+            "charge.equivalence_ratio": None,
+            "combustion.cutoff_ratio": 9.0,
+        }
+    )
     with pytest.raises(fuelair.UnsolvedError) as caught:
         fuelair.assess(case)
     assert caught.value.status == "cutoff-not-reached"
@@ -174,10 +204,14 @@ def test_a_limit_between_the_models_fails_only_the_crude_one() -> None:
     assert a.to_dict()["models"]["air-cold"]["peak_temperature_K"] is None
 
 
-@pytest.mark.parametrize(("changes", "headline"), [
-    ({}, "fuel-air-equilibrium"), ({"gas.expansion": "frozen"}, "fuel-air-frozen"),
-    ({"gas.freeze_temperature": 2000.0}, "fuel-air-freeze-below"),
-])
+@pytest.mark.parametrize(
+    ("changes", "headline"),
+    [
+        ({}, "fuel-air-equilibrium"),
+        ({"gas.expansion": "frozen"}, "fuel-air-frozen"),
+        ({"gas.freeze_temperature": 2000.0}, "fuel-air-freeze-below"),
+    ],
+)
 def test_the_gas_section_chooses_the_headline(changes: dict[str, object], headline: str) -> None:
     a = fuelair.assess(small().replace(changes))
     assert a.headline == headline
@@ -197,10 +231,18 @@ def test_rich_charges_are_said_to_be_rich_and_offer_oxygen_limited_heat() -> Non
 
 def test_recirculated_exhaust_counts_its_oxygen() -> None:
     """phi 0.60 fresh with 20 % recirculated is 0.547 on all oxygen (hand arithmetic)."""
-    a = fuelair.assess(small().replace({
-        "fuel.name": "n-dodecane", "fuel.admission": "direct", "charge.equivalence_ratio": 0.6, "charge.egr_fraction": 0.2,
-        "engine.compression_ratio": 16.0, "combustion.heat_addition": "constant-pressure",
-    }))
+    a = fuelair.assess(
+        small().replace(
+            {
+                "fuel.name": "n-dodecane",
+                "fuel.admission": "direct",
+                "charge.equivalence_ratio": 0.6,
+                "charge.egr_fraction": 0.2,
+                "engine.compression_ratio": 16.0,
+                "combustion.heat_addition": "constant-pressure",
+            }
+        )
+    )
     assert 1 / a.charge_figures()["oxygen_excess_ratio"] == pytest.approx(0.547, abs=5e-4)  # type: ignore[operator]
 
 

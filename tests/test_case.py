@@ -118,9 +118,7 @@ def test_every_default_is_visible_and_named() -> None:
         "limits": {},
     }  # fmt: skip
     written = {f"{section}.{key}" for section, keys in PLAIN.items() for key in keys}
-    everything = {
-        f"{section}.{key}" for section, keys in case.resolved().items() if isinstance(keys, dict) for key in keys
-    }
+    everything = {f"{section}.{key}" for section, keys in case.resolved().items() if isinstance(keys, dict) for key in keys}
     assert case.defaulted == (everything | {"title"}) - written
 
 

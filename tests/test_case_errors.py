@@ -214,9 +214,7 @@ def test_all_mistakes_at_once_each_on_its_line() -> None:
 
 def test_missing_sections_are_said_once_each() -> None:
     found = problems_of("title = 'x'\n")
-    assert [(problem.key, problem.line) for problem in found] == [
-        (key, 0) for key in ("engine", "fuel", "charge", "combustion")
-    ]
+    assert [(problem.key, problem.line) for problem in found] == [(key, 0) for key in ("engine", "fuel", "charge", "combustion")]
 
 
 @pytest.mark.parametrize(
@@ -359,9 +357,7 @@ k = 3
 SCALARS = st.one_of(st.integers(-9, 9), st.booleans(), st.floats(allow_nan=False), st.text(max_size=8), st.dates())
 TREES = st.dictionaries(
     st.text(min_size=1, max_size=5),
-    st.recursive(
-        SCALARS, lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.text(max_size=4), inner, max_size=3)
-    ),
+    st.recursive(SCALARS, lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.text(max_size=4), inner, max_size=3)),
     max_size=5,
 )
 

@@ -209,6 +209,7 @@ def test_enthalpy_of_intake_and_residual_by_hand(gas, make):
         pressure=0.5e5,
         exhaust_pressure=1.1e5,
         temperature=310.0,
+        fuel_temperature=310.0,
         from_intake=True,
         air=AIR,
     )

@@ -20,8 +20,15 @@ DEMO = resources.demos() / "workboat.toml"
 
 
 def run(*words: str, cwd: Path | None = None, **environment: str) -> subprocess.CompletedProcess[str]:
-    return subprocess.run([sys.executable, "-m", "fuelair", *words], capture_output=True, text=True, encoding="utf-8", check=False,
-                          cwd=cwd or Path(fuelair.__file__).parents[0], env=os.environ | environment)
+    return subprocess.run(
+        [sys.executable, "-m", "fuelair", *words],
+        capture_output=True,
+        text=True,
+        encoding="utf-8",
+        check=False,
+        cwd=cwd or Path(fuelair.__file__).parents[0],
+        env=os.environ | environment,
+    )
 
 
 @pytest.fixture(scope="module")
@@ -33,9 +40,22 @@ def shown() -> str:
 
 
 def test_the_verdict_comes_before_any_table(shown: str) -> None:
-    assert shown.index("Expect a peak of") < shown.index("The trapped charge") < shown.index("The same charge through every model")
-    for part in ("What each assumption costs", "States of fuel-air-equilibrium", "States of air-cold", "Where the fuel's exergy goes",
-                 "Mind", "Left to default", "Ledger", "Rests on", "Caution", "[from memory]", "verify by test"):
+    assert (
+        shown.index("Expect a peak of") < shown.index("The trapped charge") < shown.index("The same charge through every model")
+    )
+    for part in (
+        "What each assumption costs",
+        "States of fuel-air-equilibrium",
+        "States of air-cold",
+        "Where the fuel's exergy goes",
+        "Mind",
+        "Left to default",
+        "Ledger",
+        "Rests on",
+        "Caution",
+        "[from memory]",
+        "verify by test",
+    ):
         assert part in shown
 
 
@@ -60,7 +80,7 @@ def test_out_writes_every_file_and_can_be_repeated(tmp_path: Path) -> None:
     assert [p.name for p in target.parent.iterdir()] == [target.name]
     with (target / "models.csv").open(newline="") as file:
         rows = list(csv.DictReader(file))
-    assert [r["model"] for r in rows][0] == "air-cold"
+    assert next(r["model"] for r in rows) == "air-cold"
     data = json.loads((target / "assessment.json").read_text())
     assert float(rows[-1]["peak_pressure_Pa"]) == data["models"]["fuel-air-equilibrium"]["peak_pressure_Pa"]
     again = fuelair.assess(fuelair.Case.read(target / "case.toml"))
@@ -91,19 +111,24 @@ def broken(tmp_path: Path, old: str, new: str) -> Path:
     return path
 
 
-@pytest.mark.parametrize(("old", "new", "words"), [
-    ('name = "renewable-diesel"', 'name = "renewable-deisel"', ["fuel.name", "renewable-deisel", '"renewable-diesel"']),
-    ('pressure = "2.9 bar"', 'pressure = "bar"', ["charge.pressure", "'bar'"]),
-    ('compression_ratio = "17:1"', "compression_ratio = 1", ["engine.compression_ratio", "1.5 to 60"]),
-    ("equivalence_ratio = 0.58", "equivalence_ratio = -1", ["charge.equivalence_ratio", "-1", "0.01 to 5"]),
-    ("equivalence_ratio = 0.58", "equivalence_ratio = 0.58\nair_fuel_ratio = 25", ["equivalence_ratio", "air_fuel_ratio"]),
-    ('pressure_limit = "200 bar"', 'pressure_limit = "110 bar"', ["combustion.pressure_limit", "129.8 bar"]),
-    ('residual_fraction = "3 %"', "egr_fraction = 1.2", ["charge.egr_fraction", "1.2"]),
-    ('relative_humidity = "60 %"', 'relative_humidity = "140 %"', ["charge.relative_humidity", "140 %"]),
-    ("[charge]", "[charge", ["TOML"]),
-    ("[charge]", "[chrage]", ["chrage"]),
-])
-def test_wrong_input_is_one_clear_error_with_exit_2_and_nothing_written(tmp_path: Path, old: str, new: str, words: list[str]) -> None:
+@pytest.mark.parametrize(
+    ("old", "new", "words"),
+    [
+        ('name = "renewable-diesel"', 'name = "renewable-deisel"', ["fuel.name", "renewable-deisel", '"renewable-diesel"']),
+        ('pressure = "2.9 bar"', 'pressure = "bar"', ["charge.pressure", "'bar'"]),
+        ('compression_ratio = "17:1"', "compression_ratio = 1", ["engine.compression_ratio", "1.5 to 60"]),
+        ("equivalence_ratio = 0.58", "equivalence_ratio = -1", ["charge.equivalence_ratio", "-1", "0.01 to 5"]),
+        ("equivalence_ratio = 0.58", "equivalence_ratio = 0.58\nair_fuel_ratio = 25", ["equivalence_ratio", "air_fuel_ratio"]),
+        ('pressure_limit = "200 bar"', 'pressure_limit = "110 bar"', ["combustion.pressure_limit", "129.8 bar"]),
+        ('residual_fraction = "3 %"', "egr_fraction = 1.2", ["charge.egr_fraction", "1.2"]),
+        ('relative_humidity = "60 %"', 'relative_humidity = "140 %"', ["charge.relative_humidity", "140 %"]),
+        ("[charge]", "[charge", ["TOML"]),
+        ("[charge]", "[chrage]", ["chrage"]),
+    ],
+)
+def test_wrong_input_is_one_clear_error_with_exit_2_and_nothing_written(
+    tmp_path: Path, old: str, new: str, words: list[str]
+) -> None:
     path = broken(tmp_path, old, new)
     out = run("assess", str(path), "--out", str(tmp_path / "out"), "--json", str(tmp_path / "a.json"))
     assert out.returncode == 2
@@ -176,7 +201,14 @@ def test_check_new_and_fuels(tmp_path: Path) -> None:
 
 def test_version_help_and_unknown_verb() -> None:
     assert run("--version").stdout.strip() == f"fuelair {fuelair.__version__}"
-    for words in (("--help",), ("assess", "--help"), ("check", "--help"), ("new", "--help"), ("fuels", "--help"), ("validate", "--help")):
+    for words in (
+        ("--help",),
+        ("assess", "--help"),
+        ("check", "--help"),
+        ("new", "--help"),
+        ("fuels", "--help"),
+        ("validate", "--help"),
+    ):
         out = run(*words)
         assert out.returncode == 0
         assert "Traceback" not in out.stderr
@@ -184,8 +216,13 @@ def test_version_help_and_unknown_verb() -> None:
 
 
 def test_interrupt_is_130_and_leaves_nothing(tmp_path: Path) -> None:
-    process = subprocess.Popen([sys.executable, "-m", "fuelair", "assess", str(DEMO), "--out", str(tmp_path / "out")],
-                               stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, cwd=tmp_path)
+    process = subprocess.Popen(
+        [sys.executable, "-m", "fuelair", "assess", str(DEMO), "--out", str(tmp_path / "out")],
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        text=True,
+        cwd=tmp_path,
+    )
     time.sleep(0.25)
     process.send_signal(signal.SIGINT)
     _, err = process.communicate(timeout=60)
@@ -196,5 +233,7 @@ def test_interrupt_is_130_and_leaves_nothing(tmp_path: Path) -> None:
 
 
 def test_a_closed_pipe_is_no_error() -> None:
-    out = subprocess.run(f'"{sys.executable}" -m fuelair fuels | head -1', shell=True, capture_output=True, text=True, check=False)
+    out = subprocess.run(
+        f'"{sys.executable}" -m fuelair fuels | head -1', shell=True, capture_output=True, text=True, check=False
+    )
     assert "Traceback" not in out.stderr

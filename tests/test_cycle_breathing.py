@@ -110,6 +110,7 @@ def test_residual_by_the_perfect_gas_formula(fake, make, solve):
         equivalence_ratio=0.7,
         pressure=0.6e5,
         temperature=300.0,
+        fuel_temperature=300.0,
         exhaust_pressure=1.0e5,
         from_intake=True,
         residual=None,

@@ -40,8 +40,14 @@ def test_first_two_shell_blocks_are_the_two_commands_on_one_line_each() -> None:
 
 
 def test_what_the_readme_shows_is_what_the_command_prints() -> None:
-    out = subprocess.run([sys.executable, "-m", "fuelair", "assess", str(PACKAGE / "demos" / "workboat.toml")],
-                         capture_output=True, text=True, encoding="utf-8", check=True, cwd=PACKAGE).stdout
+    out = subprocess.run(
+        [sys.executable, "-m", "fuelair", "assess", str(PACKAGE / "demos" / "workboat.toml")],
+        capture_output=True,
+        text=True,
+        encoding="utf-8",
+        check=True,
+        cwd=PACKAGE,
+    ).stdout
     printed = {line.rstrip() for line in out.splitlines()}
     shown = re.search(r"<!-- shown:workboat -->\n```text\n(.*?)```", README, re.S)
     assert shown is not None
@@ -68,7 +74,9 @@ def test_docstrings_run(name: str) -> None:
 
 
 def test_every_verb_is_in_the_readme() -> None:
-    helped = subprocess.run([sys.executable, "-m", "fuelair", "--help"], capture_output=True, text=True, encoding="utf-8", check=True)
+    helped = subprocess.run(
+        [sys.executable, "-m", "fuelair", "--help"], capture_output=True, text=True, encoding="utf-8", check=True
+    )
     for verb in ("assess", "check", "new", "fuels", "validate"):
         assert verb in helped.stdout
         assert f"fuelair {verb}" in README

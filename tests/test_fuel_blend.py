@@ -26,8 +26,14 @@ def test_mass_blend_conserves(parts, data):
     for element in "CHONS":
         expected = sum(w * per_kilogram(f, element) for w, f in zip(shares, fuels, strict=True))
         assert per_kilogram(mixed, element) == pytest.approx(expected, rel=1e-11, abs=1e-15)
-    for key in ("lower_heating_value_vapour", "lower_heating_value_liquid", "higher_heating_value_liquid",
-                "latent_heat", "liquid_cp", "oxygen_demand"):
+    for key in (
+        "lower_heating_value_vapour",
+        "lower_heating_value_liquid",
+        "higher_heating_value_liquid",
+        "latent_heat",
+        "liquid_cp",
+        "oxygen_demand",
+    ):
         expected = sum(w * getattr(f, key) for w, f in zip(shares, fuels, strict=True))
         assert getattr(mixed, key) == pytest.approx(expected, rel=1e-11), key
     moles = sum(w / f.molar_mass for w, f in zip(shares, fuels, strict=True))
@@ -44,7 +50,8 @@ def test_volume_blend_by_hand():
     share = masses[1] / sum(masses)
     mixed = blend([("gasoline", 0.9), ("ethanol", 0.1)], basis="volume")
     assert mixed.mass_fractions["O"] == pytest.approx(share * ethanol.mass_fractions["O"], rel=1e-12)
-    assert mixed.density == pytest.approx(sum(masses), rel=1e-12) and mixed.density_temperature == 288.15
+    assert mixed.density == pytest.approx(sum(masses), rel=1e-12)
+    assert mixed.density_temperature == 288.15
     heat = (1 - share) * gasoline.lower_heating_value_liquid + share * ethanol.lower_heating_value_liquid
     assert mixed.lower_heating_value_liquid == pytest.approx(heat, rel=1e-12)
     recorded = load("gasoline-e10")
@@ -59,14 +66,16 @@ def test_gases_blend_by_mole_and_get_mixing_entropy():
     mixing = -8314.462618 * (0.8 * math.log(0.8) + 0.2 * math.log(0.2))
     expected = 0.8 * load("methane").vapour.entropy + 0.2 * load("hydrogen").vapour.entropy + mixing
     assert mixed.vapour.entropy == pytest.approx(expected, rel=1e-12)
-    assert mixed.latent_heat is None and dict(mixed.vapour.shape) == pytest.approx({"CH4": 0.8, "H2": 0.2})
+    assert mixed.latent_heat is None
+    assert dict(mixed.vapour.shape) == pytest.approx({"CH4": 0.8, "H2": 0.2})
 
 
 def test_inert_gas_dilutes():
     mixed = blend([("methane", 0.6), ("carbon-dioxide", 0.4)], basis="volume")
     methane = load("methane")
     assert mixed.lower_heating_value_vapour * mixed.molar_mass == pytest.approx(
-        0.6 * methane.lower_heating_value_vapour * methane.molar_mass, rel=1e-12)
+        0.6 * methane.lower_heating_value_vapour * methane.molar_mass, rel=1e-12
+    )
     assert mixed.oxygen_demand * mixed.molar_mass == pytest.approx(1.2, rel=1e-12)
 
 
@@ -75,7 +84,8 @@ def test_propane_with_butane_is_a_liquid_with_ideal_vapour_pressure():
     x = 0.5 / load("propane").molar_mass * mixed.molar_mass
     expected = x * load("propane").saturation_pressure(298.15) + (1 - x) * load("n-butane").saturation_pressure(298.15)
     assert mixed.saturation_pressure(298.15) == pytest.approx(expected, rel=1e-12)
-    assert mixed.phase(298.15, 3e5) == "gas" and mixed.phase(298.15, 1e6) == "liquid"
+    assert mixed.phase(298.15, 3e5) == "gas"
+    assert mixed.phase(298.15, 1e6) == "liquid"
 
 
 def test_same_fuel_twice_over_changes_nothing():
@@ -92,24 +102,36 @@ def test_own_fuel_in_a_blend_and_liquid_with_gas():
     expected = 0.7 * 43.0e6 + 0.3 * 36.5e6
     assert mixed.lower_heating_value_liquid == pytest.approx(expected, rel=1e-12)
     dual = blend([("diesel", 0.5), ("hydrogen", 0.5)])
-    assert dual.latent_heat is None and any("counts as vapour" in w for w in dual.warnings)
+    assert dual.latent_heat is None
+    assert any("counts as vapour" in w for w in dual.warnings)
 
 
 def test_all_mistakes_at_once():
     with pytest.raises(InputError) as caught:
         blend([("dieselx", 0.5), ("ethanol", 1.5), ("ethanol", -0.1)], basis="moles")
     text = str(caught.value)
-    for part in ("no such fuel", "nearest: diesel", "fuel.blend[1].moles_fraction", "above 0, up to 1", "named twice",
-                 "no such basis"):
+    for part in (
+        "no such fuel",
+        "nearest: diesel",
+        "fuel.blend[1].moles_fraction",
+        "above 0, up to 1",
+        "named twice",
+        "no such basis",
+    ):
         assert part in text
     assert len(caught.value.problems) == 5
 
 
-@pytest.mark.parametrize(("components", "basis", "said"), [
-    ([("diesel", 0.5), ("fame", 0.4)], "mass", "do not sum to one"), ([], "mass", "at least one"),
-    ([("diesel", math.nan)], "mass", "outside its range"), ([("diesel", 0.5), ("methane", 0.5)], "volume", "by volume"),
-    ([("nitrogen", 1.0)], "mass", "nothing in it burns"),
-])
+@pytest.mark.parametrize(
+    ("components", "basis", "said"),
+    [
+        ([("diesel", 0.5), ("fame", 0.4)], "mass", "do not sum to one"),
+        ([], "mass", "at least one"),
+        ([("diesel", math.nan)], "mass", "outside its range"),
+        ([("diesel", 0.5), ("methane", 0.5)], "volume", "by volume"),
+        ([("nitrogen", 1.0)], "mass", "nothing in it burns"),
+    ],
+)
 def test_one_mistake(components, basis, said):
     with pytest.raises(InputError, match=said):
         blend(components, basis)

@@ -33,8 +33,12 @@ PURE = {  # name: LHV vapour, HHV vapour, LHV liquid, HHV liquid [MJ/kg], stoich
 def test_pure_fuels_by_hand_arithmetic(name):
     fuel = load(name)
     *heats, ratio = PURE[name]
-    own = (fuel.lower_heating_value_vapour, fuel.higher_heating_value_vapour, fuel.lower_heating_value_liquid,
-           fuel.higher_heating_value_liquid)
+    own = (
+        fuel.lower_heating_value_vapour,
+        fuel.higher_heating_value_vapour,
+        fuel.lower_heating_value_liquid,
+        fuel.higher_heating_value_liquid,
+    )
     for ours, published in zip(own, heats, strict=True):
         if published is not None:
             assert ours / 1e6 == pytest.approx(published, rel=1e-4)
@@ -57,12 +61,19 @@ MORAN_SHAPIRO = {
     "ethane": {"higher_heating_value_vapour": 51870, "lower_heating_value_vapour": 47480},
     "propane": {"higher_heating_value_vapour": 50350, "lower_heating_value_vapour": 46360},
     "n-butane": {"higher_heating_value_vapour": 49500, "lower_heating_value_vapour": 45720},
-    "n-octane": {"higher_heating_value_vapour": 48260, "lower_heating_value_vapour": 44790,
-                 "higher_heating_value_liquid": 47900, "lower_heating_value_liquid": 44430},
-    "methanol": {"higher_heating_value_vapour": 23850, "lower_heating_value_vapour": 21110,
-                 "higher_heating_value_liquid": 22670, "lower_heating_value_liquid": 19920},
-    "ethanol": {"higher_heating_value_vapour": 30590, "lower_heating_value_vapour": 27720,
-                "higher_heating_value_liquid": 29670},
+    "n-octane": {
+        "higher_heating_value_vapour": 48260,
+        "lower_heating_value_vapour": 44790,
+        "higher_heating_value_liquid": 47900,
+        "lower_heating_value_liquid": 44430,
+    },
+    "methanol": {
+        "higher_heating_value_vapour": 23850,
+        "lower_heating_value_vapour": 21110,
+        "higher_heating_value_liquid": 22670,
+        "lower_heating_value_liquid": 19920,
+    },
+    "ethanol": {"higher_heating_value_vapour": 30590, "lower_heating_value_vapour": 27720, "higher_heating_value_liquid": 29670},
 }
 
 
@@ -75,9 +86,17 @@ def test_against_moran_shapiro(name):
 # Independent: Active Thermochemical Tables 1.112 (chemicals 1.5.2) [kJ/mol], products CO2 -393.474, H2O -241.822.
 # CRC prints 0.1 kJ/mol and differs by up to 0.8 (methanol, liquid): 0.13 % of its heating value, ammonia 0.11 %.
 ATCT = {
-    "methane": (-74.534, None), "ethane": (-83.78, None), "propane": (-104.39, None), "n-butane": (-125.85, None),
-    "n-heptane": (-187.34, -223.91), "iso-octane": (-223.70, -258.80), "n-octane": (-208.22, -249.73),
-    "toluene": (50.41, 12.36), "methanol": (-200.70, -238.40), "ethanol": (-234.57, -277.03), "dme": (-184.02, None),
+    "methane": (-74.534, None),
+    "ethane": (-83.78, None),
+    "propane": (-104.39, None),
+    "n-butane": (-125.85, None),
+    "n-heptane": (-187.34, -223.91),
+    "iso-octane": (-223.70, -258.80),
+    "n-octane": (-208.22, -249.73),
+    "toluene": (50.41, 12.36),
+    "methanol": (-200.70, -238.40),
+    "ethanol": (-234.57, -277.03),
+    "dme": (-184.02, None),
     "ammonia": (-45.558, None),
 }
 
@@ -96,20 +115,25 @@ def test_against_active_thermochemical_tables(name):
 
 # Independent: IMO Resolution MEPC.364(79), printed to 100 kJ/kg: 0.12 % on 46 300. Its ethane (46 400) lies 2.3 % below
 # every enthalpy of formation, see the record's note: that difference is asserted, not absorbed.
-@pytest.mark.parametrize(("name", "key", "published", "deviation"), [
-    ("propane", "lower_heating_value_vapour", 46300, 0.0),
-    ("n-butane", "lower_heating_value_vapour", 45700, 0.0),
-    ("methanol", "lower_heating_value_liquid", 19900, 0.0),
-    ("ethane", "lower_heating_value_vapour", 46400, 0.0238),
-])
+@pytest.mark.parametrize(
+    ("name", "key", "published", "deviation"),
+    [
+        ("propane", "lower_heating_value_vapour", 46300, 0.0),
+        ("n-butane", "lower_heating_value_vapour", 45700, 0.0),
+        ("methanol", "lower_heating_value_liquid", 19900, 0.0),
+        ("ethane", "lower_heating_value_vapour", 46400, 0.0238),
+    ],
+)
 def test_against_imo(name, key, published, deviation):
     assert getattr(load(name), key) / 1e3 / published - 1.0 == pytest.approx(deviation, abs=1.5e-3)
 
 
 def test_marine_fuels_carry_imo_values_and_fit_density_formula():
     # ISO 8217 annex (from memory): net specific energy from density [kg/m3] and sulfur [% by mass]; about 1 % good.
-    for name, imo, carbon, a, b, c in [("marine-distillate", 42700, 0.8744, 46.423, 8.792, 3.170),
-                                       ("marine-residual", 40200, 0.8493, 46.704, 8.802, 3.167)]:
+    for name, imo, carbon, a, b, c in [
+        ("marine-distillate", 42700, 0.8744, 46.423, 8.792, 3.170),
+        ("marine-residual", 40200, 0.8493, 46.704, 8.802, 3.167),
+    ]:
         fuel = load(name)
         assert fuel.lower_heating_value_liquid / 1e3 == pytest.approx(imo, rel=1e-12)
         assert fuel.mass_fractions["C"] == pytest.approx(carbon, rel=1e-12)
@@ -128,10 +152,16 @@ def test_boie_formula_over_all_records():
 
 
 # Szargut 2007, kJ/mol; his ratio of exergy to heating value lies between 0.97 and 1.06 for all fuels.
-@pytest.mark.parametrize(("name", "phase", "molar"), [
-    ("methane", "gas", 831.2), ("ethane", "gas", 1495.0), ("propane", "gas", 2152.8), ("n-butane", "gas", 2804.2),
-    ("toluene", "liquid", 3928.3),
-])
+@pytest.mark.parametrize(
+    ("name", "phase", "molar"),
+    [
+        ("methane", "gas", 831.2),
+        ("ethane", "gas", 1495.0),
+        ("propane", "gas", 2152.8),
+        ("n-butane", "gas", 2804.2),
+        ("toluene", "liquid", 3928.3),
+    ],
+)
 def test_chemical_exergy(name, phase, molar):
     assert load(name).chemical_exergy(phase) * load(name).molar_mass / 1e6 == pytest.approx(molar, rel=1e-12)
 

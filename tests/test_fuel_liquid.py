@@ -6,9 +6,16 @@ import pytest
 from fuelair.fuel import load, own
 
 COOLPROP = {
-    "n-heptane": "n-Heptane", "n-octane": "n-Octane", "n-dodecane": "n-Dodecane", "toluene": "Toluene",
-    "methanol": "Methanol", "ethanol": "Ethanol", "dme": "DimethylEther", "ammonia": "Ammonia",
-    "propane": "n-Propane", "n-butane": "n-Butane",
+    "n-heptane": "n-Heptane",
+    "n-octane": "n-Octane",
+    "n-dodecane": "n-Dodecane",
+    "toluene": "Toluene",
+    "methanol": "Methanol",
+    "ethanol": "Ethanol",
+    "dme": "DimethylEther",
+    "ammonia": "Ammonia",
+    "propane": "n-Propane",
+    "n-butane": "n-Butane",
 }
 
 
@@ -51,11 +58,23 @@ def test_latent_heat(props, name):
 
 # Independent of both: enthalpy of vaporization of the CRC Handbook, kJ/mol. The ideal-gas latent
 # heat exceeds it by the non-ideality of the saturated vapour: small below 10 kPa, 2 % for methanol (associating).
-@pytest.mark.parametrize(("name", "crc", "over"), [
-    ("n-heptane", 36.57, 0.003), ("iso-octane", 35.14, 0.003), ("n-octane", 41.49, 0.003), ("n-dodecane", 61.52, 0.003),
-    ("n-hexadecane", 81.35, 0.003), ("toluene", 38.01, 0.003), ("methanol", 37.43, 0.021), ("ethanol", 42.32, 0.012),
-    ("n-butane", 21.02, 0.031), ("dme", 18.51, 0.055), ("ammonia", 19.86, 0.061), ("propane", 14.79, 0.10),
-])
+@pytest.mark.parametrize(
+    ("name", "crc", "over"),
+    [
+        ("n-heptane", 36.57, 0.003),
+        ("iso-octane", 35.14, 0.003),
+        ("n-octane", 41.49, 0.003),
+        ("n-dodecane", 61.52, 0.003),
+        ("n-hexadecane", 81.35, 0.003),
+        ("toluene", 38.01, 0.003),
+        ("methanol", 37.43, 0.021),
+        ("ethanol", 42.32, 0.012),
+        ("n-butane", 21.02, 0.031),
+        ("dme", 18.51, 0.055),
+        ("ammonia", 19.86, 0.061),
+        ("propane", 14.79, 0.10),
+    ],
+)
 def test_latent_heat_exceeds_enthalpy_of_vaporization(name, crc, over):
     fuel = load(name)
     ratio = fuel.latent_heat * fuel.molar_mass / 1e6 / crc - 1.0
@@ -67,11 +86,20 @@ def test_latent_heat_exceeds_enthalpy_of_vaporization(name, crc, over):
 # Rise over the liquid at 298.15 K and the reference pressure, kJ/kg. The limits are the measured errors rounded up to
 # the next whole number: accuracy of the formula, not a wish. None of them moves a flame temperature by 2 K.
 RISE = [
-    ("n-heptane", 353.15, 100e6, 11), ("n-heptane", 323.15, 30e6, 2), ("n-dodecane", 353.15, 100e6, 9),
-    ("n-dodecane", 298.15, 200e6, 12), ("methanol", 353.15, 100e6, 11), ("methanol", 298.15, 50e6, 2),
-    ("ethanol", 353.15, 100e6, 12), ("dme", 353.15, 50e6, 9), ("ammonia", 353.15, 100e6, 29),
-    ("ammonia", 298.15, 50e6, 1), ("propane", 353.15, 100e6, 19), ("propane", 298.15, 50e6, 2),
-    ("n-butane", 323.15, 10e6, 2), ("toluene", 353.15, 100e6, 7),
+    ("n-heptane", 353.15, 100e6, 11),
+    ("n-heptane", 323.15, 30e6, 2),
+    ("n-dodecane", 353.15, 100e6, 9),
+    ("n-dodecane", 298.15, 200e6, 12),
+    ("methanol", 353.15, 100e6, 11),
+    ("methanol", 298.15, 50e6, 2),
+    ("ethanol", 353.15, 100e6, 12),
+    ("dme", 353.15, 50e6, 9),
+    ("ammonia", 353.15, 100e6, 29),
+    ("ammonia", 298.15, 50e6, 1),
+    ("propane", 353.15, 100e6, 19),
+    ("propane", 298.15, 50e6, 2),
+    ("n-butane", 323.15, 10e6, 2),
+    ("toluene", 353.15, 100e6, 7),
 ]
 
 
@@ -107,27 +135,48 @@ def test_array_equals_scalars_bitwise():
     fuel = load("n-heptane")
     temperature, pressure = np.linspace(280.0, 350.0, 7)[:, None], np.linspace(1e5, 1e8, 5)
     table = fuel.liquid_enthalpy(temperature, pressure)
-    assert table.shape == (7, 5) and table.dtype == np.float64
+    assert table.shape == (7, 5)
+    assert table.dtype == np.float64
     for i in range(7):
         for j in range(5):
             assert table[i, j] == fuel.liquid_enthalpy(temperature[i, 0], pressure[j])
 
 
-@pytest.mark.parametrize(("name", "temperature", "pressure", "phase"), [
-    ("propane", 298.15, 101325.0, "gas"), ("propane", 298.15, 2e6, "liquid"), ("propane", 380.0, 10e6, "gas"),
-    ("methanol", 298.15, 101325.0, "liquid"), ("methanol", 350.0, 101325.0, "gas"), ("diesel", 700.0, 1e3, "liquid"),
-    ("ammonia", 230.0, 101325.0, "liquid"), ("hydrogen", 298.15, 70e6, "gas"), ("dme", 298.15, 6e5, "liquid"),
-])
+@pytest.mark.parametrize(
+    ("name", "temperature", "pressure", "phase"),
+    [
+        ("propane", 298.15, 101325.0, "gas"),
+        ("propane", 298.15, 2e6, "liquid"),
+        ("propane", 380.0, 10e6, "gas"),
+        ("methanol", 298.15, 101325.0, "liquid"),
+        ("methanol", 350.0, 101325.0, "gas"),
+        ("diesel", 700.0, 1e3, "liquid"),
+        ("ammonia", 230.0, 101325.0, "liquid"),
+        ("hydrogen", 298.15, 70e6, "gas"),
+        ("dme", 298.15, 6e5, "liquid"),
+    ],
+)
 def test_phase(name, temperature, pressure, phase):
     assert load(name).phase(temperature, pressure) == phase
 
 
 # Normal boiling points, CRC Handbook: vapour pressure there is 101 325 Pa.
-@pytest.mark.parametrize(("name", "boiling"), [
-    ("propane", 231.0), ("n-butane", 272.6), ("n-heptane", 371.5), ("iso-octane", 372.4), ("n-octane", 398.8),
-    ("n-dodecane", 489.4), ("n-hexadecane", 560.0), ("toluene", 383.8), ("methanol", 337.6), ("ethanol", 351.4),
-    ("dme", 248.3),
-])
+@pytest.mark.parametrize(
+    ("name", "boiling"),
+    [
+        ("propane", 231.0),
+        ("n-butane", 272.6),
+        ("n-heptane", 371.5),
+        ("iso-octane", 372.4),
+        ("n-octane", 398.8),
+        ("n-dodecane", 489.4),
+        ("n-hexadecane", 560.0),
+        ("toluene", 383.8),
+        ("methanol", 337.6),
+        ("ethanol", 351.4),
+        ("dme", 248.3),
+    ],
+)
 def test_boiling_points(name, boiling):
     # 1 %: the boiling points are printed to 0.1 K, worth up to 0.5 % of the pressure, and the fits add theirs.
     assert load(name).saturation_pressure(boiling) == pytest.approx(101325.0, rel=0.01)
@@ -137,4 +186,5 @@ def test_saturation_ends_at_the_critical_point_and_where_unknown():
     assert load("propane").saturation_pressure(369.83) is None
     assert load("marine-residual").saturation_pressure(350.0) is None
     mine = own(formula="C10H20", lower_heating_value=43.5e6, density=780.0)
-    assert mine.saturation_pressure(300.0) is None and mine.phase(300.0, 1e5) == "liquid"
+    assert mine.saturation_pressure(300.0) is None
+    assert mine.phase(300.0, 1e5) == "liquid"

@@ -13,9 +13,30 @@ from fuelair.errors import DataError, InputError
 from fuelair.fuel import Fuel, card, formula, load, names, records, surrogates
 
 NEEDED = {
-    "hydrogen", "methane", "ethane", "natural-gas", "propane", "n-butane", "n-heptane", "iso-octane", "n-octane",
-    "n-dodecane", "n-hexadecane", "toluene", "gasoline", "gasoline-e10", "diesel", "renewable-diesel", "fame",
-    "marine-distillate", "marine-residual", "kerosene", "methanol", "ethanol", "dme", "ammonia",
+    "hydrogen",
+    "methane",
+    "ethane",
+    "natural-gas",
+    "propane",
+    "n-butane",
+    "n-heptane",
+    "iso-octane",
+    "n-octane",
+    "n-dodecane",
+    "n-hexadecane",
+    "toluene",
+    "gasoline",
+    "gasoline-e10",
+    "diesel",
+    "renewable-diesel",
+    "fame",
+    "marine-distillate",
+    "marine-residual",
+    "kerosene",
+    "methanol",
+    "ethanol",
+    "dme",
+    "ammonia",
 }
 STANDINGS = {"read", "computed", "from memory", "common practice"}
 AIR = {"oxygen_mole_fraction": 0.2095, "air_molar_mass": 28.9647}
@@ -36,14 +57,18 @@ def test_every_value_has_unit_source_and_standing(name):
     tables = [*data.get("values", {}).values(), *data.get("other", [])]
     if data["kind"] in ("pure", "commercial"):
         assert len(data["values"]) >= 2
-        assert data["shape"]["standing"] in STANDINGS and data["shape"]["source"]
+        assert data["shape"]["standing"] in STANDINGS
+        assert data["shape"]["source"]
         if "saturation" in data:
             tables.append({**data["saturation"], "value": 0.0})
     else:
-        assert data["source"] and data["standing"] in STANDINGS
+        assert data["source"]
+        assert data["standing"] in STANDINGS
     for table in tables:
         assert isinstance(table["value"], (int, float))
-        assert table["unit"] and len(table["source"]) > 3 and table["standing"] in STANDINGS
+        assert table["unit"]
+        assert len(table["source"]) > 3
+        assert table["standing"] in STANDINGS
 
 
 @pytest.mark.parametrize("name", sorted(NEEDED))
@@ -56,7 +81,8 @@ def test_record_is_consistent(name):
     condensing = 2441.7e3 * 18.015 / 2.016 * fuel.mass_fractions["H"]  # J/kg of water at 298.15 K, from memory
     assert fuel.higher_heating_value_vapour - fuel.lower_heating_value_vapour == pytest.approx(condensing, rel=1e-3)
     assert (fuel.lower_heating_value_liquid is None) == (fuel.latent_heat is None) == (fuel.density is None)
-    assert pickle.loads(pickle.dumps(fuel)) == fuel and hash(fuel) == hash(pickle.loads(pickle.dumps(fuel)))
+    assert pickle.loads(pickle.dumps(fuel)) == fuel
+    assert hash(fuel) == hash(pickle.loads(pickle.dumps(fuel)))
     for key, value in fuel.values.items():
         assert value.unit and value.source and value.standing in STANDINGS, key
 
@@ -64,7 +90,8 @@ def test_record_is_consistent(name):
 @pytest.mark.parametrize("name", ["hydrogen", "methane", "ethane", "natural-gas"])
 def test_never_liquid(name):
     fuel = load(name)
-    assert fuel.lower_heating_value_liquid is None and fuel.phase(298.15, 30e6) == "gas"
+    assert fuel.lower_heating_value_liquid is None
+    assert fuel.phase(298.15, 30e6) == "gas"
     with pytest.raises(InputError, match="never liquid"):
         fuel.liquid_enthalpy(298.15, 1e5)
 
@@ -93,11 +120,17 @@ def test_sulfur_goes_to_sulfur_dioxide():
 
 
 # Ranges of the trade (from memory): air-fuel ratio and heating value of the liquid [MJ/kg].
-@pytest.mark.parametrize(("name", "ratio", "heat"), [
-    ("gasoline", (14.6, 14.7), (42.5, 43.5)), ("diesel", (14.5, 14.6), (42.6, 43.1)),
-    ("renewable-diesel", (14.9, 15.0), (43.9, 44.1)), ("fame", (12.4, 12.6), (37.0, 37.5)),
-    ("kerosene", (14.6, 14.75), (42.8, 43.5)), ("gasoline-e10", (13.95, 14.15), (41.2, 42.0)),
-])
+@pytest.mark.parametrize(
+    ("name", "ratio", "heat"),
+    [
+        ("gasoline", (14.6, 14.7), (42.5, 43.5)),
+        ("diesel", (14.5, 14.6), (42.6, 43.1)),
+        ("renewable-diesel", (14.9, 15.0), (43.9, 44.1)),
+        ("fame", (12.4, 12.6), (37.0, 37.5)),
+        ("kerosene", (14.6, 14.75), (42.8, 43.5)),
+        ("gasoline-e10", (13.95, 14.15), (41.2, 42.0)),
+    ],
+)
 def test_commercial_fuels_within_their_ranges(name, ratio, heat):
     fuel = load(name)
     assert ratio[0] <= fuel.stoichiometric_air_fuel_ratio(**AIR) <= ratio[1]
@@ -112,10 +145,13 @@ def test_natural_gas():
     fuel = load("natural-gas")
     assert 45e6 < fuel.lower_heating_value_vapour < 50e6
     assert 15.5 < fuel.stoichiometric_air_fuel_ratio(**AIR) < 17.0
-    by_hand = sum(x * load(n).lower_heating_value_vapour * load(n).molar_mass for n, x in
-                  [("methane", 0.93), ("ethane", 0.04), ("propane", 0.008), ("n-butane", 0.002)])
+    by_hand = sum(
+        x * load(n).lower_heating_value_vapour * load(n).molar_mass
+        for n, x in [("methane", 0.93), ("ethane", 0.04), ("propane", 0.008), ("n-butane", 0.002)]
+    )
     assert fuel.lower_heating_value_vapour * fuel.molar_mass == pytest.approx(by_hand, rel=1e-12)
-    assert dict(fuel.atoms)["O"] == pytest.approx(0.02) and dict(fuel.atoms)["N"] == pytest.approx(0.02)
+    assert dict(fuel.atoms)["O"] == pytest.approx(0.02)
+    assert dict(fuel.atoms)["N"] == pytest.approx(0.02)
 
 
 def test_air_fuel_ratio_forms_agree():
@@ -132,25 +168,40 @@ def test_unknown_fuel_offers_the_nearest_names():
     with pytest.raises(InputError) as caught:
         load("n-dodecan")
     (problem,) = caught.value.problems
-    assert problem.key == "fuel.name" and problem.value == "n-dodecan" and "n-dodecane" in problem.hint
+    assert problem.key == "fuel.name"
+    assert problem.value == "n-dodecan"
+    assert "n-dodecane" in problem.hint
     with pytest.raises(InputError, match="renewable-diesel"):
         load("Renewable_Diesel")
 
 
-@pytest.mark.parametrize(("given", "hint"), [
-    ("petrol", "nearest: gasoline"), ("HVO", "nearest: renewable-diesel"), ("zzzz", "fuelair fuels"),
-])
+@pytest.mark.parametrize(
+    ("given", "hint"),
+    [
+        ("petrol", "nearest: gasoline"),
+        ("HVO", "nearest: renewable-diesel"),
+        ("zzzz", "fuelair fuels"),
+    ],
+)
 def test_other_words_are_hinted_at_not_accepted(given, hint):
     with pytest.raises(InputError) as caught:
         load(given)
     assert hint in caught.value.problems[0].hint
-    assert all(n in names() for n in records.SYNONYMS.values()) and not set(records.SYNONYMS) & set(names())
+    assert all(n in names() for n in records.SYNONYMS.values())
+    assert not set(records.SYNONYMS) & set(names())
 
 
-@pytest.mark.parametrize("damage", [
-    ('standing = "read"', 'standing = "heard"'), ('unit = "kJ/mol"', 'unit = "kcal/mol"'), ("format = 1", "format = 2"),
-    ("C = 7, ", 'C = "x", '), ("[values.liquid_cp]", "[values.liquid_heat]"), ('name = "n-heptane"', ""),
-])
+@pytest.mark.parametrize(
+    "damage",
+    [
+        ('standing = "read"', 'standing = "heard"'),
+        ('unit = "kJ/mol"', 'unit = "kcal/mol"'),
+        ("format = 1", "format = 2"),
+        ("C = 7, ", 'C = "x", '),
+        ("[values.liquid_cp]", "[values.liquid_heat]"),
+        ('name = "n-heptane"', ""),
+    ],
+)
 def test_damaged_record_is_a_data_error(tmp_path, monkeypatch, damage):
     text = (resources.folder("mechanisms/fuels") / "n-heptane.toml").read_text(encoding="utf-8")
     assert damage[0] in text
@@ -165,7 +216,8 @@ def test_card(name):
     fuel = load(name)
     rows = card(fuel)
     labels = [row.label for row in rows]
-    assert "Lower heating value, vapour" in labels and "Molar mass" in labels
+    assert "Lower heating value, vapour" in labels
+    assert "Molar mass" in labels
     for row in rows:
         assert row.value and (row.standing in STANDINGS or row.label in ("Fuel", "Formula", "Warning")), row
         assert row.source or not row.standing
@@ -180,12 +232,14 @@ def test_no_gas_library_is_loaded():
 
 def test_load_is_shared_and_frozen():
     fuel = load("methanol")
-    assert isinstance(fuel, Fuel) and load("methanol") is fuel
+    assert isinstance(fuel, Fuel)
+    assert load("methanol") is fuel
     fuel.values.clear()
     assert fuel.values
     with pytest.raises(AttributeError):
         fuel.density = 1.0
-    assert fuel.mass_ratio("O") == pytest.approx(15.999 / 12.011) and load("hydrogen").mass_ratio("H") is None
+    assert fuel.mass_ratio("O") == pytest.approx(15.999 / 12.011)
+    assert load("hydrogen").mass_ratio("H") is None
     assert math.isclose(fuel.mass_ratio("S"), 0.0)
 
 

@@ -17,8 +17,11 @@ ROOT = Path(__file__).resolve().parents[1]
 def wheel(tmp_path_factory: pytest.TempPathFactory) -> Path:
     pytest.importorskip("hatchling")
     folder = tmp_path_factory.mktemp("wheel")
-    subprocess.run([sys.executable, "-m", "pip", "wheel", "-q", "--no-deps", "--no-build-isolation", "-w", str(folder), str(ROOT)],
-                   check=True, capture_output=True)
+    subprocess.run(
+        [sys.executable, "-m", "pip", "wheel", "-q", "--no-deps", "--no-build-isolation", "-w", str(folder), str(ROOT)],
+        check=True,
+        capture_output=True,
+    )
     (made,) = folder.glob("fuelair-*.whl")
     return made
 
@@ -40,8 +43,15 @@ def test_unpacked_elsewhere_it_assesses_a_demo(wheel: Path, tmp_path: Path) -> N
         "import fuelair, pathlib; here = pathlib.Path(fuelair.__file__).parent; "
         "a = fuelair.assess(fuelair.Case.read(here / 'demos' / 'hydrogen-genset.toml')); print(here); print(a.status().label)"
     )
-    out = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, encoding="utf-8", check=True, cwd=tmp_path,
-                         env=os.environ | {"PYTHONPATH": str(place), "PYTHONUTF8": "1"})
+    out = subprocess.run(
+        [sys.executable, "-c", code],
+        capture_output=True,
+        text=True,
+        encoding="utf-8",
+        check=True,
+        cwd=tmp_path,
+        env=os.environ | {"PYTHONPATH": str(place), "PYTHONUTF8": "1"},
+    )
     assert out.stdout.splitlines() == [str(place / "fuelair"), "ok"]
 
 

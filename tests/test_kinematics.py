@@ -41,9 +41,9 @@ def test_slope_against_the_velocity_formula(offset):
     )
     # the piston moves with the crank pin's velocity along the rod: v_piston cos b = v_pin along the rod
     a, rod = 0.095, 0.32
-    dead = np.arcsin(offset / (rod + a))
+    dead = np.arcsin(-offset / (rod + a))
     angle = np.deg2rad(t) + dead
-    sine = (a * np.sin(angle) - offset) / rod
+    sine = (a * np.sin(angle) + offset) / rod
     tangent = sine / np.sqrt(1.0 - sine**2)
     downwards = a * np.sin(angle) + a * np.cos(angle) * tangent
     travel = np.sqrt((rod + a) ** 2 - offset**2) - np.sqrt((rod - a) ** 2 - offset**2)

@@ -74,7 +74,10 @@ def test_a_range_holds_inside_and_fails_outside(tmp_path: Path) -> None:
 
 
 def test_a_table_is_many_rows_and_blank_cells_are_none(tmp_path: Path) -> None:
-    write(tmp_path, HEAD + """
+    write(
+        tmp_path,
+        HEAD
+        + """
 [[table]]
 id = "steam"
 compute = "water-saturation"
@@ -85,7 +88,8 @@ tolerance = { relative = 0.001, reason = "rounded" }
 [[table.column]]
 name = "p"
 unit = "Pa"
-""")
+""",
+    )
     rows = read_book(tmp_path)
     assert [r.id for r in rows] == ["steam-373.15-p", "steam-298.15-p"]
     assert rows[1].inputs == {"T": 298.15}
@@ -145,22 +149,25 @@ def test_what_is_shown_has_a_cell_per_head(tmp_path: Path) -> None:
     assert sheet.rows[0][-1] == "ok"
 
 
-@pytest.mark.parametrize(("text", "message"), [
-    ("format = 2\n" + HEAD[11:] + ROW, "format must be 1"),
-    (HEAD, "holds no row"),
-    (HEAD.replace("standing", "stand"), "unknown key stand"),
-    (HEAD.replace('"computed"', '"heard"') + ROW, "row 'water': standing 'heard'"),
-    (HEAD + ROW.replace("kPa", "psi"), "row 'water': unit 'psi'"),
-    (HEAD + ROW.replace('"half of the last digit"', '" "'), "row 'water': tolerance: reason"),
-    (HEAD + ROW.replace("absolute = 0.01, ", ""), "row 'water': tolerance needs one of"),
-    (HEAD + ROW.replace("absolute = 0.01", "absolute = 0"), "row 'water': tolerance needs one of"),
-    (HEAD + ROW.replace("absolute = 0.01", "absolute = true"), "row 'water': absolute must be a number"),
-    (HEAD + ROW.replace("value = 101.42", "range = [2, 1]"), "row 'water': range must be"),
-    (HEAD + ROW.replace("value = 101.42, ", ""), "row 'water': published needs one of"),
-    (HEAD + ROW.replace('quantity = "saturation pressure"', ""), "row 'water': quantity must be"),
-    (HEAD + ROW + "colour = 3\n", "row 'water': unknown key colour"),
-    (HEAD + ROW + "format", r"Trial2026_water\.toml: "),
-])
+@pytest.mark.parametrize(
+    ("text", "message"),
+    [
+        ("format = 2\n" + HEAD[11:] + ROW, "format must be 1"),
+        (HEAD, "holds no row"),
+        (HEAD.replace("standing", "stand"), "unknown key stand"),
+        (HEAD.replace('"computed"', '"heard"') + ROW, "row 'water': standing 'heard'"),
+        (HEAD + ROW.replace("kPa", "psi"), "row 'water': unit 'psi'"),
+        (HEAD + ROW.replace('"half of the last digit"', '" "'), "row 'water': tolerance: reason"),
+        (HEAD + ROW.replace("absolute = 0.01, ", ""), "row 'water': tolerance needs one of"),
+        (HEAD + ROW.replace("absolute = 0.01", "absolute = 0"), "row 'water': tolerance needs one of"),
+        (HEAD + ROW.replace("absolute = 0.01", "absolute = true"), "row 'water': absolute must be a number"),
+        (HEAD + ROW.replace("value = 101.42", "range = [2, 1]"), "row 'water': range must be"),
+        (HEAD + ROW.replace("value = 101.42, ", ""), "row 'water': published needs one of"),
+        (HEAD + ROW.replace('quantity = "saturation pressure"', ""), "row 'water': quantity must be"),
+        (HEAD + ROW + "colour = 3\n", "row 'water': unknown key colour"),
+        (HEAD + ROW + "format", r"Trial2026_water\.toml: "),
+    ],
+)
 def test_damaged_files_name_file_and_row(tmp_path: Path, text: str, message: str) -> None:
     path = write(tmp_path, text)
     with pytest.raises(DataError, match=message) as error:

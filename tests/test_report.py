@@ -68,7 +68,9 @@ def test_folder_that_cannot_be_made_leaves_nothing(boat: fuelair.Assessment, tmp
     assert sorted(p.name for p in tmp_path.iterdir()) == ["file"]
 
 
-def test_a_failed_write_leaves_no_temporary_file(boat: fuelair.Assessment, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_a_failed_write_leaves_no_temporary_file(
+    boat: fuelair.Assessment, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
     def full(*_: object) -> None:
         raise OSError(28, "No space left on device")
 

@@ -31,13 +31,13 @@ def relative_volume(
     -------
     V / V_d, from 1/(r-1) to 1/(r-1) + 1.
 
-    Source: exact geometry; piston distance from the crank centre a cos(t) + sqrt(l^2 - (a sin(t) - e)^2).
+    Source: exact geometry; piston distance from the crank centre a cos(t) + sqrt(l^2 - (a sin(t) + e)^2).
     """
     a, e = 0.5 * stroke, pin_offset
     low, high = _reach(stroke, rod_length, pin_offset)
-    true_centre = np.arcsin(e / (rod_length + a))
+    true_centre = np.arcsin(-e / (rod_length + a))
     t = np.deg2rad(np.asarray(angle, float)) + true_centre
-    distance = a * np.cos(t) + np.sqrt(rod_length**2 - (a * np.sin(t) - e) ** 2)
+    distance = a * np.cos(t) + np.sqrt(rod_length**2 - (a * np.sin(t) + e) ** 2)
     return np.asarray(1.0 / (compression_ratio - 1.0) + (high - distance) / (high - low))
 
 

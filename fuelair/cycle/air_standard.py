@@ -16,7 +16,7 @@ import numpy as np
 from fuelair.air import DryAir
 from fuelair.charge import Charge
 from fuelair.cycle.breathing import Settings
-from fuelair.cycle.result import CycleResult, Point, WorkParts, performance
+from fuelair.cycle.result import CycleResult, Point, WorkParts, closed, performance
 from fuelair.gas.engine import Array, Codes, Engine, GasState, Mask, Pair, Status, worst
 from fuelair.gas.species import build
 
@@ -155,7 +155,7 @@ def run(
     ledger = {
         "energy_closed_part": (start.u + exchanged + q - release.u + work.compression - work.burning - work.expansion) / scale
     }
-    status = worst(charge.status, status, start.status, compressed.status, burned.status, release.status)
+    status = worst(charge.status, status, *(s.status for s in (start, compressed, burned, release, remaining, leaving)))
     return CycleResult(
         model,
         None,
@@ -163,7 +163,7 @@ def run(
         figures,
         ledger,
         {"limited": is_limited, "back-flow": release.p < settings.exhaust_pressure},
-        status,
+        closed(status, ledger),
     )
 
 

@@ -32,7 +32,7 @@ DEFAULT_FREEZE = 1740.0
 """Temperature at which the composition of exhaust leaves equilibrium [K], common practice: the constant
 water-gas ratio 3.5 used for exhaust analysis belongs to it."""
 FIXED_POINT_TOLERANCE = 1e-12
-FIXED_POINT_STEPS = 300
+FIXED_POINT_STEPS = 1500
 FIRST_RESIDUAL, FIRST_RESIDUAL_TEMPERATURE = 0.03, 1000.0
 """Where the fixed point starts: residual fraction [-] and its temperature [K]."""
 LEANEST, RICHEST = 1e-4, 1.0
@@ -178,8 +178,9 @@ def solve_charge(
     n = len(recipe)
     phi, found = bracketed(miss, np.full(n, LEANEST), np.full(n, RICHEST), width=CUTOFF_WIDTH)
     charge = _fixed_point(recipe.with_equivalence_ratio(phi), engine, settings, run, None)
+    solvable = run(charge)[0].status == Status.OK  # else the cycle's own status says why
     status = charge.status.copy()
-    status[(status == Status.OK) & ~found] = Status.CUTOFF_NOT_REACHED
+    status[(status == Status.OK) & ~found & solvable] = Status.CUTOFF_NOT_REACHED
     return replace(charge, status=status)
 
 
@@ -204,10 +205,11 @@ def _fixed_point(
             phi = np.where(active, _ratio_from_mass(charge, settings, fuel_mass), phi)
         new = _burned(charge, run(charge)[1], settings) if returns else burned
         change = np.maximum(_change(new, burned), np.abs(phi - recipe.equivalence_ratio))
-        burned = _hold(active, new, burned)
-        recipe = recipe.with_equivalence_ratio(phi)
+        moves = active & np.isfinite(change)  # an element whose cycle fails stays where it failed: its status says why
+        burned = _hold(moves, new, burned)
+        recipe = recipe.with_equivalence_ratio(np.where(moves, phi, recipe.equivalence_ratio))
         charge = compose(recipe, engine, burned)
-        active = active & (change > FIXED_POINT_TOLERANCE)  # NaN ends an element too: its status says why
+        active = moves & (change > FIXED_POINT_TOLERANCE)
         if not active.any():
             break
     status = charge.status.copy()

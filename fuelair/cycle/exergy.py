@@ -38,6 +38,7 @@ class ExergyBalance:
     fuel : brought by the supplied fuel, unburned part included.
     trapped, burned, release : non-flow exergy of the gas at those states.
     work : exergy of the work from the start of compression to release (against p0).
+    indicated_work : gross indicated work, against the pressures of intake and exhaust.
     destroyed_by_entropy, destroyed_by_balance : by combustion, computed twice.
     leaving, remaining : of the exhaust that leaves (flow) and of the gas that stays.
     destroyed_blowdown : from release to exhaust pressure, by balance.
@@ -50,6 +51,7 @@ class ExergyBalance:
     burned: Array
     release: Array
     work: Array
+    indicated_work: Array
     destroyed_by_entropy: Array
     destroyed_by_balance: Array
     leaving: Array
@@ -124,8 +126,6 @@ def fuel_exergy(charge: Charge) -> tuple[Array, bool]:
     mixture = mix(table, _only(table, FUEL, len(recipe)))
     r = mixture.gas_constant()
     _, h0, s0 = mixture.thermal(np.full(len(recipe), T0))
-    if recipe.admission == "premixed":
-        T, p = recipe.temperature, recipe.pressure
     _, h, s = mixture.thermal(T)
     warm = vapour + (h - h0) - T0 * (s - s0) + r * T0 * np.log(p / P0)
     if not liquid.any():
@@ -135,9 +135,8 @@ def fuel_exergy(charge: Charge) -> tuple[Array, bool]:
     if not exact and fuel.lower_heating_value_liquid is not None:
         base = styrylo_ratio(fuel) * fuel.lower_heating_value_liquid
     cp = fuel.liquid_cp or 0.0
-    latent = fuel.latent_heat or 0.0
     heating = cp * (T - T0 - T0 * np.log(T / T0))
-    pressing = fuel.liquid_enthalpy(np.full(len(recipe), T0), p) + latent
+    pressing = (fuel.liquid_volume or 0.0) * (p - fuel.liquid_reference_pressure)
     return np.where(liquid, base + heating + pressing, warm), not exact
 
 
@@ -169,13 +168,15 @@ def balance(run: Run) -> ExergyBalance:
     v4 = mass * run.release.v
     v6 = out.remaining_mass * out.remaining.v
     displaced = (out.leaving.p - P0) * (v4 - v6)
-    work = run.result.figures["work_J_per_kg"]
+    displaced_first = mass * run.release.v - charge.trapped.v
+    work = -run.compression.work + run.burn.expansion_work * mass + mass * (burned.u - run.release.u) - P0 * displaced_first
     return ExergyBalance(
         fuel=charge.fuel_mass * per_kg,
         trapped=nonflow(table, charge.trapped),
         burned=mass * nonflow(table, burned),
         release=release,
         work=work,
+        indicated_work=run.result.figures["work_J_per_kg"],
         destroyed_by_entropy=T0 * generated,
         destroyed_by_balance=by_balance,
         leaving=leaving,

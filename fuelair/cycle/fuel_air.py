@@ -219,4 +219,3 @@ def _ledger(
         out_ledger["energy_intake"] = mixed / scale
         out_ledger["residual"] = out.remaining_mass - x
     return out_ledger
-

@@ -5,8 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from itertools import pairwise
 
-import numpy as np
-
 from fuelair.cycle.result import MODELS, REFERENCE_MODEL, CycleResult
 from fuelair.gas.engine import Status
 
@@ -58,17 +56,17 @@ def steps(results: dict[str, CycleResult], case: int = 0) -> list[Step]:
     return out
 
 
-def overprediction(results: dict[str, CycleResult], case: int = 0) -> dict[str, dict[str, dict[str, float]]]:
+def overprediction(results: dict[str, CycleResult], case: int = 0) -> dict[str, dict[str, dict[str, float | None]]]:
     """Each solved model against the fuel-air equilibrium cycle: absolute (SI) and relative, per quantity."""
     if REFERENCE_MODEL not in results or results[REFERENCE_MODEL].status[case] != Status.OK:
         return {}
     reference = results[REFERENCE_MODEL].figures
-    out: dict[str, dict[str, dict[str, float]]] = {}
+    out: dict[str, dict[str, dict[str, float | None]]] = {}
     for model in MODELS:
         if model == REFERENCE_MODEL or model not in results or results[model].status[case] != Status.OK:
             continue
         out[model] = {}
         for key in QUANTITIES:
             base, value = float(reference[key][case]), float(results[model].figures[key][case])
-            out[model][key] = {"absolute": value - base, "relative": value / base - 1.0 if base else float(np.nan)}
+            out[model][key] = {"absolute": value - base, "relative": value / base - 1.0 if base else None}
     return out

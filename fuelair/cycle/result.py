@@ -101,15 +101,16 @@ def performance(
     intake_pressure, exhaust_pressure : [Pa].
 
     Gross work lies between the dead centres of compression and expansion: exhaust pressure acts after
-    exhaust opening and intake pressure before intake closing. Pumping mean pressure is
-    p_e - p_i (positive = loss); two-stroke cycles have none.
+    exhaust opening and intake pressure before intake closing. Pumping mean pressure is positive as a loss,
+    (p_e - p_i)(V_largest - V(exhaust closing)) / V_d, which is p_e - p_i when the exhaust closes at dead
+    centre; two-stroke cycles have none.
     """
     per_volume = volumes.intake_closing / trapped.v  # kg trapped per m3 swept
     opened = exhaust_pressure * (volumes.largest - volumes.exhaust_opening)
     closing = intake_pressure * (volumes.largest - volumes.intake_closing)
     gross = work.burning + work.expansion - work.compression + (opened - closing) / per_volume
     imep = gross * per_volume
-    pmep = exhaust_pressure - intake_pressure if four_stroke else np.zeros_like(imep)
+    pmep = (exhaust_pressure - intake_pressure) * (volumes.largest - volumes.exhaust_closing) if four_stroke else 0.0 * imep
     with np.errstate(divide="ignore", invalid="ignore"):
         return {
             "work_J_per_kg": gross,

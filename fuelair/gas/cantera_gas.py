@@ -5,7 +5,7 @@ combustion of the same elements at 2500 K), so nothing depends on what ran befor
 then judged by numbers that Cantera did not make: its composition, elements restored exactly, is put
 back into the table's own polynomials, where the given pair fixes the temperature anew; that
 temperature must agree with Cantera's, and every present species must sit at the minimum of the free
-energy.
+energy. Where Cantera fails, the generic Newton of `gibbs.py` answers and is judged the same way.
 Frozen and complete states need no equilibrium solver and share ``frozen.py`` and ``complete.py``.
 """
 
@@ -23,28 +23,22 @@ import numpy.typing as npt
 from fuelair.gas.complete import complete_state, composition, solid_carbon
 from fuelair.gas.engine import Array, Chemistry, GasState, Pair, Status, weighted
 from fuelair.gas.frozen import assemble, frozen_state, temperature
+from fuelair.gas.gibbs import equilibrate
 from fuelair.gas.mixture import gibbs, mix
 from fuelair.gas.species import SpeciesTable
 
-SOLVERS: tuple[tuple[Literal["element_potential", "gibbs", "vcs"], float], ...] = (
+SOLVERS: tuple[tuple[Literal["element_potential"], float], ...] = (
     ("element_potential", 1e-12),
     ("element_potential", 1e-9),
-    ("gibbs", 1e-10),
-    ("vcs", 1e-10),
 )
-"""Solvers of Cantera and their relative tolerances, in the order they are tried."""
+"""Solvers of Cantera and their relative tolerances, in the order they are tried; the Newton of `gibbs.py` comes last."""
 MAX_STEPS = 5000
 START_TEMPERATURE, START_PRESSURE = 2500.0, 5e6
-PRESSURE_STEPS = 60
-BISECTIONS, BISECTION_WIDTH = 60, 1e-13
 ACCEPTED_RESIDUAL = 1e-8
 """Largest relative residual of elements and of temperature that counts as solved."""
 OPTIMALITY_TOLERANCE = 1e-5
 """Largest allowed |mu - sum of element potentials| over R T of species above ``TRACE``."""
 TRACE = 1e-6
-
-
-Solvable = Literal["TP", "TV", "HP", "UV", "SP", "SV"]
 
 
 class CanteraGas:
@@ -77,15 +71,15 @@ class CanteraGas:
         refused = solid_carbon(table, amounts)
         out = start.copy()
         failed = refused | ~np.isfinite(x) | ~np.isfinite(y)
-        iterations = np.zeros(n, np.int32)
+        iterations, near = np.zeros(n, np.int32), np.full(n, START_TEMPERATURE)
         for i in np.flatnonzero(~failed):
             solved = _phase(table).solve(pair, float(x[i]), float(y[i]), start[i])
             if solved is None:
                 failed[i] = True
                 continue
-            out[i], iterations[i] = solved
+            out[i], near[i], iterations[i] = solved
         mixture = mix(table, out)
-        T, _, lost = temperature(mixture, pair, x, y)
+        T, _, lost = temperature(mixture, pair, x, y, near)
         state = assemble(mixture, pair, T, x, y, out, iterations, failed | lost)
         state.status[refused] = Status.CARBON_OVER_OXYGEN
         return state
@@ -97,57 +91,58 @@ class _Phase:
     def __init__(self, table: SpeciesTable) -> None:
         import cantera as ct
 
-        chosen = np.flatnonzero(table.rich | table.inert)
+        chosen = np.flatnonzero(table.forms | table.inert)
         self.table, self.columns, self.error = table, chosen, ct.CanteraError
         self.phase = ct.Solution(yaml=json.dumps(_definition(table, chosen)))
         self.active_atoms = table.reactive_atoms[chosen]
         self.inert = table.inert[chosen]
         self.present = self.active_atoms.any(axis=0)
 
-    def solve(self, pair: Pair, x: float, y: float, start: Array) -> tuple[Array, int] | None:
-        """Equilibrium amounts (S,) and the number of solvers tried, or None."""
+    def solve(self, pair: Pair, x: float, y: float, start: Array) -> tuple[Array, float, int] | None:
+        """Equilibrium amounts (S,), temperature [K] and how many solvers were asked, or None."""
         if pair == "ST":
-            pair, y = "SP", self._pressure(x, y, start)
-        return self._solve(pair, x, y, start) if np.isfinite(y) else None
-
-    def _solve(self, kind: Solvable, x: float, y: float, start: Array) -> tuple[Array, int] | None:
+            return self._at_entropy(x, y, start)
         for count, (solver, tolerance) in enumerate(SOLVERS, start=1):
-            if solver == "gibbs" and kind[1] == "V":
-                continue
             with warnings.catch_warnings():
                 warnings.simplefilter("ignore")  # Cantera warns of temperatures outside the data; the status says it
                 try:
                     self.phase.TPX = START_TEMPERATURE, START_PRESSURE, start[self.columns]
-                    setattr(self.phase, "TD" if kind == "TV" else kind, (x, 1.0 / y if kind == "TV" else y))
-                    self.phase.equilibrate(kind, solver=solver, rtol=tolerance, max_steps=MAX_STEPS)
+                    setattr(self.phase, "TD" if pair == "TV" else pair, (x, 1.0 / y if pair == "TV" else y))
+                    self.phase.equilibrate(pair, solver=solver, rtol=tolerance, max_steps=MAX_STEPS)
                 except (self.error, ValueError, ZeroDivisionError):
                     continue
             amounts = self._amounts(start)
-            if self._good(kind, x, y, amounts, start):
-                return amounts, count
-        return self._bracketed(kind, x, y, start) if kind[0] in "HUS" else None
+            if self._good(pair, x, y, amounts, start, self.phase.T, self.phase.P):
+                return amounts, self.phase.T, count
+        return self._newton(pair, x, y, start)
 
-    def _bracketed(self, kind: Solvable, x: float, y: float, start: Array) -> tuple[Array, int] | None:
-        """Last resort: temperature by bisection over equilibria at given temperature; each property rises with it.
+    def _at_entropy(self, s: float, T: float, start: Array) -> tuple[Array, float, int] | None:
+        """The pair ST, which Cantera does not offer: the Newton finds the pressure, Cantera confirms the composition."""
+        found = self._newton("ST", s, T, start)
+        if found is None:
+            return None
+        mixture = mix(self.table, found[0][None])
+        _, _, s0 = mixture.thermal(np.array([T]))
+        pressure = float(mixture.reference_pressure * np.exp((s0[0] - s) / mixture.gas_constant()[0]))
+        again = self.solve("TP", T, pressure, start)
+        return found if again is None else (again[0], T, again[2])
 
-        Cold, rich, dense gas needs it: no frozen gas of the start composition is cold enough for the pair.
+    def _newton(self, pair: Pair, x: float, y: float, start: Array) -> tuple[Array, float, int] | None:
+        """Last resort: the generic Newton of `gibbs.py`, judged like the others.
+
+        Cold rich gas needs it, where no frozen gas of the start composition fits the pair, and hot thin gas.
         """
-        low, high = float(self.table.t_min[self.columns].max()), float(self.table.t_max[self.columns].min())
-        amounts = start
-        for _ in range(BISECTIONS):
-            T = 0.5 * (low + high)
-            found = self._solve("TP" if kind[1] == "P" else "TV", T, y, start)
-            if found is None:
-                return None
-            amounts = found[0]
-            t, _, lost = temperature(mix(self.table, amounts[None]), kind, np.array([x]), np.array([y]))
-            if lost[0] or t[0] < T:
-                high = T
-            else:
-                low = T
-            if high - low <= BISECTION_WIDTH * high:
-                break
-        return (amounts, len(SOLVERS) + 1) if self._good(kind, x, y, amounts, start) else None
+        table = self.table
+        allowed = np.zeros((1, len(table)), np.bool_)
+        allowed[0, self.columns] = ~self.inert
+        one = equilibrate(table, pair, np.array([x]), np.array([y]), start[None], allowed)
+        if one.failed[0]:
+            return None
+        amounts, T = one.amounts[0], float(one.T[0])
+        mixture = mix(table, amounts[None])
+        state = assemble(mixture, pair, np.array([T]), np.array([x]), np.array([y]), amounts[None], one.iterations, one.failed)
+        good = self._good(pair, x, y, amounts, start, T, float(state.p[0]))
+        return (amounts, T, len(SOLVERS) + 1) if good else None
 
     def _amounts(self, start: Array) -> Array:
         """The phase's composition per kg, its elements restored to those of ``start`` exactly.
@@ -172,45 +167,27 @@ class _Phase:
     def _sum(n: Array, weights: Array) -> Array:
         return np.asarray(weighted(n[None], weights)[0])
 
-    def _pressure(self, s: float, T: float, start: Array) -> float:
-        """Pressure at which equilibrium gas at ``T`` has entropy ``s``, for the pair ST."""
-        log_p = float(np.log(START_PRESSURE))
-        for _ in range(PRESSURE_STEPS):
-            try:
-                self.phase.TPX = T, float(np.exp(log_p)), start[self.columns]
-                self.phase.equilibrate("TP", solver="auto", rtol=1e-12, max_steps=MAX_STEPS)
-            except self.error:
-                return float("nan")
-            mixture = mix(self.table, self._amounts(start)[None])
-            _, _, s0 = mixture.thermal(np.array([T]))
-            gas_constant = float(mixture.gas_constant()[0])
-            step = (float(s0[0]) - s) / gas_constant - log_p + float(np.log(mixture.reference_pressure))
-            log_p += float(np.clip(step, -2.0, 2.0))
-            if abs(step) < 1e-13:
-                break
-        return float(np.exp(log_p))
-
-    def _good(self, pair: Solvable, x: float, y: float, amounts: Array, start: Array) -> bool:
+    def _good(self, pair: Pair, x: float, y: float, amounts: Array, start: Array, T: float, p: float) -> bool:
         """Judge an answer: elements kept, the pair met at the solver's temperature, free energy at its minimum."""
         if not np.all(np.isfinite(amounts)):
             return False
         want = self._sum(start, self.table.atoms)
         if np.max(np.abs(self._sum(amounts, self.table.atoms) - want)) > ACCEPTED_RESIDUAL * np.max(np.abs(want)):
             return False
-        found, _, lost = temperature(mix(self.table, amounts[None]), pair, np.array([x]), np.array([y]))
-        if lost[0] or abs(float(found[0]) / self.phase.T - 1.0) > ACCEPTED_RESIDUAL:
+        found, _, lost = temperature(mix(self.table, amounts[None]), pair, np.array([x]), np.array([y]), np.array([T]))
+        if lost[0] or abs(float(found[0]) / T - 1.0) > ACCEPTED_RESIDUAL:
             return False
-        return self.optimality(amounts) <= OPTIMALITY_TOLERANCE
+        return self.optimality(amounts, T, p) <= OPTIMALITY_TOLERANCE
 
-    def optimality(self, amounts: Array) -> float:
+    def optimality(self, amounts: Array, temperature: float, pressure: float) -> float:
         """Largest |mu_j - sum_e a_je lambda_e| / (R T) over species that are present and may react."""
         n = amounts[self.columns]
         x = n / float(np.sum(n))
         use = (x > TRACE) & ~self.inert
         if not use.any():
             return 0.0
-        T = np.array([self.phase.T])
-        mu = gibbs(self.table, T)[0][self.columns][use] + np.log(x[use] * self.phase.P / self.table.reference_pressure)
+        mu = gibbs(self.table, np.array([temperature]))[0][self.columns][use]
+        mu = mu + np.log(x[use] * pressure / self.table.reference_pressure)
         atoms = self.active_atoms[use]
         scale = np.sqrt(x[use])[:, None]
         potentials = np.linalg.lstsq(atoms * scale, mu * scale[:, 0], rcond=None)[0]

@@ -61,8 +61,8 @@ _REASONS = {
     "which a gas-phase model cannot carry; use a leaner mixture",
     Status.LIMIT_BELOW_COMPRESSION: "this model's own compression pressure already exceeds the pressure limit; "
     "raise the limit or lower the compression ratio or the trapped pressure",
-    Status.VAPOUR_ABOVE_SATURATION: "the trapped charge is too cold to hold all the fuel or added water as vapour; warm the charge, "
-    'take less of it, lower evaporated_by_gas or inject at combustion (admission = "direct")',
+    Status.VAPOUR_ABOVE_SATURATION: "the trapped charge is too cold to hold all the fuel or added water as vapour; "
+    'warm the charge, take less of it, lower evaporated_by_gas or inject at combustion (admission = "direct")',
     Status.CUTOFF_NOT_REACHED: "even a stoichiometric mixture does not expand to this cut-off ratio; "
     "give a smaller cutoff_ratio or a fuel amount",
     Status.NOT_CONVERGED: "the gas exchange (residual gas, recirculated exhaust) found no fixed point; "

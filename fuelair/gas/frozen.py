@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Codes, GasState, Pair, Status
+from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, GasState, Pair, Status
 from fuelair.gas.mixture import Mixture, mix
 from fuelair.gas.species import SpeciesTable
 
@@ -18,8 +18,8 @@ TOLERANCE = 1e-14
 MAX_ITERATIONS = 60
 START = 1000.0
 """Temperature that every iteration starts from [K]; nothing from earlier calls is used."""
-SLACK = 0.5
-"""Searches may leave the data range by this factor before they are clipped."""
+SLACK_BELOW, SLACK_ABOVE = 0.5, 1.2
+"""Searches may leave the data range by these factors before they are clipped."""
 ROUNDING = 1e-12
 """Relative residual accepted when steps no longer shrink."""
 
@@ -42,8 +42,13 @@ def frozen_state(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: A
     return assemble(mixture, pair, T, x, y, amounts, iterations, failed)
 
 
-def temperature(mixture: Mixture, pair: Pair, x: Array, y: Array) -> tuple[Array, npt.NDArray[np.int32], npt.NDArray[np.bool_]]:
-    """Temperature [K] for a pair, Newton iterations used, and where none was found."""
+def temperature(
+    mixture: Mixture, pair: Pair, x: Array, y: Array, start: Array | None = None
+) -> tuple[Array, npt.NDArray[np.int32], npt.NDArray[np.bool_]]:
+    """Temperature [K] for a pair, Newton iterations used, and where none was found.
+
+    Where the search leaves the data by more than its slack, the temperature returned is the edge.
+    """
     n = len(mixture.moles)
     done = np.zeros(n, np.int32)
     if pair[0] == "T":
@@ -51,10 +56,11 @@ def temperature(mixture: Mixture, pair: Pair, x: Array, y: Array) -> tuple[Array
     if pair == "ST":
         return y.copy(), done, ~np.isfinite(y)
     gas_constant = mixture.gas_constant()
-    low, high = mixture.t_min * SLACK, mixture.t_max / SLACK
-    T = np.full(n, START)
+    low, high = mixture.t_min * SLACK_BELOW, mixture.t_max * SLACK_ABOVE
+    T = np.full(n, START) if start is None else start.copy()
     active = np.isfinite(x) & np.isfinite(y) & (y > 0.0)
     failed = ~active
+    x, y = np.where(active, x, 1.0), np.where(active, y, 1.0)
     previous = np.full(n, np.inf)
     for _ in range(MAX_ITERATIONS):
         cp, h, s = mixture.thermal(T)
@@ -105,15 +111,17 @@ def assemble(
         v = gas_constant * T / p
         s = s0 - gas_constant * np.log(p / mixture.reference_pressure)
         sound = np.sqrt(cp / (cp - gas_constant) * gas_constant * T)
+        u = h - p * v
     status = np.zeros(len(T), np.int8)
     outside = (mixture.t_min > T) | (mixture.t_max < T) | ~(p <= PRESSURE_LIMIT_OF_DATA) | ~(p > 0.0)
     status[outside] = Status.OUTSIDE_DATA
     status[failed] = Status.NO_SOLUTION
+    status[failed & ((mixture.t_min > T) | (mixture.t_max < T))] = Status.OUTSIDE_DATA
     return GasState(
         T=_masked(T, failed),
         p=_masked(p, failed),
         v=_masked(v, failed),
-        u=_masked(h - p * v, failed),
+        u=_masked(u, failed),
         h=_masked(h, failed),
         s=_masked(s, failed),
         cp=_masked(cp, failed),
@@ -126,11 +134,3 @@ def assemble(
 
 def _masked(values: Array, bad: npt.NDArray[np.bool_]) -> Array:
     return np.where(bad, np.nan, values)
-
-
-def statuses(*states: GasState) -> Codes:
-    """First non-OK status over several states."""
-    out = np.zeros_like(states[0].status)
-    for state in states:
-        out = np.where(out == Status.OK, state.status, out).astype(np.int8)
-    return out

@@ -85,8 +85,15 @@ class _State:
 
 
 def equilibrate(
-    table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array, allowed: Mask, *,
-    departure: DepartureOf | None = None, guess: Array | None = None,
+    table: SpeciesTable,
+    pair: Pair,
+    x: Array,
+    y: Array,
+    amounts: Array,
+    allowed: Mask,
+    *,
+    departure: DepartureOf | None = None,
+    guess: Array | None = None,
 ) -> Equilibrium:
     """Equilibrium amounts for a pair of properties.
 
@@ -149,7 +156,14 @@ class _Solver:
     """Right-hand sides and matrices of the reduced system for one batch."""
 
     def __init__(
-        self, table: SpeciesTable, pair: Pair, x: Array, y: Array, b: Array, absent: Mask, inert: Array,
+        self,
+        table: SpeciesTable,
+        pair: Pair,
+        x: Array,
+        y: Array,
+        b: Array,
+        absent: Mask,
+        inert: Array,
         departure: DepartureOf | None,
     ) -> None:
         self.table, self.pair, self.x, self.y, self.b, self.absent, self.inert = table, pair, x, y, b, absent, inert
@@ -178,7 +192,7 @@ class _Solver:
         energy = h if self.at_pressure else h - 1.0  # h or u over RT of each species
         entropy = s - log_activity - (0.0 if self.at_pressure else 1.0)  # dS/dn_j over R
         matrix, right = self._system(n, amounts, whole, T, mu, energy, entropy, cp, s - log_activity, real, state)
-        broken = ~np.isfinite(matrix).all(axis=(1, 2)) | ~np.isfinite(right).all(axis=1)
+        broken: Mask = np.asarray(~np.isfinite(matrix).all(axis=(1, 2)) | ~np.isfinite(right).all(axis=1))
         matrix = _identity_where(matrix, np.broadcast_to(broken[:, None], right.shape))
         solution = _solve(matrix, np.where(broken[:, None], 0.0, right))
         elements = self.atoms.shape[1]
@@ -198,8 +212,18 @@ class _Solver:
         return np.where(damping < 1.0, np.maximum(change, 1.0), change), broken | (active & bad)
 
     def _system(
-        self, n: Array, amounts: Array, whole: Array, T: Array, mu: Array, energy: Array, entropy: Array, cp: Array,
-        partial_s: Array, real: Departure | None, state: _State,
+        self,
+        n: Array,
+        amounts: Array,
+        whole: Array,
+        T: Array,
+        mu: Array,
+        energy: Array,
+        entropy: Array,
+        cp: Array,
+        partial_s: Array,
+        real: Departure | None,
+        state: _State,
     ) -> tuple[Array, Array]:
         """Matrix (N, K, K) and right side (N, K): element potentials, then ln T, then ln n or ln V."""
         count, elements = len(T), self.atoms.shape[1]

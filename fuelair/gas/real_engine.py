@@ -69,7 +69,7 @@ class RealGas:
 
 
 def _equilibrium(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
-    allowed = np.tile(table.rich, (len(x), 1))
+    allowed = np.tile(table.forms, (len(x), 1))
     refused = solid_carbon(table, amounts)
 
     def departure(T: Array, size: Array, n: Array, at_pressure: bool) -> Departure:
@@ -122,7 +122,7 @@ def _fixed(
     T = np.where(np.isfinite(ideal.T), ideal.T, 1000.0) if start is None else start.copy()
     point, iterations, failed = _search(mixture, gas, fractions, pair, x, y, T)
     status = np.zeros(len(x), np.int8)
-    outside = (point.T < mixture.t_min) | (point.T > mixture.t_max) | ~(point.p <= PRESSURE_LIMIT_OF_DATA) | ~(point.p > 0.0)
+    outside = (mixture.t_min > point.T) | (mixture.t_max < point.T) | ~(point.p <= PRESSURE_LIMIT_OF_DATA) | ~(point.p > 0.0)
     status[outside | (point.dp_dv_v >= 0.0)] = Status.OUTSIDE_DATA
     status[failed] = Status.NO_SOLUTION
     fields = {k: np.where(failed, np.nan, getattr(point, k)) for k in ("T", "p", "v", "u", "h", "s", "cp", "sound")}

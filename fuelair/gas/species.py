@@ -54,7 +54,7 @@ class SpeciesTable:
     molar_mass : (S,) [kg/kmol].
     low, high : (S, 7) NASA coefficients below and above 1000 K.
     t_min, t_max : (S,) validity limits [K].
-    lean, rich : (S,) masks of the species that equilibrium may form.
+    forms : (S,) mask of the species that equilibrium may form.
     inert : (S,) mask of species that never react.
     graphite : (2, 7) NASA coefficients of graphite, to see when solid carbon would form.
     reference_pressure : standard-state pressure of the data [Pa].
@@ -68,8 +68,7 @@ class SpeciesTable:
     high: Array
     t_min: Array
     t_max: Array
-    lean: npt.NDArray[np.bool_]
-    rich: npt.NDArray[np.bool_]
+    forms: npt.NDArray[np.bool_]
     inert: npt.NDArray[np.bool_]
     graphite: Array
     reference_pressure: float
@@ -106,8 +105,9 @@ class SpeciesTable:
     def digest(self) -> str:
         """Hash of names, composition and data; equal tables have equal digests."""
         h = hashlib.sha256("|".join(self.names + self.elements).encode())
-        for part in (self.atoms, self.low, self.high, self.t_min, self.t_max, self.lean, self.rich, self.inert, self.graphite):
+        for part in (self.atoms, self.low, self.high, self.t_min, self.t_max, self.forms, self.inert, self.graphite):
             h.update(np.ascontiguousarray(part).tobytes())
+        h.update(repr(self.reference_pressure).encode())
         return h.hexdigest()[:16]
 
     def amounts(self, composition: dict[str, float]) -> Array:
@@ -124,7 +124,7 @@ def _sets() -> dict[str, tuple[str, ...]]:
     import cantera as ct
 
     path = str(resources.folder("mechanisms/phases") / _PHASES)
-    return {n: tuple(ct.Solution(path, n).species_names) for n in ("lean", "rich", "sulfur")}
+    return {n: tuple(ct.Solution(path, n).species_names) for n in ("products", "sulfur")}
 
 
 @lru_cache(maxsize=64)
@@ -231,7 +231,7 @@ def build(vapour: Vapour | None = None, *, extra: Sequence[str] = ()) -> Species
 def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
     sets = _sets()
     sulfur = vapour is not None and any(e == "S" for e, _ in vapour.atoms)
-    products = list(sets["rich"]) + (list(sets["sulfur"]) if sulfur else [])
+    products = list(sets["products"]) + (list(sets["sulfur"]) if sulfur else [])
     products += [n for n in extra if n not in products]
     species = _species(tuple(products))
     elements = ("C", "H", "O", "N", "Ar") + (("S",) if sulfur else ())
@@ -242,8 +242,7 @@ def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
     t_max = [float(species[n].thermo.max_temp) for n in products]
     reference = {float(species[n].thermo.reference_pressure) for n in products}
     names = list(products)
-    lean = [n in sets["lean"] or n in sets["sulfur"] or n in extra for n in names]
-    rich = [True] * len(names)
+    forms = [True] * len(names)
     inert = [False] * len(names)
     if vapour is not None:
         given = dict(vapour.atoms)
@@ -256,8 +255,7 @@ def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
             ranges.append(fuel)
             t_min.append(low)
             t_max.append(high)
-            lean.append(False)
-            rich.append(False)
+            forms.append(False)
             inert.append(is_inert)
     if len(reference) != 1:
         raise DataError(f"species data mix reference pressures: {sorted(reference)}")
@@ -271,8 +269,7 @@ def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
         high=np.array([r[1] for r in ranges]),
         t_min=np.array(t_min),
         t_max=np.array(t_max),
-        lean=np.array(lean),
-        rich=np.array(rich),
+        forms=np.array(forms),
         inert=np.array(inert),
         graphite=_ranges(_species((GRAPHITE,), GRAPHITE_FILE)[GRAPHITE]),
         reference_pressure=reference.pop(),

@@ -117,8 +117,14 @@ def run(pattern: str | None = None, *, folder: Path | None = None) -> list[RowRe
 def run_row(row: Row) -> RowResult:
     """Compute and judge one row; an error in the computation fails the row and is kept as text."""
     base = RowResult(
-        file=row.file, id=row.id, source=row.source, standing=row.standing, quantity=row.quantity, unit=row.published.unit,
-        own=row.own, explained=_explained(row),
+        file=row.file,
+        id=row.id,
+        source=row.source,
+        standing=row.standing,
+        quantity=row.quantity,
+        unit=row.published.unit,
+        own=row.own,
+        explained=_explained(row),
     )
     missing = [name for name in row.needs if importlib.util.find_spec(name) is None]
     if missing:
@@ -130,7 +136,12 @@ def run_row(row: Row) -> RowResult:
         return replace(base, passed=False, error=f"{type(error).__name__}: {error}")
     difference = computed - published
     return replace(
-        base, computed=computed, published=published, difference=difference, expected_difference=expected, tolerance=tolerance,
+        base,
+        computed=computed,
+        published=published,
+        difference=difference,
+        expected_difference=expected,
+        tolerance=tolerance,
         passed=abs(difference - expected) <= tolerance,  # False for NaN
         digits=_digits(difference, published),
     )
@@ -144,8 +155,11 @@ def tally(results: Sequence[RowResult]) -> Summary:
     """Count a run and name its worst row."""
     ran = [r for r in results if r.passed is not None]
     return Summary(
-        rows=len(results), passed=sum(r.passed is True for r in ran), failed=sum(r.passed is False for r in ran),
-        skipped=len(results) - len(ran), worst=max(ran, key=lambda r: r.used) if ran else None,
+        rows=len(results),
+        passed=sum(r.passed is True for r in ran),
+        failed=sum(r.passed is False for r in ran),
+        skipped=len(results) - len(ran),
+        worst=max(ran, key=lambda r: r.used) if ran else None,
     )
 
 
@@ -162,8 +176,19 @@ def summary(results: Sequence[RowResult]) -> str:
 
 def rows_for_print(results: Iterable[RowResult]) -> list[Sheet]:
     """One sheet of text cells per file, in the order of the run."""
-    heads = ("row", "quantity", "computed", "published", "unit", "difference", "expected", "tolerance", "digits", "standing",
-             "verdict")
+    heads = (
+        "row",
+        "quantity",
+        "computed",
+        "published",
+        "unit",
+        "difference",
+        "expected",
+        "tolerance",
+        "digits",
+        "standing",
+        "verdict",
+    )
     files: dict[str, list[RowResult]] = {}
     for result in results:
         files.setdefault(result.file, []).append(result)
@@ -175,9 +200,17 @@ def _cells(r: RowResult) -> tuple[str, ...]:
     verdict = f"skipped: {r.skipped}" if r.passed is None else "ok" if r.passed else f"FAILED {r.error}".strip()
     known = f"{r.expected_difference:+.3g}" if r.expected_difference else ""
     return (
-        r.id, r.quantity, _shown(r.computed), _shown(r.published), "" if r.unit == "1" else r.unit,
-        "-" if r.difference is None else f"{r.difference:+.3g}", known, "-" if r.tolerance is None else f"{r.tolerance:.2g}",
-        "-" if r.digits is None else f"{r.digits:.1f}", standing, verdict,
+        r.id,
+        r.quantity,
+        _shown(r.computed),
+        _shown(r.published),
+        "" if r.unit == "1" else r.unit,
+        "-" if r.difference is None else f"{r.difference:+.3g}",
+        known,
+        "-" if r.tolerance is None else f"{r.tolerance:.2g}",
+        "-" if r.digits is None else f"{r.digits:.1f}",
+        standing,
+        verdict,
     )
 
 

@@ -51,8 +51,13 @@ class Set:
 
 def _settings(s: Set) -> Settings:
     return Settings(
-        volumes=Volumes.dead_centres(one(s.r)), heat_addition=s.heat_addition, pressure_limit=one(math.nan),
-        freeze_temperature=one(DEFAULT_FREEZE), residual=one(s.residual), exhaust_pressure=one(s.p), intake_pressure=one(s.p),
+        volumes=Volumes.dead_centres(one(s.r)),
+        heat_addition=s.heat_addition,
+        pressure_limit=one(math.nan),
+        freeze_temperature=one(DEFAULT_FREEZE),
+        residual=one(s.residual),
+        exhaust_pressure=one(s.p),
+        intake_pressure=one(s.p),
         swept_volume=one(math.nan),
     )
 
@@ -61,11 +66,22 @@ def _settings(s: Set) -> Settings:
 def _charge(s: Set) -> Charge:
     fuel = fuels.load(s.fuel)
     recipe = Recipe(
-        table=build(fuel.vapour, extra=s.extra), fuel=fuel,
-        air=DryAir.from_ratio(s.nitrogen_per_oxygen) if s.nitrogen_per_oxygen else dry_air(), admission=s.admission,
-        equivalence_ratio=one(s.equivalence_ratio), humidity=one(0.0), pressure=one(s.p), temperature=one(s.T),
-        from_intake=False, exhaust_pressure=one(s.p), egr_fraction=one(s.egr), egr_temperature=one(math.nan),
-        combustion_efficiency=one(1.0), fuel_temperature=one(298.15), fuel_pressure=one(101325.0), evaporated_by_gas=one(1.0),
+        table=build(fuel.vapour, extra=s.extra),
+        fuel=fuel,
+        air=DryAir.from_ratio(s.nitrogen_per_oxygen) if s.nitrogen_per_oxygen else dry_air(),
+        admission=s.admission,
+        equivalence_ratio=one(s.equivalence_ratio),
+        humidity=one(0.0),
+        pressure=one(s.p),
+        temperature=one(s.T),
+        from_intake=False,
+        exhaust_pressure=one(s.p),
+        egr_fraction=one(s.egr),
+        egr_temperature=one(math.nan),
+        combustion_efficiency=one(1.0),
+        fuel_temperature=one(298.15),
+        fuel_pressure=one(101325.0),
+        evaporated_by_gas=one(1.0),
     )
 
     def headline(charge: Charge) -> tuple[CycleResult, Exhaust]:
@@ -88,8 +104,10 @@ def _model(s: Set, model: str) -> CycleResult:
         charge = _charge(s)
         own = math.isfinite(s.heating_value)
         heat = np.asarray(charge.fuel_mass * s.heating_value) if own else None
-        state = air_standard.ColdAir(s.k, s.gas_constant) if model == "air-cold" else air_standard.variable_air(
-            CanteraGas(), charge.recipe.air
+        state = (
+            air_standard.ColdAir(s.k, s.gas_constant)
+            if model == "air-cold"
+            else air_standard.variable_air(CanteraGas(), charge.recipe.air)
         )
         result = air_standard.run(model, state, charge, _settings(s), heat=heat)
     if result.status[0] != Status.OK:

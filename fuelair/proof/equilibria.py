@@ -4,8 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
-from functools import cached_property
+from dataclasses import replace
 from typing import Any, Literal
 
 import numpy as np
@@ -26,33 +25,14 @@ LN10 = math.log(10.0)
 Data = Literal["tool", "bar", "janaf"]
 
 
-@dataclass(frozen=True, eq=False)
-class RestrictedTable(SpeciesTable):
-    """A species table whose equilibrium may form only the species of its masks.
-
-    Its digest counts the masks and the reference pressure too, which engines that keep phases by
-    digest need to tell one restriction from another.
-    """
-
-    @cached_property
-    def digest(self) -> str:
-        """Hash of the data, the masks and the reference pressure."""
-        chosen = ",".join(n for n, use in zip(self.names, self.lean, strict=True) if use)
-        return f"{super().digest}|{chosen}|{self.reference_pressure!r}"
-
-
-def restricted(species: Sequence[str], extra: Sequence[str] = (), reference_pressure: float | None = None) -> RestrictedTable:
+def restricted(species: Sequence[str], extra: Sequence[str] = (), reference_pressure: float | None = None) -> SpeciesTable:
     """The tool's table of products whose equilibrium may form ``species`` only."""
     whole = build(extra=extra)
     mask = np.array([n in species for n in whole.names])
-    return RestrictedTable(
-        names=whole.names, elements=whole.elements, atoms=whole.atoms, molar_mass=whole.molar_mass, low=whole.low,
-        high=whole.high, t_min=whole.t_min, t_max=whole.t_max, lean=mask, rich=mask.copy(), inert=whole.inert,
-        graphite=whole.graphite, reference_pressure=reference_pressure or whole.reference_pressure,
-    )
+    return replace(whole, forms=mask, reference_pressure=reference_pressure or whole.reference_pressure)
 
 
-def _with_gibbs(table: RestrictedTable, T: float, gibbs_over_rt: Mapping[str, float]) -> RestrictedTable:
+def _with_gibbs(table: SpeciesTable, T: float, gibbs_over_rt: Mapping[str, float]) -> SpeciesTable:
     """The table with enthalpies shifted so that free energies of formation at ``T`` are the given ones over R T.
 
     Elements are referred to O2, N2, H2 (and carbon to the table's own CO) as they stand in the table.
@@ -74,7 +54,7 @@ def _janaf_formation(T: float, species: Sequence[str]) -> dict[str, float]:
     return {n: -LN10 * packages.janaf_value(n, "log Kf", T) for n in species if n not in ("O2", "N2", "H2", "Ar")}
 
 
-def _table(data: Data, species: Sequence[str], T: float) -> RestrictedTable:
+def _table(data: Data, species: Sequence[str], T: float) -> SpeciesTable:
     if data == "tool":
         return restricted(species)
     table = restricted(species, reference_pressure=BAR)
@@ -83,8 +63,16 @@ def _table(data: Data, species: Sequence[str], T: float) -> RestrictedTable:
 
 @computation("equilibrium-composition")
 def equilibrium_composition(
-    *, mixture: dict[str, float], species: list[str], T: float, p: float, result: str, per_mixture: bool = False,
-    data: Data = "tool", gibbs_J_per_mol: dict[str, float] | None = None, gibbs_over_rt: dict[str, float] | None = None,
+    *,
+    mixture: dict[str, float],
+    species: list[str],
+    T: float,
+    p: float,
+    result: str,
+    per_mixture: bool = False,
+    data: Data = "tool",
+    gibbs_J_per_mol: dict[str, float] | None = None,
+    gibbs_over_rt: dict[str, float] | None = None,
 ) -> float:
     """Equilibrium of a ``mixture`` at ``T`` [K], ``p`` [Pa] among ``species`` only.
 
@@ -218,7 +206,10 @@ def _standard_enthalpy(table: SpeciesTable, species: str) -> float:
 @lookup("janaf-species")
 def janaf_species(*, species: str, T: float, result: str) -> float:
     """The same from the JANAF tables."""
-    column, factor = {"enthalpy": ("H-H(Tr)", 1e3), "entropy": ("S", 1.0), "heat-capacity": ("Cp", 1.0),
-                      "formation-enthalpy": ("delta-f H", 1e3)}[result]
+    column, factor = {
+        "enthalpy": ("H-H(Tr)", 1e3),
+        "entropy": ("S", 1.0),
+        "heat-capacity": ("Cp", 1.0),
+        "formation-enthalpy": ("delta-f H", 1e3),
+    }[result]
     return packages.janaf_value(species, column, T) * factor
-

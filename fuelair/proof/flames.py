@@ -35,24 +35,43 @@ def mixture(vapour: Vapour, air: DryAir, equivalence_ratio: float = 1.0) -> tupl
 
 
 def burned(
-    vapour: Vapour, air: DryAir, *, equivalence_ratio: float = 1.0, T: float = T_REFERENCE, p: float = P_REFERENCE,
-    heat_addition: HeatAddition = "constant-pressure", chemistry: Chemistry = "equilibrium",
+    vapour: Vapour,
+    air: DryAir,
+    *,
+    equivalence_ratio: float = 1.0,
+    T: float = T_REFERENCE,
+    p: float = P_REFERENCE,
+    heat_addition: HeatAddition = "constant-pressure",
+    chemistry: Chemistry = "equilibrium",
 ) -> GasState:
     """Adiabatically burned gas from premixed vapour and dry air at ``T`` [K], ``p`` [Pa]."""
     table, amounts = mixture(vapour, air, equivalence_ratio)
     engine = CanteraGas()
     fresh = engine.state(table, "TP", one(T), one(p), amounts)
     result = burn(
-        engine, table, fresh, reactants=amounts, injected=np.zeros(1), fuel_enthalpy=np.zeros(1),
-        heat_addition=heat_addition, pressure_limit=np.full(1, np.nan), chemistry=chemistry,
+        engine,
+        table,
+        fresh,
+        reactants=amounts,
+        injected=np.zeros(1),
+        fuel_enthalpy=np.zeros(1),
+        heat_addition=heat_addition,
+        pressure_limit=np.full(1, np.nan),
+        chemistry=chemistry,
     )
     return solved(result.state)
 
 
 @computation("flame-temperature")
 def flame_temperature(
-    *, fuel: str = "", species: str = "", atoms: dict[str, float] | None = None, lower_heating_value: float = math.nan,
-    nitrogen_per_oxygen: float = 3.76, chemistry: Chemistry = "equilibrium", equivalence_ratio: float = 1.0,
+    *,
+    fuel: str = "",
+    species: str = "",
+    atoms: dict[str, float] | None = None,
+    lower_heating_value: float = math.nan,
+    nitrogen_per_oxygen: float = 3.76,
+    chemistry: Chemistry = "equilibrium",
+    equivalence_ratio: float = 1.0,
 ) -> float:
     """Adiabatic flame temperature [K] at 1 atm from 298.15 K.
 

@@ -7,8 +7,19 @@ from functools import lru_cache
 from fuelair.proof.registry import lookup
 
 JANAF_FILES = {
-    "CO2": "C-095", "CO": "C-093", "H2O": "H-064", "H2": "H-050", "H": "H-001", "O": "O-001", "O2": "O-029", "N": "N-002",
-    "N2": "N-023", "OH": "H-038", "NO": "N-005", "CH4": "C-067", "NH3": "H-083",
+    "CO2": "C-095",
+    "CO": "C-093",
+    "H2O": "H-064",
+    "H2": "H-050",
+    "H": "H-001",
+    "O": "O-001",
+    "O2": "O-029",
+    "N": "N-002",
+    "N2": "N-023",
+    "OH": "H-038",
+    "NO": "N-005",
+    "CH4": "C-067",
+    "NH3": "H-083",
 }
 """Species -> table of the NIST-JANAF collection (4th edition, 1998)."""
 

@@ -20,8 +20,24 @@ from fuelair.errors import DataError
 FORMAT = 1
 STANDINGS = ("read", "from memory", "computed")
 FACTORS: Mapping[str, float] = {
-    "1": 1.0, "%": 1e-2, "dex": 1.0, "mol": 1.0, "kmol": 1.0, "K": 1.0, "Pa": 1.0, "kPa": 1e3, "bar": 1e5, "atm": 101325.0,
-    "kJ/kg": 1e3, "MJ/kg": 1e6, "kJ/mol": 1e3, "J/(mol K)": 1.0, "kJ/(kg K)": 1e3, "g/kg": 1e-3, "kg/kg": 1.0, "kg/m3": 1.0,
+    "1": 1.0,
+    "%": 1e-2,
+    "dex": 1.0,
+    "mol": 1.0,
+    "kmol": 1.0,
+    "K": 1.0,
+    "Pa": 1.0,
+    "kPa": 1e3,
+    "bar": 1e5,
+    "atm": 101325.0,
+    "kJ/kg": 1e3,
+    "MJ/kg": 1e6,
+    "kJ/mol": 1e3,
+    "J/(mol K)": 1.0,
+    "kJ/(kg K)": 1e3,
+    "g/kg": 1e-3,
+    "kg/kg": 1.0,
+    "kg/m3": 1.0,
 }
 """SI (molar quantities per mol) for one of each unit that the book uses."""
 
@@ -157,7 +173,7 @@ def _expand(file: str, table: dict[str, Any]) -> Iterator[dict[str, Any]]:
         if len(cells) != len(keys) + len(printed):
             raise DataError(f"{where}: row {cells} must have {len(keys) + len(printed)} cells")
         place = dict(zip(keys, cells, strict=False))
-        values = iter(cells[len(keys):])
+        values = iter(cells[len(keys) :])
         for column in columns:
             _only(column, _COLUMN_KEYS, where)
             _text(column, "name", where)
@@ -184,11 +200,19 @@ def _row(file: str, source: dict[str, Any], entry: dict[str, Any]) -> Row:
     if not isinstance(inputs, dict):
         raise DataError(f"{where}: inputs must be a table")
     return Row(
-        file=file, id=_text(entry, "id", where), source=source["key"], reference=source["reference"], standing=standing,
-        compute=_text(entry, "compute", where), inputs=inputs, quantity=_text(entry, "quantity", where),
-        published=_published(entry.get("published"), where), tolerance=_tolerance(entry.get("tolerance"), where),
+        file=file,
+        id=_text(entry, "id", where),
+        source=source["key"],
+        reference=source["reference"],
+        standing=standing,
+        compute=_text(entry, "compute", where),
+        inputs=inputs,
+        quantity=_text(entry, "quantity", where),
+        published=_published(entry.get("published"), where),
+        tolerance=_tolerance(entry.get("tolerance"), where),
         expected=_expected(entry["expected_difference"], where) if "expected_difference" in entry else None,
-        explained=entry.get("explained", ""), needs=(needs,) if isinstance(needs, str) else tuple(needs),
+        explained=entry.get("explained", ""),
+        needs=(needs,) if isinstance(needs, str) else tuple(needs),
         own=bool(entry.get("own", False)),
     )
 
@@ -203,8 +227,12 @@ def _published(data: Any, where: str) -> Published:
     span = data.get("range")
     if span is not None and (len(span) != 2 or not span[0] < span[1]):
         raise DataError(f"{where}: range must be [low, high], found {span}")
-    return Published(unit=unit, value=_number(data, "value", where), lookup=data.get("lookup", ""),
-                     range=None if span is None else (float(span[0]), float(span[1])))
+    return Published(
+        unit=unit,
+        value=_number(data, "value", where),
+        lookup=data.get("lookup", ""),
+        range=None if span is None else (float(span[0]), float(span[1])),
+    )
 
 
 def _tolerance(data: Any, where: str) -> Tolerance:
@@ -219,8 +247,13 @@ def _expected(data: Any, where: str) -> Expected:
     data = _only(data, {"value", "relative", "lookup", "inputs", "reason"}, f"{where}: expected_difference")
     if sum(k in data for k in ("value", "relative", "lookup")) != 1:
         raise DataError(f"{where}: expected_difference needs one of value, relative, lookup")
-    return Expected(_text(data, "reason", f"{where}: expected_difference"), _number(data, "value", where),
-                    _number(data, "relative", where), data.get("lookup", ""), data.get("inputs", {}))
+    return Expected(
+        _text(data, "reason", f"{where}: expected_difference"),
+        _number(data, "value", where),
+        _number(data, "relative", where),
+        data.get("lookup", ""),
+        data.get("inputs", {}),
+    )
 
 
 def _only(data: Any, keys: set[str], where: str) -> dict[str, Any]:

@@ -34,10 +34,16 @@ def air_table(*, T: float, base_T: float, base: float, result: str) -> float:
     """
     (h, s, r), (h0, s0, _) = _air(T), _air(base_T)
     relative = math.exp((s - s0) / r)
-    return pick({
-        "h": base + h - h0, "u": base + h - h0 - r * (T - base_T), "s0": base + s - s0, "pr": base * relative,
-        "vr": base * T / base_T / relative,
-    }, result)
+    return pick(
+        {
+            "h": base + h - h0,
+            "u": base + h - h0 - r * (T - base_T),
+            "s0": base + s - s0,
+            "pr": base * relative,
+            "vr": base * T / base_T / relative,
+        },
+        result,
+    )
 
 
 @lookup("air-fit-difference")
@@ -141,9 +147,20 @@ def atct_heating_value(*, fuel: str, result: str) -> float:
 
 
 CAS = {
-    "methane": "74-82-8", "ethane": "74-84-0", "propane": "74-98-6", "n-butane": "106-97-8", "n-heptane": "142-82-5",
-    "iso-octane": "540-84-1", "n-octane": "111-65-9", "toluene": "108-88-3", "methanol": "67-56-1", "ethanol": "64-17-5",
-    "dme": "115-10-6", "ammonia": "7664-41-7", "n-dodecane": "112-40-3", "n-hexadecane": "544-76-3",
+    "methane": "74-82-8",
+    "ethane": "74-84-0",
+    "propane": "74-98-6",
+    "n-butane": "106-97-8",
+    "n-heptane": "142-82-5",
+    "iso-octane": "540-84-1",
+    "n-octane": "111-65-9",
+    "toluene": "108-88-3",
+    "methanol": "67-56-1",
+    "ethanol": "64-17-5",
+    "dme": "115-10-6",
+    "ammonia": "7664-41-7",
+    "n-dodecane": "112-40-3",
+    "n-hexadecane": "544-76-3",
 }
 """CAS numbers of the pure fuels."""
 
@@ -199,4 +216,3 @@ def liquid_exergy(*, fuel: str) -> float:
     if saturation is None:
         raise LookupError(f"{fuel} has no vapour-pressure equation")
     return vapour_exergy(fuel=fuel) + R / 1e3 * 298.15 * math.log(saturation / 101325.0)
-

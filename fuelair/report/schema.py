@@ -27,7 +27,8 @@ def assessment_schema() -> dict[str, Any]:
     """JSON Schema (draft 2020-12) of an assessment; null stands for a figure that was not solved."""
     text, numbers = {"type": "string"}, {"type": "object", "additionalProperties": NUMBER}
     model = _record(
-        {"status": {"enum": [s.label for s in Status]}, "reason": text, "flags": _list(text)} | dict.fromkeys(MODEL_NUMBERS, NUMBER)
+        {"status": {"enum": [s.label for s in Status]}, "reason": text, "flags": _list(text)}
+        | dict.fromkeys(MODEL_NUMBERS, NUMBER)
     )
     state = _record(
         {"state": {"enum": list(STATES)}} | dict.fromkeys(STATE_NUMBERS, NUMBER),
@@ -35,7 +36,9 @@ def assessment_schema() -> dict[str, Any]:
     )
     step = _record({"from": text, "to": text, "assumption": text} | dict.fromkeys(LADDER, NUMBER))
     offset = _record({"absolute": NUMBER, "relative": NUMBER})
-    source = _record({"key": text, "reference": text, "standing": {"enum": ["read", "computed", "from memory", "common practice"]}})
+    source = _record(
+        {"key": text, "reference": text, "standing": {"enum": ["read", "computed", "from memory", "common practice"]}}
+    )
     models = [*MODELS, FREEZE_MODEL]
     parts = {
         "format": {"const": FORMAT}, "versions": {"type": "object", "additionalProperties": text}, "engine": text,
@@ -51,7 +54,8 @@ def assessment_schema() -> dict[str, Any]:
 
 def _record(properties: dict[str, Any], optional: dict[str, Any] | None = None) -> dict[str, Any]:
     return {
-        "type": "object", "properties": properties | (optional or {}), "required": list(properties), "additionalProperties": False,
+        "type": "object", "properties": properties | (optional or {}), "required": list(properties),
+        "additionalProperties": False,
     }  # fmt: skip
 
 

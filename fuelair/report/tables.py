@@ -111,9 +111,9 @@ def over(a: Assessment) -> Table:
     for model, quantities in a.overprediction.items():
         cells = []
         for key in COST_HEADS:
-            both = quantities[key]
-            style = "+.1%" if abs(both["relative"]) < 0.0995 else "+.0%"
-            cells.append(f"{_signed(key, both['absolute'])} ({both['relative']:{style}})")
+            absolute, relative = quantities[key]["absolute"], quantities[key]["relative"]
+            share = "" if relative is None else f" ({relative:{'+.1%' if abs(relative) < 0.0995 else '+.0%'}})"
+            cells.append(_signed(key, absolute or 0.0) + share)
         rows.append((model, *cells))
     return Table(
         f"How far each model is off {REFERENCE_MODEL}",
@@ -254,7 +254,7 @@ def exergy(a: Assessment) -> Table:
         ("brought by the fuel", fuel),
         ("brought by the trapped gas", float(e.trapped[0]) - (0.0 if a.charge.fuel_injected[0] > 0.0 else fuel)),
         ("destroyed by combustion", float(e.destroyed_by_entropy[0])),
-        ("indicated work", float(e.work[0])),
+        ("indicated work", float(e.indicated_work[0])),
         ("leaves with the exhaust", float(e.leaving[0])),
         ("destroyed in the blowdown", float(e.destroyed_blowdown[0])),
     )

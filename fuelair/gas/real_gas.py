@@ -1,0 +1,204 @@
+"""Residual functions of a real gas: a closed form in temperature, density and composition.
+
+    a_r/(R T) = B rho + X^2 / (2 (1 + kappa X)),   X = C^(1/2) rho
+
+B(T, x) = sum_ij x_i x_j B_ij(T) and C(T, x)^(1/3) = sum_i x_i C_i(T)^(1/3) are the second and third
+virial coefficients; the denominator, one constant for all gases, stands for everything above the third.
+At small density the first two terms of the virial series are exact. Everything else follows by
+differentiation, so that the identities of thermodynamics hold to rounding.
+
+Source of B and C: reference equations of state of the pure fluids, see `fuelair.gas.virial_data`.
+Mixing: B quadratic in composition is exact in statistical mechanics; the cube-root rule for C is
+common practice (cross coefficients as geometric means of the pure ones).
+
+Valid for gas without strong attraction: see `valid`. Outside, numbers still come, but nothing is claimed.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from fuelair.gas.engine import Array, Mask, total
+from fuelair.gas.species import R
+from fuelair.gas.virial_data import VirialTable, virial_table
+
+__all__ = ["DENSITY_LIMIT", "Residual", "VirialTable", "density", "residual", "valid", "virial_table"]
+
+DENSITY_LIMIT = 6.0
+"""Molar density above which nothing is claimed [kmol/m3]."""
+STABILITY_LIMIT = 0.25
+"""Least slope (dp/drho)/(R T) of a gas state that is claimed."""
+MAX_ITERATIONS = 60
+TOLERANCE = 1e-15
+STALL = 1e-12
+"""Relative change of density at which the search is done; the second when it no longer shrinks."""
+LOOP_FROM = 400
+"""Size of a result from which adding column by column is faster than one running sum; the bits are the same."""
+_STATIONS = np.linspace(0.125, 1.0, 8)
+"""Parts of the density at which the way from zero density is checked to rise."""
+
+
+@dataclass(frozen=True, slots=True)
+class Residual:
+    """What the real gas adds to the ideal gas at the same temperature, density and composition.
+
+    All dimensionless, shape (N,), ``mu`` (N, S).
+
+    Attributes
+    ----------
+    Z : compressibility factor p/(rho R T).
+    dZ_drho_rho : rho dZ/drho at fixed T, x.
+    dZ_dT_T : T dZ/dT at fixed rho, x.
+    a, u, h : residual Helmholtz energy, internal energy and enthalpy over R T; h = u + Z - 1.
+    s, cv : residual entropy and isochoric heat capacity over R.
+    mu : residual chemical potential over R T of every species, d(n a)/dn_j at fixed T and volume;
+        of shape (N, 0) if not asked for. Potential of species j over R T:
+        g_j(T)/RT + ln(x_j rho R T/p0) + mu_j.
+    """
+
+    Z: Array
+    dZ_drho_rho: Array
+    dZ_dT_T: Array
+    a: Array
+    u: Array
+    s: Array
+    h: Array
+    cv: Array
+    mu: Array
+
+
+@dataclass(frozen=True, slots=True)
+class _Coefficients:
+    """B and C**(1/3) of N mixtures with T d/dT and T^2 d2/dT2; y (N, F) fractions of fluids, basis (N, K).
+
+    ``rows`` (N, F, K): coefficients of sum_j y_j B_ij.
+    """
+
+    y: Array
+    basis: Array
+    rows: Array
+    B: Array
+    B1: Array
+    B2: Array
+    Q: Array
+    Q1: Array
+    Q2: Array
+
+
+def residual(vt: VirialTable, T: Array, rho: Array, x: Array, *, potentials: bool = True) -> Residual:
+    """Residual functions at temperature ``T`` (N,) [K], density ``rho`` (N,) [kmol/m3], mole fractions ``x`` (N, S).
+
+    ``potentials`` False leaves ``mu`` out, which saves half the time.
+    """
+    k = _coefficients(vt, T, x)
+    kappa = vt.kappa
+    q1, q2 = k.Q1 / k.Q, k.Q2 / k.Q
+    X = rho * k.Q * np.sqrt(k.Q)
+    X1 = 1.5 * q1 * X
+    X2 = (1.5 * q2 + 0.75 * q1 * q1) * X
+    d = 1.0 + kappa * X
+    g, gx, gxx = 0.5 * X * X / d, X * (1.0 + 0.5 * kappa * X) / (d * d), 1.0 / (d * d * d)
+    second = k.B * rho
+    a = second + g
+    Z = 1.0 + second + gx * X
+    u = -(k.B1 * rho + gx * X1)
+    cv = 2.0 * u - (k.B2 * rho + gxx * X1 * X1 + gx * X2)
+    return Residual(
+        Z=Z,
+        dZ_drho_rho=second + gx * X + gxx * X * X,
+        dZ_dT_T=k.B1 * rho + (gx + gxx * X) * X1,
+        a=a,
+        u=u,
+        s=u - a,
+        h=u + (second + gx * X),
+        cv=cv,
+        mu=_potentials(vt, k, rho, g, gx * X) if potentials else np.zeros((len(T), 0)),
+    )
+
+
+def density(vt: VirialTable, T: Array, p: Array, x: Array) -> Array:
+    """Molar density [kmol/m3] of the gas at temperature ``T`` (N,) [K], pressure ``p`` (N,) [Pa], mole fractions ``x`` (N, S).
+
+    The root that a gas reaches when it is compressed from nothing. NaN where the pressure stops rising
+    with density on the way (the model's gas would condense), and where ``T`` or ``p`` are not positive numbers.
+    """
+    k = _coefficients(vt, T, x)
+    root = k.Q * np.sqrt(k.Q)
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+        target = p / (R * T)
+        rho = target.copy()
+        active = np.isfinite(target) & (target > 0.0) & (T > 0.0)
+        found = active.copy()
+        previous = np.full(len(target), np.inf)
+        for _ in range(MAX_ITERATIONS):
+            Z, slope = _rise(vt, k.B, root, rho)
+            moved = rho + (target - rho * Z) / slope
+            moved = np.where(moved > 0.0, np.minimum(moved, 3.0 * rho), 0.5 * rho)
+            size = np.abs(moved / rho - 1.0)
+            rho = np.where(active, moved, rho)
+            settled = (size <= TOLERANCE) | ((size <= STALL) & (size >= previous))
+            previous = size
+            active &= ~settled & (slope > 0.0)
+            if not active.any():
+                break
+        found &= ~active
+        _, slope = _rise(vt, k.B[:, None], root[:, None], rho[:, None] * _STATIONS)
+        found &= (slope > 0.0).all(axis=1)
+    return np.where(found, rho, np.nan)
+
+
+def valid(vt: VirialTable, T: Array, rho: Array, x: Array) -> Mask:
+    """Where the model claims its accuracy: 200 to 6000 K, up to `DENSITY_LIMIT`, and far from condensing.
+
+    Far from condensing: (dp/drho)/(R T) at fixed temperature stays above `STABILITY_LIMIT`.
+    """
+    k = _coefficients(vt, T, x)
+    _, slope = _rise(vt, k.B, k.Q * np.sqrt(k.Q), rho)
+    return (vt.t_min <= T) & (vt.t_max >= T) & (rho <= DENSITY_LIMIT) & (slope > STABILITY_LIMIT)
+
+
+def _rise(vt: VirialTable, B: Array, root: Array, rho: Array) -> tuple[Array, Array]:
+    """Z and (dp/drho)/(R T)."""
+    X = root * rho
+    d = 1.0 + vt.kappa * X
+    third = X * X * (1.0 + 0.5 * vt.kappa * X) / (d * d)
+    Z = 1.0 + B * rho + third
+    return Z, Z + B * rho + third + X * X / (d * d * d)
+
+
+def _coefficients(vt: VirialTable, T: Array, x: Array) -> _Coefficients:
+    n, fluids, terms = len(T), len(vt.fluids), len(vt.exponents)
+    y = _in_order(x, vt.mapping)
+    e = vt.exponents
+    with np.errstate(invalid="ignore", divide="ignore"):
+        basis = np.exp(np.log(vt.reference_temperature / T)[:, None] * e)
+    present = np.flatnonzero(y.any(axis=0))  # what is absent from the whole batch would only add zeros
+    rows = _in_order(y[:, present], vt.b[present].reshape(len(present), -1)).reshape(n, fluids, terms)
+    b = _in_order(y[:, present], rows[:, present]) * basis
+    c = _in_order(y[:, present], vt.c[present]) * basis
+    first, second = -e, e * (e + 1.0)
+    return _Coefficients(
+        y=y, basis=basis, rows=rows,
+        B=total(b), B1=total(first * b), B2=total(second * b),
+        Q=total(c), Q1=total(first * c), Q2=total(second * c),
+    )  # fmt: skip
+
+
+def _potentials(vt: VirialTable, k: _Coefficients, rho: Array, g: Array, gx_x: Array) -> Array:
+    """Residual chemical potentials over R T of the species, (N, S), from those of the fluids."""
+    with_all = _in_order(k.basis, k.rows.transpose(0, 2, 1))
+    c = _in_order(k.basis, vt.c.T)
+    mu = 2.0 * rho[:, None] * with_all + g[:, None] + gx_x[:, None] * (1.5 * c / k.Q[:, None] - 0.5)
+    return _in_order(mu, vt.mapping.T)
+
+
+def _in_order(amounts: Array, weights: Array) -> Array:
+    """Like `engine.weighted` with the same bits, for weights (S, K) or (N, S, K); large batches add column by column."""
+    if len(amounts) * weights.shape[-1] < LOOP_FROM:
+        return np.asarray(np.cumsum(amounts[:, :, None] * weights, axis=1)[:, -1])
+    out = amounts[:, 0, None] * weights[..., 0, :]
+    for i in range(1, amounts.shape[1]):
+        out += amounts[:, i, None] * weights[..., i, :]
+    return np.asarray(out)
