@@ -30,6 +30,7 @@ if TYPE_CHECKING:
 
 NARROWEST, WIDEST, PIPED = 60, 150, 120
 """Width of the output in characters: least, most, and when it is not a terminal."""
+INTERRUPTED = 130
 TRACEBACK_VARIABLE = "FUELAIR_TRACEBACK"
 
 app = typer.Typer(
@@ -51,9 +52,11 @@ def main() -> None:
     except FuelairError as error:
         _complain(str(error))
         raise SystemExit(error.exit_code) from None
-    except KeyboardInterrupt:
+    except (KeyboardInterrupt, SystemExit) as end:
+        if isinstance(end, SystemExit) and end.code != INTERRUPTED:
+            raise
         _complain("interrupted; nothing half written")
-        raise SystemExit(130) from None
+        raise SystemExit(INTERRUPTED) from None
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         raise SystemExit(0) from None

@@ -5,10 +5,8 @@ from __future__ import annotations
 import csv
 import json
 import os
-import signal
 import subprocess
 import sys
-import time
 from pathlib import Path
 
 import pytest
@@ -215,21 +213,20 @@ def test_version_help_and_unknown_verb() -> None:
     assert run("asses").returncode == 2
 
 
-def test_interrupt_is_130_and_leaves_nothing(tmp_path: Path) -> None:
-    process = subprocess.Popen(
-        [sys.executable, "-m", "fuelair", "assess", str(DEMO), "--out", str(tmp_path / "out")],
-        stdout=subprocess.PIPE,
-        stderr=subprocess.PIPE,
-        text=True,
-        cwd=tmp_path,
+@pytest.mark.parametrize("delay", [0.01, 0.08, 0.16])
+def test_interrupt_is_130_and_leaves_nothing(tmp_path: Path, delay: float) -> None:
+    """SIGINT while the case is being assessed (imports done), at three moments."""
+    code = (
+        "import os, signal, sys, threading, fuelair.cli\n"
+        f"threading.Timer({delay}, lambda: os.kill(os.getpid(), signal.SIGINT)).start()\n"
+        f"sys.argv = ['fuelair', 'assess', {str(DEMO)!r}, '--out', {str(tmp_path / 'out')!r}]\n"
+        "fuelair.cli.main()\n"
     )
-    time.sleep(0.25)
-    process.send_signal(signal.SIGINT)
-    _, err = process.communicate(timeout=60)
-    assert process.returncode in (130, 0, -signal.SIGINT)
-    if process.returncode == 130:
-        assert "interrupted" in err
-    assert not list(tmp_path.glob(".out-*"))
+    out = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False, cwd=tmp_path)
+    assert out.returncode == 130
+    assert "interrupted" in out.stderr
+    assert "Traceback" not in out.stderr
+    assert list(tmp_path.iterdir()) == []
 
 
 def test_a_closed_pipe_is_no_error() -> None:

@@ -1,11 +1,10 @@
 """Residual functions of a real gas: a closed form in temperature, density and composition.
 
-    a_r/(R T) = B rho + X^2 / (2 (1 + kappa X)),   X = C^(1/2) rho
+    a_r/(R T) = B rho + X^2/2 + L X^4,   X = C^(1/2) rho
 
 B(T, x) = sum_ij x_i x_j B_ij(T) and C(T, x)^(1/3) = sum_i x_i C_i(T)^(1/3) are the second and third
-virial coefficients; the denominator, one constant for all gases, stands for everything above the third.
-At small density the first two terms of the virial series are exact. Everything else follows by
-differentiation, so that the identities of thermodynamics hold to rounding.
+virial coefficients; the last term, one constant for all gases, stands for everything above the third.
+Everything else follows by differentiation, so that the identities of thermodynamics hold to rounding.
 
 Source of B and C: reference equations of state of the pure fluids, see `fuelair.gas.virial_data`.
 Mixing: B quadratic in composition is exact in statistical mechanics; the cube-root rule for C is
@@ -22,9 +21,9 @@ import numpy as np
 
 from fuelair.gas.engine import Array, Mask, total
 from fuelair.gas.species import R
-from fuelair.gas.virial_data import VirialTable, virial_table
+from fuelair.gas.virial_data import VirialTable, fluids, virial_table
 
-__all__ = ["DENSITY_LIMIT", "Residual", "VirialTable", "density", "residual", "valid", "virial_table"]
+__all__ = ["DENSITY_LIMIT", "Residual", "VirialTable", "density", "fluids", "residual", "valid", "virial_table"]
 
 DENSITY_LIMIT = 6.0
 """Molar density above which nothing is claimed [kmol/m3]."""
@@ -36,8 +35,6 @@ STALL = 1e-12
 """Relative change of density at which the search is done; the second when it no longer shrinks."""
 LOOP_FROM = 400
 """Size of a result from which adding column by column is faster than one running sum; the bits are the same."""
-_STATIONS = np.linspace(0.125, 1.0, 8)
-"""Parts of the density at which the way from zero density is checked to rise."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,13 +90,12 @@ def residual(vt: VirialTable, T: Array, rho: Array, x: Array, *, potentials: boo
     ``potentials`` False leaves ``mu`` out, which saves half the time.
     """
     k = _coefficients(vt, T, x)
-    kappa = vt.kappa
     q1, q2 = k.Q1 / k.Q, k.Q2 / k.Q
     X = rho * k.Q * np.sqrt(k.Q)
     X1 = 1.5 * q1 * X
     X2 = (1.5 * q2 + 0.75 * q1 * q1) * X
-    d = 1.0 + kappa * X
-    g, gx, gxx = 0.5 * X * X / d, X * (1.0 + 0.5 * kappa * X) / (d * d), 1.0 / (d * d * d)
+    XX = X * X
+    g, gx, gxx = XX * (0.5 + vt.closing * XX), X * (1.0 + 4.0 * vt.closing * XX), 1.0 + 12.0 * vt.closing * XX
     second = k.B * rho
     a = second + g
     Z = 1.0 + second + gx * X
@@ -144,8 +140,7 @@ def density(vt: VirialTable, T: Array, p: Array, x: Array) -> Array:
             if not active.any():
                 break
         found &= ~active
-        _, slope = _rise(vt, k.B[:, None], root[:, None], rho[:, None] * _STATIONS)
-        found &= (slope > 0.0).all(axis=1)
+        found &= _least_rise(vt, k.B, root, rho) > 0.0
     return np.where(found, rho, np.nan)
 
 
@@ -155,17 +150,28 @@ def valid(vt: VirialTable, T: Array, rho: Array, x: Array) -> Mask:
     Far from condensing: (dp/drho)/(R T) at fixed temperature stays above `STABILITY_LIMIT`.
     """
     k = _coefficients(vt, T, x)
-    _, slope = _rise(vt, k.B, k.Q * np.sqrt(k.Q), rho)
-    return (vt.t_min <= T) & (vt.t_max >= T) & (rho <= DENSITY_LIMIT) & (slope > STABILITY_LIMIT)
+    least = _least_rise(vt, k.B, k.Q * np.sqrt(k.Q), rho)
+    return (vt.t_min <= T) & (vt.t_max >= T) & (rho <= DENSITY_LIMIT) & (least > STABILITY_LIMIT)
 
 
 def _rise(vt: VirialTable, B: Array, root: Array, rho: Array) -> tuple[Array, Array]:
     """Z and (dp/drho)/(R T)."""
-    X = root * rho
-    d = 1.0 + vt.kappa * X
-    third = X * X * (1.0 + 0.5 * vt.kappa * X) / (d * d)
-    Z = 1.0 + B * rho + third
-    return Z, Z + B * rho + third + X * X / (d * d * d)
+    XX = (root * rho) ** 2
+    Z = 1.0 + B * rho + XX * (1.0 + 4.0 * vt.closing * XX)
+    return Z, 1.0 + 2.0 * B * rho + XX * (3.0 + 20.0 * vt.closing * XX)
+
+
+def _least_rise(vt: VirialTable, B: Array, root: Array, rho: Array) -> Array:
+    """Least (dp/drho)/(R T) between zero density and ``rho``.
+
+    The slope is convex in X = root rho; its lowest point solves 2 B/root + 6 X + 80 L X^3 = 0, a cubic with
+    one real root (Cardano), and lies at a positive X only where B is negative.
+    """
+    third = 0.025 / vt.closing  # a third of the cubic's linear coefficient
+    half = -B / root / (80.0 * vt.closing)
+    under = np.sqrt(half * half + third**3)
+    lowest = np.cbrt(half + under) + np.cbrt(half - under)
+    return _rise(vt, B, root, np.minimum(np.maximum(lowest, 0.0) / root, rho))[1]
 
 
 def _coefficients(vt: VirialTable, T: Array, x: Array) -> _Coefficients:

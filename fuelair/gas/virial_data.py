@@ -41,7 +41,7 @@ class VirialTable:
     c : (F, K) coefficients of the cube root of C [(m3/kmol)^(2/3)].
     exponents : (K,) of the basis (reference_temperature/T)**e.
     reference_temperature : of the basis [K].
-    kappa : constant of the closure [-].
+    closing : constant of the term that stands for all coefficients above the third [-].
     sources : one key a fluid, its reference equation of state.
     t_min, t_max : limits of the fits [K].
     """
@@ -52,7 +52,7 @@ class VirialTable:
     c: Array
     exponents: Array
     reference_temperature: float
-    kappa: float
+    closing: float
     sources: tuple[str, ...]
     t_min: float
     t_max: float
@@ -86,7 +86,7 @@ def virial_table(table: SpeciesTable, fuel_fluid: str | None = None) -> VirialTa
         c=_fixed(np.array([records[f]["c"] for f in fluids]) * CUBE_ROOT_VOLUME),
         exponents=_fixed(np.array(data["exponents"])),
         reference_temperature=float(data["T0"]),
-        kappa=float(data["kappa"]),
+        closing=float(data["lambda"]),
         sources=tuple(str(records[f]["source"]) for f in fluids),
         t_min=T_MIN,
         t_max=T_MAX,
