@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -13,14 +13,27 @@ from fuelair.case import Case
 from fuelair.charge import Charge
 from fuelair.cycle import air_standard, exergy, fuel_air, ladder
 from fuelair.cycle.breathing import Exhaust, solve_charge
-from fuelair.cycle.result import FREEZE_MODEL, MODELS, CycleResult
+from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
 from fuelair.errors import InputError, Problem, UnsolvedError
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.engine import Engine, Status
+from fuelair.gas.real_engine import RealGas
 from fuelair.gas.species import data_versions
 from fuelair.prepare import Prepared, prepare
 from fuelair.remarks import sources, verdict, warnings
 from fuelair.version import __version__
+
+
+@dataclass(frozen=True, slots=True)
+class Engines:
+    """The gas engine of the ideal models and that of the real-gas model."""
+
+    ideal: Engine
+    real: Engine
+
+    def of(self, model: str) -> Engine:
+        """Engine that runs a model."""
+        return self.real if model == REAL_MODEL else self.ideal
 
 
 def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None = None) -> Assessment:
@@ -29,7 +42,7 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
     Parameters
     ----------
     case : what the user wrote.
-    engine : gas engine; default the reference engine on Cantera.
+    engine : gas engine of the ideal-gas models; default the reference engine on Cantera.
     dry_air : composition of dry air; default `fuelair.air.dry_air`.
 
     Returns
@@ -41,13 +54,14 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
     InputError : the pressure limit lies below the headline model's compression pressure.
     UnsolvedError : the headline model has no solution; status and reason say why.
     """
-    gas: Engine = CanteraGas() if engine is None else engine
+    engines = Engines(CanteraGas() if engine is None else engine, RealGas())
     prepared = prepare(case, dry_air)
+    gas = engines.of(prepared.headline)
     charge = trap(prepared, gas)
     headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
     _refuse_unsolved(case, prepared, headline.result)
-    results = models(prepared, gas, headline)
-    return _gather(case, prepared, gas, headline, results)
+    results = models(prepared, engines, headline)
+    return _gather(case, prepared, engines, headline, results)
 
 
 def trap(prepared: Prepared, engine: Engine) -> Charge:
@@ -62,16 +76,22 @@ def trap(prepared: Prepared, engine: Engine) -> Charge:
     )
 
 
-def models(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[str, CycleResult]:
+def models(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> dict[str, CycleResult]:
     """Every model of the ladder on the headline's charge, crudest first; the freeze model last if it leads."""
     charge, settings = headline.charge, prepared.settings
     results = {
         "air-cold": air_standard.run("air-cold", air_standard.ColdAir(), charge, settings),
-        "air-variable": air_standard.run("air-variable", air_standard.variable_air(engine, charge.recipe.air), charge, settings),
+        "air-variable": air_standard.run(
+            "air-variable", air_standard.variable_air(engines.ideal, charge.recipe.air), charge, settings
+        ),
     }
     for model in MODELS[2:]:
-        same = model == prepared.headline
-        results[model] = headline.result if same else fuel_air.run(engine, charge, settings, model, headline=False).result
+        if model == prepared.headline:
+            results[model] = headline.result
+            continue
+        engine = engines.of(model)
+        own = charge if engine is engines.of(prepared.headline) else fuel_air.seen_by(engine, charge)
+        results[model] = fuel_air.run(engine, own, settings, model, headline=False).result
     if prepared.headline == FREEZE_MODEL:
         results[FREEZE_MODEL] = headline.result
     return results
@@ -115,9 +135,10 @@ def _refuse_unsolved(case: Case, prepared: Prepared, result: CycleResult) -> Non
 
 
 def _gather(
-    case: Case, prepared: Prepared, engine: Engine, headline: fuel_air.Run, results: dict[str, CycleResult]
+    case: Case, prepared: Prepared, engines: Engines, headline: fuel_air.Run, results: dict[str, CycleResult]
 ) -> Assessment:
     balance = exergy.balance(headline)
+    engine = engines.of(prepared.headline)
     engine_figures = outputs.engine_figures(prepared, headline, engine, case.engine.cylinders)
     exhaust_figures = outputs.exhaust_figures(prepared, headline, engine)
     flame = outputs.stoichiometric_flame_temperature(headline, engine)
@@ -128,7 +149,7 @@ def _gather(
         charge=headline.charge,
         headline=prepared.headline,
         results=results,
-        companions=companions(prepared, engine, headline),
+        companions=companions(prepared, engines.ideal, headline),
         ladder=tuple(ladder.steps(results)),
         overprediction=ladder.overprediction(results),
         exergy=balance,
@@ -136,7 +157,7 @@ def _gather(
         exhaust_figures=exhaust_figures,
         flame_temperature=flame,
         swept_volume=prepared.swept_volume,
-        engine=engine.name,
+        engine=engines.ideal.name,
         versions={
             "fuelair": __version__,
             "numpy": np.__version__,

@@ -13,7 +13,7 @@ from fuelair.charge import Recipe
 from fuelair.crank import kinematics
 from fuelair.cycle.breathing import DEFAULT_FREEZE, Settings
 from fuelair.cycle.geometry import Volumes
-from fuelair.cycle.result import FREEZE_MODEL, REFERENCE_MODEL
+from fuelair.cycle.result import FREEZE_MODEL, REAL_MODEL, REFERENCE_MODEL
 from fuelair.errors import InputError, Problem
 from fuelair.fuel import Fuel
 from fuelair.gas.engine import Array
@@ -131,6 +131,8 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
 
 def headline_model(case: Case) -> str:
     """Model id that the case's [gas] section makes the headline."""
+    if case.gas.model == "real":
+        return REAL_MODEL
     if case.gas.expansion == "frozen":
         return "fuel-air-frozen"
     return REFERENCE_MODEL if case.gas.freeze_temperature is None else FREEZE_MODEL

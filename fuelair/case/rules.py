@@ -162,6 +162,14 @@ def _gas(draft: Draft) -> Iterator[Problem]:
         yield Problem(message, key, draft.raw(key), hint='expansion = "equilibrium", or remove the key')
 
 
+def _real_gas(draft: Draft) -> Iterator[Problem]:
+    if draft.get("gas.model") != "real":
+        return
+    for key in draft.given("gas.freeze_temperature", *(["gas.expansion"] if draft.get("gas.expansion") == "frozen" else [])):
+        message = 'goes with gas.model = "ideal" only: the real-gas model expands in equilibrium'
+        yield Problem(message, key, draft.raw(key), hint='remove it, or model = "ideal"')
+
+
 def _ambient(draft: Draft) -> Iterator[Problem]:
     altitude, pressure, reference = "charge.altitude", "charge.ambient_pressure", "charge.reference"
     if draft.has(altitude) and draft.has(pressure):
@@ -290,7 +298,7 @@ def _as_fuel_sees_it(build: Callable[[], object]) -> Iterator[Problem]:
 
 
 RULES: Final[tuple[Rule, ...]] = (
-    _one_amount, _one_pair, _residual, _two_stroke, _heat_addition, _gas, _ambient, _evaporation, _recirculated,
+    _one_amount, _one_pair, _residual, _two_stroke, _heat_addition, _gas, _real_gas, _ambient, _evaporation, _recirculated,
     _water, _geometry, _timing,
     _one_fuel, _fuel_name, _blend, _own,
 )  # fmt: skip

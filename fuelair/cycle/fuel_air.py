@@ -26,8 +26,16 @@ KINDS: dict[str, Kind] = {
     "fuel-air-complete": Kind("complete", "frozen"),
     "fuel-air-frozen": Kind("equilibrium", "frozen"),
     "fuel-air-equilibrium": Kind("equilibrium", "equilibrium"),
+    "fuel-air-real-gas": Kind("equilibrium", "equilibrium"),
     FREEZE_MODEL: Kind("equilibrium", "equilibrium", freezes=True),
 }
+
+
+def seen_by(engine: Engine, charge: Charge) -> Charge:
+    """The same charge with its trapped state, at the same pressure and temperature, as another gas engine has it."""
+    trapped = charge.trapped
+    state = engine.state(charge.recipe.table, "TP", trapped.T, trapped.p, trapped.amounts)
+    return replace(charge, trapped=state, status=worst(charge.status, state.status))
 
 
 @dataclass(frozen=True, slots=True)

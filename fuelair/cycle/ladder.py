@@ -27,6 +27,7 @@ ASSUMPTION: dict[tuple[str, str], str] = {
     ("air-variable", "fuel-air-complete"): "real mixture burns instead of heat to air",
     ("fuel-air-complete", "fuel-air-frozen"): "dissociation at the peak",
     ("fuel-air-frozen", "fuel-air-equilibrium"): "recombination during expansion",
+    ("fuel-air-equilibrium", "fuel-air-real-gas"): "real gas instead of ideal",
 }
 
 

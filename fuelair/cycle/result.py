@@ -19,9 +19,11 @@ MODELS: tuple[str, ...] = (
     "fuel-air-complete",
     "fuel-air-frozen",
     "fuel-air-equilibrium",
+    "fuel-air-real-gas",
 )
 """Model ids in the order of the ladder, crudest first."""
 REFERENCE_MODEL = "fuel-air-equilibrium"
+REAL_MODEL = "fuel-air-real-gas"
 FREEZE_MODEL = "fuel-air-freeze-below"
 """Headline when a freeze temperature is given; beside the ladder, not part of it."""
 LEDGER_LIMIT = 1e-8

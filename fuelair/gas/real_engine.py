@@ -18,7 +18,7 @@ from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, GasStat
 from fuelair.gas.frozen import frozen_state
 from fuelair.gas.gibbs import Departure, equilibrate
 from fuelair.gas.mixture import Mixture, mix
-from fuelair.gas.real_gas import Residual, VirialTable, density, residual, virial_table
+from fuelair.gas.real_gas import Residual, VirialTable, density, residual, valid, virial_table
 from fuelair.gas.species import R, SpeciesTable
 
 TOLERANCE = 1e-14
@@ -40,7 +40,6 @@ class _Point:
     s: Array
     cv: Array
     cp: Array
-    dp_dv_v: Array
     ds_dv_v: Array
     sound: Array
 
@@ -123,7 +122,8 @@ def _fixed(
     point, iterations, failed = _search(mixture, gas, fractions, pair, x, y, T)
     status = np.zeros(len(x), np.int8)
     outside = (mixture.t_min > point.T) | (mixture.t_max < point.T) | ~(point.p <= PRESSURE_LIMIT_OF_DATA) | ~(point.p > 0.0)
-    status[outside | (point.dp_dv_v >= 0.0)] = Status.OUTSIDE_DATA
+    claimed = valid(gas, point.T, mixture.moles / point.v, fractions)
+    status[outside | ~claimed] = Status.OUTSIDE_DATA
     status[failed] = Status.NO_SOLUTION
     fields = {k: np.where(failed, np.nan, getattr(point, k)) for k in ("T", "p", "v", "u", "h", "s", "cp", "sound")}
     return GasState(amounts=amounts, status=status, iterations=iterations, **fields)
@@ -189,6 +189,5 @@ def _at(mixture: Mixture, gas: VirialTable, fractions: Array, T: Array, v: Array
         cp = cv + R * n * (r.Z + r.dZ_dT_T) ** 2 / slope
         sound = np.sqrt(np.abs(cp / cv * rt * slope))
     return _Point(
-        T=T, v=v, p=p, u=u, h=u + p * v, s=s, cv=cv, cp=cp, dp_dv_v=-p_ideal * slope,
-        ds_dv_v=R * n * (r.Z + r.dZ_dT_T), sound=sound,
+        T=T, v=v, p=p, u=u, h=u + p * v, s=s, cv=cv, cp=cp, ds_dv_v=R * n * (r.Z + r.dZ_dT_T), sound=sound,
     )  # fmt: skip

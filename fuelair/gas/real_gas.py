@@ -27,7 +27,7 @@ __all__ = ["DENSITY_LIMIT", "Residual", "VirialTable", "density", "fluids", "res
 
 DENSITY_LIMIT = 6.0
 """Molar density above which nothing is claimed [kmol/m3]."""
-STABILITY_LIMIT = 0.25
+STABILITY_LIMIT = 0.5
 """Least slope (dp/drho)/(R T) of a gas state that is claimed."""
 MAX_ITERATIONS = 60
 TOLERANCE = 1e-15
@@ -181,7 +181,8 @@ def _coefficients(vt: VirialTable, T: Array, x: Array) -> _Coefficients:
     with np.errstate(invalid="ignore", divide="ignore"):
         basis = np.exp(np.log(vt.reference_temperature / T)[:, None] * e)
     present = np.flatnonzero(y.any(axis=0))  # what is absent from the whole batch would only add zeros
-    rows = _in_order(y[:, present], vt.b[present].reshape(len(present), -1)).reshape(n, fluids, terms)
+    present = present if len(present) else np.zeros(1, np.intp)
+    rows = _in_order(y[:, present], vt.b[present].reshape(len(present), fluids * terms)).reshape(n, fluids, terms)
     b = _in_order(y[:, present], rows[:, present]) * basis
     c = _in_order(y[:, present], vt.c[present]) * basis
     first, second = -e, e * (e + 1.0)

@@ -24,6 +24,7 @@ SHORT = {
     "fuel-air-complete": "fuel-air,\ncomplete",
     "fuel-air-frozen": "fuel-air,\nfrozen",
     "fuel-air-equilibrium": "fuel-air,\nequilibrium",
+    "fuel-air-real-gas": "fuel-air,\nreal gas",
     "fuel-air-freeze-below": "fuel-air,\nfreeze below",
 }
 """Column heads of the models."""

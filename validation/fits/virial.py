@@ -1,6 +1,6 @@
 """Makes mechanisms/virial/virial.toml: virial coefficients of pure fluids and pairs, fitted in T.
 
-Run by hand, needs CoolProp and scipy's cousin numpy only:  python validation/fits/virial.py [output]
+Run by hand, needs CoolProp and numpy:  python validation/fits/virial.py [output]
 
 What is fitted, 250 to 3500 K (weakly down to 200 and up to 6000 K, so that the ends stay tame):
 
@@ -25,7 +25,7 @@ from itertools import combinations_with_replacement
 from pathlib import Path
 
 import CoolProp
-import CoolProp.CoolProp as CP
+import CoolProp.CoolProp as CP  # noqa: N817
 import numpy as np
 
 T0 = 400.0
@@ -76,7 +76,7 @@ FLUIDS = (
     Fluid("n-dodecane", "n-Dodecane", fuel=True),
     Fluid("toluene", "Toluene", fuel=True),
     Fluid("methanol", "Methanol", b_to=620.0, fuel=True),
-    Fluid("ethanol", "Ethanol", fuel=True),
+    Fluid("ethanol", "Ethanol", b_to=650.0, fuel=True),
     Fluid("dme", "DimethylEther", fuel=True),
     Fluid("methyl-oleate", "MethylOleate", fuel=True),
 )
@@ -211,6 +211,18 @@ def atoms(name: str) -> str:
     return "{ " + ", ".join(f"{k} = {v}" for k, v in counts.items()) + " }"
 
 
+def beyond(fluid: Fluid) -> tuple[str, str]:
+    """In words: what B and c follow where the equation of state is not followed."""
+    equation = "the equation itself, extrapolated: smooth, flat and of plausible size"
+    b = equation if np.isinf(fluid.b_to) else f"nitrogen's by corresponding states from {fluid.b_to:g} K, joined"
+    if fluid.name == "H2O":
+        return b, "air-water third coefficient over the air's to the power 2/3, at all temperatures"
+    if fluid.fuel:
+        return b, "nitrogen's by corresponding states at all temperatures, held flat below the critical temperature"
+    c = equation if np.isinf(fluid.c_to) else f"nitrogen's by corresponding states from {fluid.c_to:g} K, scaled to join"
+    return b, c + (f"; held flat below {fluid.c_flat_below:g} K" if fluid.c_flat_below else "")
+
+
 def row(values: list[float]) -> str:
     """Coefficients as TOML."""
     return "[" + ", ".join(f"{v:.10g}" if v else "0.0" for v in values) + "]"
@@ -224,6 +236,11 @@ def main(path: Path) -> None:
         "# b: B in cm3/mol, c: cube root of C in (cm3/mol)^(2/3); value = sum of coefficient * (T0/T)^exponent.",
         "# error_b, error_c: largest miss of the fit above 500 K (250 to 3500 K fitted, weakly 200 to 6000 K);",
         "# cold_b, cold_c: largest miss below 500 K over (magnitude + 10).",
+        "# source: key of the reference equation of state in CoolProp's list of references; equation_t_max [K]: its limit",
+        "# there; beyond_b, beyond_c: what stands in beyond. Volumes in cm3/mol, temperatures in K, masses in g/mol.",
+        "# Pairs: Harvey2007 = A. H. Harvey, P. H. Huang, Int. J. Thermophys. 28 (2007) 556, air-water from first",
+        "# principles, for all three gases of air; multi-fluid = CoolProp's Helmholtz mixture model, equimolar;",
+        "# corresponding-states = nitrogen's B with T_ij = sqrt(T_i T_j) sqrt(v_i v_j)^2/v_ij^2, v_ij^(1/3) the mean.",
         "# lambda: constant of the closing term; [mapping]: fluids that stand for species without data of their own.",
         "", "format = 1", f'made_with = "CoolProp {version}"', f"T0 = {T0}", f"exponents = {list(BASIS)}", f"lambda = {LAMBDA}",
         "", "[mapping]", *(f'{k} = "{v}"' for k, v in MAPPING.items()), "",
@@ -234,18 +251,21 @@ def main(path: Path) -> None:
         s = state(f.coolprop)
         tc, vc = critical(f)
         key = CP.get_BibTeXKey(f.coolprop, "EOS")
+        beyond_b, beyond_c = beyond(f)
         lines += [
-            "[[fluid]]", f'name = "{f.name}"', f"fuel = {str(f.fuel).lower()}", f"atoms = {atoms(f.coolprop)}", f'source = "{key}"',
+            "[[fluid]]", f'name = "{f.name}"', f"fuel = {str(f.fuel).lower()}", f"atoms = {atoms(f.coolprop)}",
+            f'source = "{key}"',
             f"equation_t_max = {s.Tmax():.6g}", f"molar_mass = {s.molar_mass() * 1e3:.6g}", f"critical_temperature = {tc:.7g}",
-            f"critical_volume = {vc:.6g}", f"b = {row(b)}", f"c = {row(c)}",
+            f"critical_volume = {vc:.6g}",
+            f'beyond_b = "{beyond_b}"', f'beyond_c = "{beyond_c}"', f"b = {row(b)}", f"c = {row(c)}",
             f"error_b = {eb:.2g}", f"cold_b = {cb:.2g}", f"error_c = {ec:.2g}", f"cold_c = {cc:.2g}", "",
         ]  # fmt: skip
     for f, g in combinations_with_replacement(FLUIDS, 2):
         if f is g or (f.fuel and g.fuel):
             continue
         b, eb, cb = fit(np.array([pair_b(f, g, T) for T in GRID]), 0.05, 0.002)
-        key = frozenset((f.name, g.name))
-        source = "multi-fluid" if key in MULTI_FLUID else "Harvey2007" if key in AIR_WATER else "corresponding-states"
+        names = frozenset((f.name, g.name))
+        source = "multi-fluid" if names in MULTI_FLUID else "Harvey2007" if names in AIR_WATER else "corresponding-states"
         lines += ["[[pair]]", f'of = ["{f.name}", "{g.name}"]', f'source = "{source}"', f"b = {row(b)}",
             f"error_b = {eb:.2g}", f"cold_b = {cb:.2g}", ""]  # fmt: skip
     path.write_text("\n".join(lines), encoding="utf-8")
