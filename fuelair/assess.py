@@ -7,18 +7,20 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from fuelair import outputs
-from fuelair.air import DryAir
+from fuelair.air import STANDARD_PRESSURE, DryAir
 from fuelair.assessment import Assessment
 from fuelair.case import Case
-from fuelair.charge import Charge
+from fuelair.charge import Charge, enters_as_liquid, supply_enthalpy
 from fuelair.cycle import air_standard, exergy, fuel_air, ladder
 from fuelair.cycle.breathing import Exhaust, solve_charge
 from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
 from fuelair.errors import InputError, Problem, UnsolvedError
+from fuelair.gas import virial_data
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.engine import Engine, Status
 from fuelair.gas.real_engine import RealGas
-from fuelair.gas.species import data_versions
+from fuelair.gas.second_opinion import compression_pressure
+from fuelair.gas.species import T_STANDARD, data_versions
 from fuelair.prepare import Prepared, prepare
 from fuelair.remarks import sources, verdict, warnings
 from fuelair.version import __version__
@@ -54,8 +56,9 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
     InputError : the pressure limit lies below the headline model's compression pressure.
     UnsolvedError : the headline model has no solution; status and reason say why.
     """
-    engines = Engines(CanteraGas() if engine is None else engine, RealGas())
     prepared = prepare(case, dry_air)
+    own_fluid = prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
+    engines = Engines(CanteraGas() if engine is None else engine, RealGas(own_fluid))
     gas = engines.of(prepared.headline)
     charge = trap(prepared, gas)
     headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
@@ -97,6 +100,19 @@ def models(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> dict
     return results
 
 
+def at_rest(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> CycleResult | None:
+    """The complete-combustion model with injected fuel at 298.15 K and no injection pressure; None if none is injected."""
+    charge = headline.charge
+    recipe, fuel = charge.recipe, prepared.fuel
+    if recipe.admission != "direct":
+        return None
+    pressure = fuel.liquid_reference_pressure if bool(enters_as_liquid(recipe)[0]) else STANDARD_PRESSURE
+    one = np.ones(len(recipe))
+    plain = replace(recipe, fuel_temperature=one * T_STANDARD, fuel_pressure=one * pressure)
+    resting = replace(fuel_air.seen_by(engines.ideal, charge), recipe=plain, fuel_enthalpy=supply_enthalpy(plain))
+    return fuel_air.run(engines.ideal, resting, prepared.settings, ladder.SUPPLY_MODEL, headline=False, points=False).result
+
+
 def companions(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[str, dict[str, CycleResult]]:
     """Air-standard cycles on another basis: the same cut-off ratio, and for rich charges heat limited by oxygen."""
     charge, settings = headline.charge, prepared.settings
@@ -134,6 +150,12 @@ def _refuse_unsolved(case: Case, prepared: Prepared, result: CycleResult) -> Non
     raise UnsolvedError(status.label, status.reason, prepared.headline)
 
 
+def _second_opinion(prepared: Prepared, charge: Charge) -> float | None:
+    if prepared.settings.compression_exponent is not None:
+        return None
+    return compression_pressure(charge.recipe.table, charge.trapped, prepared.settings.volumes.effective_compression)
+
+
 def _gather(
     case: Case, prepared: Prepared, engines: Engines, headline: fuel_air.Run, results: dict[str, CycleResult]
 ) -> Assessment:
@@ -150,12 +172,13 @@ def _gather(
         headline=prepared.headline,
         results=results,
         companions=companions(prepared, engines.ideal, headline),
-        ladder=tuple(ladder.steps(results)),
+        ladder=tuple(ladder.steps(results, at_rest=at_rest(prepared, engines, headline))),
         overprediction=ladder.overprediction(results),
         exergy=balance,
         engine_figures=engine_figures,
         exhaust_figures=exhaust_figures,
         flame_temperature=flame,
+        second_opinion=_second_opinion(prepared, headline.charge),
         swept_volume=prepared.swept_volume,
         engine=engines.ideal.name,
         versions={

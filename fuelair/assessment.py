@@ -39,6 +39,7 @@ class Assessment:
     exergy : balance of the headline model.
     engine_figures, exhaust_figures : weekly outputs; None where the case does not say enough.
     flame_temperature : stoichiometric flame at compression pressure [K], or None.
+    second_opinion : compression pressure by Peng-Robinson [Pa], None where it cannot say.
     swept_volume : of one cylinder [m3], or None.
     engine, versions : gas engine and versions used.
     warnings, sources, verdict : what to mind, what it rests on, one sentence.
@@ -57,6 +58,7 @@ class Assessment:
     engine_figures: dict[str, float | None]
     exhaust_figures: dict[str, float | None]
     flame_temperature: float | None
+    second_opinion: float | None
     swept_volume: float | None
     engine: str
     versions: dict[str, str]
@@ -217,6 +219,7 @@ class Assessment:
             "ladder": [{"from": s.lower, "to": s.upper, "assumption": s.assumption, **s.change} for s in self.ladder],
             "overprediction": self.overprediction,
             "exergy": self.exergy_figures(),
+            "second_opinion": {"peng_robinson_compression_pressure_Pa": self.second_opinion},
             "engine_figures": self.engine_figures,
             "exhaust": {**self.exhaust_figures, "stoichiometric_flame_temperature_K": self.flame_temperature},
             "ledger": {m: {k: _number(v[0]) for k, v in r.ledger.items()} for m, r in self.results.items()},

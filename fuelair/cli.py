@@ -188,19 +188,9 @@ def fuels(
     ] = None,
 ) -> None:
     """List the fuels, or show one fuel's card."""
-    from fuelair import fuel
+    from fuelair.report.fuels import fuel_card, fuel_list
 
-    console = _console()
-    if name is None:
-        _fuel_list(console)
-        return
-    table = RichTable(box=box.SIMPLE_HEAD, title=escape(name), title_justify="left", pad_edge=False)
-    for column in ("", "value", "standing", "source"):
-        table.add_column(column)
-    for row in fuel.card(fuel.load(name)):
-        source = escape(row.source) + (f" [dim]({escape(row.note)})[/dim]" if row.note else "")
-        table.add_row(escape(row.label), escape(row.value), row.standing, source)
-    console.print(table)
+    _table(_console(), fuel_list() if name is None else fuel_card(name))
 
 
 @app.command()
@@ -220,39 +210,6 @@ def validate(
     console.print(escape(book.summary(results)))
     if any(not r.passed and not r.skipped for r in results):
         raise typer.Exit(1)
-
-
-def _fuel_list(console: Console) -> None:
-    from fuelair import fuel
-
-    table = RichTable(box=box.SIMPLE_HEAD, pad_edge=False)
-    for column, justify in (
-        ("name", "left"),
-        ("", "left"),
-        ("LHV vapour\nMJ/kg", "right"),
-        ("LHV liquid\nMJ/kg", "right"),
-        ("kg air\nper kg", "right"),
-        ("H/C", "right"),
-        ("C, H, O\nmass %", "left"),
-    ):
-        table.add_column(column, justify=justify)  # type: ignore[arg-type]
-    for name in fuel.names():
-        f = fuel.load(name)
-        w, atoms = f.mass_fractions, dict(f.atoms)
-        liquid = f.lower_heating_value_liquid
-        ratio = f"{atoms.get('H', 0.0) / atoms['C']:.2f}" if atoms.get("C") else "-"
-        parts = ", ".join(f"{100 * w.get(e, 0.0):.1f}" for e in "CHO")
-        table.add_row(
-            name,
-            escape(f.title),
-            f"{f.lower_heating_value_vapour / 1e6:.2f}",
-            "-" if liquid is None else f"{liquid / 1e6:.2f}",
-            f"{f.stoichiometric_air_fuel_ratio(oxygen_mole_fraction=0.2095, air_molar_mass=28.965):.2f}",
-            ratio,
-            parts,
-        )
-    console.print(table)
-    console.print("fuelair fuels NAME shows the card with the source of every value.", style="dim")
 
 
 def _head(console: Console, a: Assessment) -> None:
@@ -296,7 +253,7 @@ def _grid(
     for i, name in enumerate(columns):
         numeric = i > 0 and any(columns) and sum(_is_number(row[i]) for row in body) * 2 > len(body)
         grid.add_column(
-            escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else "", vertical="bottom"
+            escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else ""
         )
     for row in body:
         grid.add_row(*(escape(cell) for cell in row))

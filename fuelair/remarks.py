@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from fuelair.assessment import Assessment
+from fuelair.cycle.result import REAL_MODEL, REFERENCE_MODEL
 from fuelair.gas.engine import Status
 from fuelair.gas.graphite import carbon_activity
 from fuelair.quantities import QUANTITIES, shown
@@ -25,8 +26,8 @@ RICH = 1e-10
 """Missing oxygen [kmol/kg] from which a charge counts as rich."""
 USUAL_RATIO = {"direct": (12.0, 24.0), "premixed": (6.0, 14.0), "port-liquid": (6.0, 14.0), "early-direct": (6.0, 14.0)}
 """Compression ratios in use, common practice."""
-DENSE = 2.0
-"""Trapped density over that of air at 1 bar and 300 K from which the ideal-gas warning is given."""
+REAL_GAS_MATTERS = 0.01
+"""Share of compression pressure from which the real gas is mentioned."""
 
 
 def verdict(a: Assessment) -> str:
@@ -105,12 +106,7 @@ def _validity(a: Assessment) -> Iterator[str]:
     r = a.case.engine.compression_ratio
     if not low <= r <= high:
         yield f"Compression ratio {r:g} is outside the usual {low:g} to {high:g} for this admission (common practice)."
-    density = 1.0 / float(a.charge.trapped.v[0]) / 1.16
-    if density > DENSE:
-        yield (
-            "Ideal-gas law: for air at r = 16 it puts compression pressure 2 % (1 bar), 7 % (3 bar) and 13 % (6 bar trapped) "
-            "below the reference equation of state (Lemmon et al. 2000); so is peak pressure wherever no limit holds it."
-        )
+    yield from _real_gas(a)
     for model, result in a.results.items():
         status = Status(int(result.status[0]))
         if status is not Status.OK:
@@ -119,6 +115,26 @@ def _validity(a: Assessment) -> Iterator[str]:
         "Ideal cycle: instant adiabatic combustion, no heat to the walls, no flow losses. It is a ceiling for work and "
         "efficiency; common practice puts real indicated efficiency at 0.80 to 0.90 of it."
     )
+
+
+def _real_gas(a: Assessment) -> Iterator[str]:
+    """What the ideal-gas law hides, and how far two real-gas models are apart."""
+    real, ideal = a.figures(REAL_MODEL), a.figures(REFERENCE_MODEL)
+    pressure, peak = real["compression_pressure_Pa"], real["peak_pressure_Pa"]
+    base, ideal_peak = ideal["compression_pressure_Pa"], ideal["peak_pressure_Pa"]
+    if pressure is None or peak is None or base is None or ideal_peak is None:
+        return
+    share, share_peak = pressure / base - 1.0, peak / ideal_peak - 1.0
+    if a.headline != REAL_MODEL and share > REAL_GAS_MATTERS:
+        yield (
+            f"Real gas: compression pressure is {share:.1%} above the ideal gas ({shown('compression_pressure_Pa', pressure)}), "
+            f'peak pressure {share_peak:.1%}. [gas] model = "real" makes that model the headline.'
+        )
+    if a.second_opinion is not None and share > REAL_GAS_MATTERS:
+        yield (
+            f"Second opinion: Peng-Robinson puts compression pressure at {shown('compression_pressure_Pa', a.second_opinion)}, "
+            f"{a.second_opinion / pressure - 1.0:+.1%} against {REAL_MODEL}."
+        )
 
 
 def sources(a: Assessment) -> list[Source]:
@@ -131,6 +147,8 @@ def sources(a: Assessment) -> list[Source]:
     reference = {"iso-3046": "iso3046", "iso-1585": "iso1585", "iacs-m28": "iacsm28"}.get(a.case.charge.reference or "")
     if reference:
         keys.append(reference)
-    if any(w.startswith("Ideal-gas law") for w in a.warnings) or float(a.charge.trapped.v[0]) * 1.16 * DENSE < 1.0:
-        keys.append("lemmon2000")
+    if a.status(REAL_MODEL) is Status.OK:
+        keys += ["virial", "lemmon2000"]
+    if a.second_opinion is not None:
+        keys.append("pengrobinson1976")
     return cite(*keys)

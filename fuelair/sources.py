@@ -36,6 +36,18 @@ _ALL = (
     Source("iacsm28", "IACS UR M28, reference conditions of marine engines", "from memory"),
     Source("freeze1740", "Exhaust composition leaves equilibrium near 1740 K (water-gas ratio 3.5)", "common practice"),
     Source(
+        "virial",
+        "Second and third virial coefficients of the pure fluids' reference equations of state, evaluated with "
+        "CoolProp 8.0.0 and fitted; fluids, references and fit errors in mechanisms/virial/virial.toml",
+        "computed",
+    ),
+    Source(
+        "pengrobinson1976",
+        "D.-Y. Peng, D. B. Robinson, Ind. Eng. Chem. Fundam. 15 (1976) 59, as implemented in Cantera; critical "
+        "constants as carried by the package chemicals 1.5.2",
+        "from memory",
+    ),
+    Source(
         "lemmon2000",
         "E. W. Lemmon, R. T. Jacobsen, S. G. Penoncello, D. G. Friend, J. Phys. Chem. Ref. Data 29 "
         "(2000) 331: thermodynamic properties of air, through CoolProp 8.0.0",

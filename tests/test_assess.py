@@ -61,7 +61,7 @@ def test_ladder_adds_up_and_overprediction_matches_the_table(demos: dict[str, fu
         assert whole == pytest.approx(table.loc[MODELS[-1], key] - table.loc[MODELS[0], key], rel=1e-12, abs=1e-9)
     cold = a.overprediction["air-cold"]["peak_temperature_K"]
     assert cold["absolute"] == pytest.approx(
-        table.loc["air-cold", "peak_temperature_K"] - table.loc[MODELS[-1], "peak_temperature_K"]
+        table.loc["air-cold", "peak_temperature_K"] - table.loc["fuel-air-equilibrium", "peak_temperature_K"]
     )
     assert cold["absolute"] > 300.0
 
@@ -208,6 +208,7 @@ def test_a_limit_between_the_models_fails_only_the_crude_one() -> None:
     ("changes", "headline"),
     [
         ({}, "fuel-air-equilibrium"),
+        ({"gas.model": "real"}, "fuel-air-real-gas"),
         ({"gas.expansion": "frozen"}, "fuel-air-frozen"),
         ({"gas.freeze_temperature": 2000.0}, "fuel-air-freeze-below"),
     ],
@@ -215,7 +216,7 @@ def test_a_limit_between_the_models_fails_only_the_crude_one() -> None:
 def test_the_gas_section_chooses_the_headline(changes: dict[str, object], headline: str) -> None:
     a = fuelair.assess(small().replace(changes))
     assert a.headline == headline
-    assert tuple(a.results)[:5] == MODELS
+    assert tuple(a.results)[:6] == MODELS
     if headline == "fuel-air-freeze-below":
         t = a.table()["release_temperature_K"]
         assert t["fuel-air-frozen"] < t[headline] < t["fuel-air-equilibrium"]

@@ -240,7 +240,7 @@ def test_json_schema_accepts_the_raw_demos(name: str) -> None:
         ("engine", "strokes_per_cycle", 3),
         ("engine", "no_such_key", 1),
         ("fuel", "admission", "port"),
-        ("gas", "model", "real"),
+        ("gas", "model", "reel"),
         ("burn", "duration", 40),
     ],
 )

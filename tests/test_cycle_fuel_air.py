@@ -13,11 +13,13 @@ from fuelair import resources
 from fuelair.air import DryAir, dry_air
 from fuelair.cycle import air_standard, fuel_air, ladder
 from fuelair.cycle.geometry import Volumes
-from fuelair.cycle.result import LEDGER_LIMIT, MODELS, closed
+from fuelair.cycle.result import LEDGER_LIMIT, MODELS, REAL_MODEL, closed
 from fuelair.gas.engine import Status
+from fuelair.gas.real_engine import RealGas
 
 DEMOS = ("workboat", "hydrogen-genset", "methanol-ferry", "gasoline-launch")
 FUEL_AIR = ("fuel-air-complete", "fuel-air-frozen", "fuel-air-equilibrium")
+REAL = RealGas()
 
 
 @pytest.fixture(scope="module")
@@ -32,6 +34,7 @@ def ladder_of(gas, charge, settings):
     }
     for model in FUEL_AIR:
         results[model] = fuel_air.run(gas, charge, settings, model, headline=model == FUEL_AIR[-1]).result
+    results[REAL_MODEL] = fuel_air.run(REAL, fuel_air.seen_by(REAL, charge), settings, REAL_MODEL, headline=False).result
     return results
 
 

@@ -35,7 +35,7 @@ def test_schema_refuses_a_missing_figure(boat: fuelair.Assessment) -> None:
 def test_models_table_shows_the_figures_in_bar_and_kelvin(boat: fuelair.Assessment) -> None:
     table = tables.models(boat)
     row = next(r for r in table.rows if r[0] == "Peak pressure [bar]")
-    assert row[1:] == ("200.00",) * 5
+    assert row[1:] == ("200.00",) * 6
     row = next(r for r in table.rows if r[0].startswith("Peak gas temperature"))
     for cell, model in zip(row[1:], boat.results, strict=True):
         assert float(cell) == pytest.approx(boat.figures(model)["peak_temperature_K"], abs=0.5)

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 from fuelair.cycle.result import MODELS, REFERENCE_MODEL, CycleResult
-from fuelair.gas.engine import Status
+from fuelair.gas.engine import Array, Status
 
 QUANTITIES: tuple[str, ...] = (
     "compression_temperature_K",
@@ -41,11 +41,20 @@ class Step:
     change: dict[str, float]
 
 
-def steps(results: dict[str, CycleResult], case: int = 0) -> list[Step]:
+SUPPLY_MODEL = "fuel-air-complete"
+"""Model at which the supply state of the fuel gets a line of its own."""
+SUPPLY_WORDS = "fuel as supplied, not at 298.15 K without injection pressure"
+SUPPLY_THRESHOLD = 1.0
+"""Change of peak temperature from which the supply state of the fuel gets its line [K]."""
+
+
+def steps(results: dict[str, CycleResult], case: int = 0, *, at_rest: CycleResult | None = None) -> list[Step]:
     """Steps between neighbouring models that are solved, for one case of the batch.
 
     They add up to the difference between the last and the first. A model that failed is left out
-    and its two steps become one, whose text joins the assumptions it drops.
+    and its two steps become one, whose text joins the assumptions it drops. ``at_rest`` is the complete
+    model with its fuel supplied at 298.15 K without injection pressure; where that moves the peak temperature
+    by more than `SUPPLY_THRESHOLD`, the step to that model is split in two.
     """
     there = [m for m in MODELS if m in results and results[m].status[case] == Status.OK]
     out = []
@@ -53,8 +62,20 @@ def steps(results: dict[str, CycleResult], case: int = 0) -> list[Step]:
         between = MODELS[MODELS.index(lower) : MODELS.index(upper) + 1]
         words = "; ".join(ASSUMPTION[pair] for pair in pairwise(between))
         a, b = results[lower].figures, results[upper].figures
-        out.append(Step(lower, upper, words, {k: float(b[k][case] - a[k][case]) for k in QUANTITIES}))
+        if upper == SUPPLY_MODEL and at_rest is not None and _matters(at_rest, results[upper], case):
+            out.append(Step(lower, upper, words, _change(a, at_rest.figures, case)))
+            lower, words, a = upper, SUPPLY_WORDS, at_rest.figures
+        out.append(Step(lower, upper, words, _change(a, b, case)))
     return out
+
+
+def _matters(at_rest: CycleResult, supplied: CycleResult, case: int) -> bool:
+    moved = supplied.figures["peak_temperature_K"][case] - at_rest.figures["peak_temperature_K"][case]
+    return bool(at_rest.status[case] == Status.OK and abs(moved) > SUPPLY_THRESHOLD)
+
+
+def _change(a: dict[str, Array], b: dict[str, Array], case: int) -> dict[str, float]:
+    return {k: float(b[k][case] - a[k][case]) for k in QUANTITIES}
 
 
 def overprediction(results: dict[str, CycleResult], case: int = 0) -> dict[str, dict[str, dict[str, float | None]]]:

@@ -7,7 +7,6 @@ given pair exactly, as with the ideal engine.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -140,11 +139,10 @@ def _search(
         T = np.where(finite, x, 1000.0)
     if pair == "ST":
         T = safe_y
-    volume: Callable[[Array], Array]
-    if pair[1] == "P":
-        volume = lambda t: n / density(gas, t, safe_y, fractions)  # noqa: E731
-    else:
-        volume = lambda t: safe_y  # noqa: E731
+
+    def volume(t: Array) -> Array:
+        return n / density(gas, t, safe_y, fractions) if pair[1] == "P" else safe_y
+
     log_v = np.log(n * R * T / 5e6)
     active, done = finite & (pair[0] != "T"), np.zeros(len(T), np.int32)
     previous = np.full(len(T), np.inf)

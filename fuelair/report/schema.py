@@ -46,7 +46,7 @@ def assessment_schema() -> dict[str, Any]:
         "models": _by_model(model, MODELS, models), "companions": {"type": "object"},
         "states": _by_model(_list(state), MODELS, models), "ladder": _list(step),
         "overprediction": _by_model({"type": "object", "additionalProperties": offset}, (), models),
-        "exergy": {"type": "object"}, "engine_figures": numbers, "exhaust": numbers,
+        "exergy": {"type": "object"}, "second_opinion": numbers, "engine_figures": numbers, "exhaust": numbers,
         "ledger": {"type": "object", "additionalProperties": numbers}, "warnings": _list(text), "sources": _list(source),
     }  # fmt: skip
     return {"$schema": DIALECT, "title": "fuelair assessment", **_record(parts)}
