@@ -102,7 +102,8 @@ def _departure(gas: VirialTable, T: Array, size: Array, amounts: Array, at_press
     whole = total(amounts)
     x = amounts / whole[:, None]
     rho = density(gas, T, size, x) if at_pressure else whole / size
-    r = residual(gas, T, rho, x)
+    with np.errstate(invalid="ignore"):
+        r = residual(gas, T, rho, x)
     cp = r.cv + (r.Z + r.dZ_dT_T) ** 2 / (r.Z + r.dZ_drho_rho) - 1.0
     if not at_pressure:
         return Departure(Z=r.Z, mu=r.mu, u=r.u, h=r.h, s=r.s, cv=r.cv, cp=cp)
@@ -121,7 +122,8 @@ def _fixed(
     point, iterations, failed = _search(mixture, gas, fractions, pair, x, y, T)
     status = np.zeros(len(x), np.int8)
     outside = (mixture.t_min > point.T) | (mixture.t_max < point.T) | ~(point.p <= PRESSURE_LIMIT_OF_DATA) | ~(point.p > 0.0)
-    claimed = valid(gas, point.T, mixture.moles / point.v, fractions)
+    with np.errstate(invalid="ignore"):
+        claimed = valid(gas, point.T, mixture.moles / point.v, fractions)
     status[outside | ~claimed] = Status.OUTSIDE_DATA
     status[failed] = Status.NO_SOLUTION
     fields = {k: np.where(failed, np.nan, getattr(point, k)) for k in ("T", "p", "v", "u", "h", "s", "cp", "sound")}
@@ -174,7 +176,8 @@ def _search(
 def _at(mixture: Mixture, gas: VirialTable, fractions: Array, T: Array, v: Array) -> _Point:
     """Every property at temperature and specific volume."""
     n = mixture.moles
-    r: Residual = residual(gas, T, n / v, fractions, potentials=False)
+    with np.errstate(invalid="ignore"):  # far outside the fits C may turn negative: the NaN becomes a status
+        r: Residual = residual(gas, T, n / v, fractions, potentials=False)
     cp0, h0, s0 = mixture.thermal(T)
     rt = R * n * T
     p_ideal = rt / v
