@@ -252,9 +252,7 @@ def _grid(
     body = [tuple(row) for row in rows]
     for i, name in enumerate(columns):
         numeric = i > 0 and any(columns) and sum(_is_number(row[i]) for row in body) * 2 > len(body)
-        grid.add_column(
-            escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else ""
-        )
+        grid.add_column(escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else "")
     for row in body:
         grid.add_row(*(escape(cell) for cell in row))
     console.print(Padding(grid, (0, 2)))

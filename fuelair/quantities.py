@@ -83,16 +83,16 @@ peak_pressure_Pa                   | p | p_peak  | Peak pressure
 release_temperature_K              | T | T_rel   | Temperature at release
 release_pressure_Pa                | p | p_rel   | Pressure at release
 exhaust_temperature_K              | T | T_exh   | Mean exhaust temperature
-blowdown_temperature_K             | T | T_bd    | Temperature of the gas left after blowdown
+blowdown_temperature_K             | T | T_bd    | Temperature left after blowdown
 stoichiometric_flame_temperature_K | T | T_st    | Stoichiometric flame temperature
 exhaust_dew_point_K                | T | T_dew   | Exhaust dew point
 cutoff_ratio                       | ratio | V3/V2 | Cut-off ratio
 residual_fraction                  | share | x_res | Residual fraction
-imep_gross_Pa                      | p | imep_g  | Gross indicated mean effective pressure
-imep_net_Pa                        | p | imep_n  | Net indicated mean effective pressure
-pmep_Pa                            | p | pmep    | Pumping mean effective pressure
+imep_gross_Pa                      | p | imep_g  | Gross imep
+imep_net_Pa                        | p | imep_n  | Net imep
+pmep_Pa                            | p | pmep    | Pumping mep (positive = loss)
 indicated_efficiency               | share | eta_i | Indicated efficiency
-isfc_kg_per_J                      | per energy | isfc | Indicated specific fuel consumption
+isfc_kg_per_J                      | per energy | isfc | Indicated fuel consumption
 co2_kg_per_J                       | per energy | co2 | CO2 per indicated work
 co2_kg_per_J_fuel                  | per heat | co2_f | CO2 per fuel energy
 work_J_per_kg                      | e | w       | Indicated work per kg trapped

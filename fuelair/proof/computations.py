@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from fuelair.proof import cycles, equilibria, flames, packages, substances
+from fuelair.proof import cycles, equilibria, flames, packages, realgas, substances
 from fuelair.proof.registry import COMPUTATIONS, LOOKUPS
 
-__all__ = ["COMPUTATIONS", "LOOKUPS", "cycles", "equilibria", "flames", "packages", "substances"]
+__all__ = ["COMPUTATIONS", "LOOKUPS", "cycles", "equilibria", "flames", "packages", "realgas", "substances"]

@@ -187,6 +187,13 @@ def charge(a: Assessment) -> Table:
             f"{a.ambient.relative_humidity:.0%} humid, {(f['humidity_ratio'] or 0.0) * 1e3:.1f} g water per kg dry air",
         ),
     ]
+    if f["water_added_per_trapped_mass"]:
+        rows.append(
+            (
+                "Liquid water added, per kg trapped",
+                f"{f['water_added_per_trapped_mass'] * 1e3:.1f} g, {a.case.charge.water_admission}",
+            )
+        )
     if f["fuel_pump_work_J_per_kg_fuel"]:
         rows.append(("Least fuel pump work (not deducted)", f"{f['fuel_pump_work_J_per_kg_fuel'] / 1e3:.1f} kJ per kg fuel"))
     return Table("The trapped charge", ("", ""), tuple(rows))
