@@ -24,7 +24,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fuelair.gas.engine import Array, Mask, total
+from fuelair.gas.engine import Array, Mask, total, weighted
 from fuelair.gas.species import R
 from fuelair.gas.virial_data import VirialTable, fluids, virial_table
 
@@ -38,8 +38,6 @@ MAX_ITERATIONS = 60
 TOLERANCE = 1e-15
 STALL = 1e-12
 """Relative change of density at which the search is done; the second when it no longer shrinks."""
-LOOP_FROM = 400
-"""Size of a result from which adding column by column is faster than one running sum; the bits are the same."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -181,15 +179,15 @@ def _least_rise(vt: VirialTable, B: Array, root: Array, rho: Array) -> Array:
 
 def _coefficients(vt: VirialTable, T: Array, x: Array) -> _Coefficients:
     n, fluids, terms = len(T), len(vt.fluids), len(vt.exponents)
-    y = _in_order(x, vt.mapping)
+    y = weighted(x, vt.mapping)
     e = vt.exponents
     with np.errstate(invalid="ignore", divide="ignore"):
         basis = np.exp(np.log(vt.reference_temperature / T)[:, None] * e)
     present = np.flatnonzero(y.any(axis=0))  # what is absent from the whole batch would only add zeros
     present = present if len(present) else np.zeros(1, np.intp)
-    rows = _in_order(y[:, present], vt.b[present].reshape(len(present), fluids * terms)).reshape(n, fluids, terms)
-    b = _in_order(y[:, present], rows[:, present]) * basis
-    c = _in_order(y[:, present], vt.c[present]) * basis
+    rows = weighted(y[:, present], vt.b[present].reshape(len(present), fluids * terms)).reshape(n, fluids, terms)
+    b = weighted(y[:, present], rows[:, present]) * basis
+    c = weighted(y[:, present], vt.c[present]) * basis
     first, second = -e, e * (e + 1.0)
     return _Coefficients(
         y=y, basis=basis, rows=rows,
@@ -200,17 +198,7 @@ def _coefficients(vt: VirialTable, T: Array, x: Array) -> _Coefficients:
 
 def _potentials(vt: VirialTable, k: _Coefficients, rho: Array, g: Array, gx_x: Array) -> Array:
     """Residual chemical potentials over R T of the species, (N, S), from those of the fluids."""
-    with_all = _in_order(k.basis, k.rows.transpose(0, 2, 1))
-    c = _in_order(k.basis, vt.c.T)
+    with_all = weighted(k.basis, k.rows.transpose(0, 2, 1))
+    c = weighted(k.basis, vt.c.T)
     mu = 2.0 * rho[:, None] * with_all + g[:, None] + gx_x[:, None] * (1.5 * c / k.Q[:, None] - 0.5)
-    return _in_order(mu, vt.mapping.T)
-
-
-def _in_order(amounts: Array, weights: Array) -> Array:
-    """Like `engine.weighted` with the same bits, for weights (S, K) or (N, S, K); large batches add column by column."""
-    if len(amounts) * weights.shape[-1] < LOOP_FROM:
-        return np.asarray(np.cumsum(amounts[:, :, None] * weights, axis=1)[:, -1])
-    out = amounts[:, 0, None] * weights[..., 0, :]
-    for i in range(1, amounts.shape[1]):
-        out += amounts[:, i, None] * weights[..., i, :]
-    return np.asarray(out)
+    return weighted(mu, vt.mapping.T)
