@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import tomllib
+from pathlib import Path
+
 import numpy as np
 import pytest
 
@@ -28,13 +31,22 @@ def fractions(composition, n=1):
     return np.tile(x / x.sum(), (n, 1))
 
 
+def filed():
+    """States of identities.toml at the molar density that an ideal gas has there."""
+    rows = tomllib.loads((Path(__file__).parent / "identities.toml").read_text(encoding="utf-8"))["state"]
+    rows = [r for r in rows if 250.0 <= r["temperature"] <= 4000.0 and set(r["amounts"]) <= set(TABLE.names)]
+    T = np.array([r["temperature"] for r in rows])
+    x = np.vstack([fractions(r["amounts"]) for r in rows]) + 1e-6
+    return T, np.array([r["pressure"] for r in rows]) / (R * T), x / x.sum(axis=1)[:, None]
+
+
 def states(n=60, seed=5):
-    """Temperatures, densities and compositions with every species present, 250 to 4000 K, to 8 kmol/m3."""
+    """The states of the file, and as many random ones with every species present, 250 to 4000 K, to 8 kmol/m3."""
     rng = np.random.default_rng(seed)
     T = np.exp(rng.uniform(np.log(250.0), np.log(4000.0), n))
     rho = np.exp(rng.uniform(np.log(1e-3), np.log(8.0), n))
     x = rng.dirichlet(np.full(len(TABLE), 0.4), n) + 1e-6
-    return T, rho, x / x.sum(axis=1)[:, None]
+    return tuple(np.concatenate(pair) for pair in zip(filed(), (T, rho, x / x.sum(axis=1)[:, None]), strict=True))
 
 
 def slope(f, size=STEP):
@@ -132,7 +144,7 @@ def test_bits_do_not_depend_on_the_batch():
 
 
 def test_a_bad_element_leaves_the_others_alone():
-    T, rho, x = states(n=4)
+    T, rho, x = (a[:4].copy() for a in states(n=4))
     p = np.full(4, 1e7)
     good = density(GAS, T, p, x)
     T[1], x[2] = np.nan, np.nan

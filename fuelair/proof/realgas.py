@@ -26,8 +26,8 @@ FLUIDS = {
     "H2": "Hydrogen",
 }
 """Names of the species in CoolProp."""
-LOW_DENSITY = 5.0
-"""Density at which a mixture shows its second virial coefficient alone [mol/m3]."""
+LOW_DENSITIES = (0.005, 0.1)
+"""Densities at which a mixture shows its second virial coefficient alone, and its second and third [kmol/m3]."""
 
 
 def _fractions(table: SpeciesTable, mixture: Mapping[str, float]) -> Array:
@@ -128,19 +128,27 @@ def multi_fluid_mixture(*, mixture: dict[str, float], T: float, rho: float, resu
     return Z if result == "Z" else pick(factors, result)
 
 
-@lookup("second-virial-difference")
-def second_virial_difference(*, mixture: dict[str, float], T: float, rho: float, result: str) -> float:
-    """What the second virial coefficients alone change in a fugacity coefficient, `real_mixture` less multi-fluid [-].
+@lookup("virial-difference")
+def virial_difference(*, mixture: dict[str, float], T: float, rho: float, result: str, order: int = 3) -> float:
+    """What virial coefficients up to ``order`` (2 or 3) change in a fugacity coefficient, `real_mixture` less multi-fluid [-].
 
-    Both residual potentials at a density so low that nothing else acts, carried on in proportion to density.
+    The difference of both residual potentials at densities so low that nothing else acts, carried on in
+    proportion to density, or to density and its square.
     """
-    table, low = build(), LOW_DENSITY / 1e3
-    own = residual(virial_table(table), one(T), one(low), _fractions(table, mixture)).mu[0, table.index(result)]
-    Z, factors = _multi_fluid(mixture, T, LOW_DENSITY)
-    change = float(own - np.log(factors[result] * Z)) * rho / low
-    ratio = real_mixture(mixture=mixture, T=T, rho=rho, result="Z")
+    table = build()
+    x, vt, j = _fractions(table, mixture), virial_table(table), table.index(result)
+
+    def per_density(low: float) -> float:
+        own = float(residual(vt, one(T), one(low), x).mu[0, j])
+        Z, factors = _multi_fluid(mixture, T, low * 1e3)
+        return (own - float(np.log(factors[result] * Z))) / low
+
+    second, both = per_density(LOW_DENSITIES[0]), per_density(LOW_DENSITIES[1])
+    slope = (both - second) / (LOW_DENSITIES[1] - LOW_DENSITIES[0]) if order == 3 else 0.0
+    change = (second + slope * rho) * rho
     Z, factors = _multi_fluid(mixture, T, rho * 1e3)
-    return factors[result] * float(np.expm1(change - np.log(ratio / Z)))
+    ratio = real_mixture(mixture=mixture, T=T, rho=rho, result="Z") / Z
+    return factors[result] * float(np.expm1(change - np.log(ratio)))
 
 
 @lookup("lemmon-air")
