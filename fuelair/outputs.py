@@ -43,6 +43,8 @@ def engine_figures(prepared: Prepared, run: Run, engine: Engine, cylinders: int)
         "fuel_mass_flow_kg_per_s": flow(float(charge.fuel_mass[0])),
         "exhaust_mass_flow_kg_per_s": flow(float(run.exhaust.leaving_mass[0]) + passing - fresh),
         "volumetric_efficiency": volumetric,
+        "effective_compression_ratio": float(volumes.effective_compression[0]),
+        "effective_expansion_ratio": float(volumes.effective_expansion[0]),
     }
 
 

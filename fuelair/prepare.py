@@ -57,42 +57,44 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
     ----------
     dry_air : composition of the dry air; default `fuelair.air.dry_air`.
     """
-    charge, engine, combustion = case.charge, case.engine, case.combustion
-    fuel = fuels.record(case.fuel)
+    charge, engine = case.charge, case.engine
     outside = ambient(case)
-    mixture = dry_air or air.dry_air()
+    recipe = _recipe(case, outside, dry_air or air.dry_air())
+    swept = _swept_volume(case)
+    return Prepared(
+        fuel=recipe.fuel,
+        ambient=outside,
+        recipe=recipe,
+        settings=_settings(case, recipe, swept),
+        headline=headline_model(case),
+        fuel_mass=None if charge.fuel_mass is None else _one(charge.fuel_mass),
+        cutoff_ratio=None if case.combustion.cutoff_ratio is None else _one(case.combustion.cutoff_ratio),
+        swept_volume=swept,
+        cycles_per_second=None if engine.speed is None else engine.speed * 2.0 / engine.strokes_per_cycle,
+        scavenge_ratio=charge.scavenge_ratio,
+    )
+
+
+def _recipe(case: Case, outside: Ambient, mixture: DryAir) -> Recipe:
+    charge, fuel = case.charge, fuels.record(case.fuel)
     from_intake = charge.intake_pressure is not None
     pressure, temperature = (
         (charge.intake_pressure, charge.intake_temperature) if from_intake else (charge.pressure, charge.temperature)
     )
-    humidity = air.humidity_ratio(outside.relative_humidity, outside.temperature, outside.pressure, mixture.molar_mass)
-    if not np.isfinite(humidity):
-        most = outside.pressure / float(air.water_saturation_pressure(outside.temperature))
-        raise InputError(
-            case.place(
-                Problem(
-                    "the water vapour alone would exceed the ambient pressure",
-                    "charge.relative_humidity",
-                    outside.relative_humidity,
-                    f"below {most:.1%} at {outside.temperature:g} K and {outside.pressure / 1e5:g} bar ambient",
-                    "check charge.ambient_temperature and charge.ambient_pressure",
-                )
-            )
-        )
     recipe = Recipe(
         table=build(fuel.vapour),
         fuel=fuel,
         air=mixture,
         admission=case.fuel.admission,
         equivalence_ratio=_one(START_PHI),
-        humidity=_one(float(humidity)),
+        humidity=_one(_humidity(case, outside, mixture)),
         pressure=_one(pressure),
         temperature=_one(temperature),
         from_intake=from_intake,
         exhaust_pressure=_one(charge.exhaust_pressure),
         egr_fraction=_one(charge.egr_fraction),
         egr_temperature=_one(charge.egr_temperature),
-        combustion_efficiency=_one(combustion.combustion_efficiency),
+        combustion_efficiency=_one(case.combustion.combustion_efficiency),
         fuel_temperature=_one(case.fuel.temperature),
         fuel_pressure=_one(case.fuel.pressure),
         evaporated_by_gas=_one(case.fuel.evaporated_by_gas),
@@ -101,31 +103,38 @@ def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
         water_at_combustion=charge.water_admission == "cylinder",
     )
     phi = equivalence_ratio(case, recipe.stoichiometric_air_fuel_ratio)
-    swept = _swept_volume(case)
-    freeze = case.gas.freeze_temperature
-    settings = Settings(
+    return recipe if phi is None else recipe.with_equivalence_ratio(_one(phi))
+
+
+def _humidity(case: Case, outside: Ambient, mixture: DryAir) -> float:
+    """Water vapour per dry air of the air outside [kg/kg]."""
+    ratio = air.humidity_ratio(outside.relative_humidity, outside.temperature, outside.pressure, mixture.molar_mass)
+    if np.isfinite(ratio):
+        return float(ratio)
+    most = outside.pressure / float(air.water_saturation_pressure(outside.temperature))
+    problem = Problem(
+        "the water vapour alone would exceed the ambient pressure",
+        "charge.relative_humidity",
+        outside.relative_humidity,
+        f"below {most:.1%} at {outside.temperature:g} K and {outside.pressure / 1e5:g} bar ambient",
+        "check charge.ambient_temperature and charge.ambient_pressure",
+    )
+    raise InputError(case.place(problem))
+
+
+def _settings(case: Case, recipe: Recipe, swept: float | None) -> Settings:
+    charge, freeze = case.charge, case.gas.freeze_temperature
+    return Settings(
         volumes=volumes(case),
-        heat_addition=combustion.heat_addition,
-        pressure_limit=_one(combustion.pressure_limit),
+        heat_addition=case.combustion.heat_addition,
+        pressure_limit=_one(case.combustion.pressure_limit),
         freeze_temperature=_one(DEFAULT_FREEZE if freeze is None else freeze),
         residual=None if charge.residual_fraction == "solve" else _one(float(charge.residual_fraction or 0.0)),
         exhaust_pressure=_one(charge.exhaust_pressure),
-        intake_pressure=_one(pressure),
+        intake_pressure=recipe.pressure,
         swept_volume=_one(swept),
-        four_stroke=engine.strokes_per_cycle == 4,
+        four_stroke=case.engine.strokes_per_cycle == 4,
         compression_exponent=case.gas.compression_exponent,
-    )
-    return Prepared(
-        fuel=fuel,
-        ambient=outside,
-        recipe=recipe if phi is None else recipe.with_equivalence_ratio(_one(phi)),
-        settings=settings,
-        headline=headline_model(case),
-        fuel_mass=None if charge.fuel_mass is None else _one(charge.fuel_mass),
-        cutoff_ratio=None if combustion.cutoff_ratio is None else _one(combustion.cutoff_ratio),
-        swept_volume=swept,
-        cycles_per_second=None if engine.speed is None else engine.speed * 2.0 / engine.strokes_per_cycle,
-        scavenge_ratio=charge.scavenge_ratio,
     )
 
 

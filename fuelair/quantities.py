@@ -104,6 +104,8 @@ net_indicated_power_W              | P | P_n     | Indicated power less pumping 
 air_mass_flow_kg_per_s             | flow | m_air  | Air mass flow
 fuel_mass_flow_kg_per_s            | flow | m_fuel | Fuel mass flow
 exhaust_mass_flow_kg_per_s         | flow | m_exh  | Exhaust mass flow from the cylinders
+effective_compression_ratio        | ratio | r_c  | Effective compression ratio
+effective_expansion_ratio          | ratio | r_e  | Effective expansion ratio
 volumetric_efficiency              | share | eta_v | Volumetric efficiency
 equivalence_ratio                  | ratio | phi   | Equivalence ratio (fresh fuel over fresh dry air)
 exhaust_equivalence_ratio          | ratio | phi_exh | Equivalence ratio of the exhaust by elements

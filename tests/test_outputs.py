@@ -65,7 +65,9 @@ def test_a_two_stroke_fires_twice_as_often():
 def test_without_geometry_or_speed_there_is_no_power():
     bare = fuelair.Case.from_dict({**LEAN, "engine": {"compression_ratio": 14.0}})
     e = fuelair.assess(bare).engine_figures
-    assert {k for k, v in e.items() if v is None} == set(e) - {"volumetric_efficiency"}
+    always = {"volumetric_efficiency", "effective_compression_ratio", "effective_expansion_ratio"}
+    assert {k for k, v in e.items() if v is None} == set(e) - always
+    assert e["effective_compression_ratio"] == pytest.approx(14.0, rel=1e-12)
     still = fuelair.Case.from_dict({**LEAN, "engine": {k: v for k, v in ENGINE.items() if k != "speed"}})
     e = fuelair.assess(still).engine_figures
     assert e["trapped_mass_kg"] > 0.0

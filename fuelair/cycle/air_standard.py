@@ -16,7 +16,7 @@ import numpy as np
 from fuelair.air import DryAir
 from fuelair.charge import Charge
 from fuelair.cycle.breathing import Settings
-from fuelair.cycle.result import CycleResult, Point, WorkParts, closed, performance
+from fuelair.cycle.result import CycleResult, Point, WorkParts, closed, performance, state_figures
 from fuelair.gas.engine import Array, Codes, Engine, GasState, Mask, Pair, Status, worst
 from fuelair.gas.species import build
 
@@ -108,49 +108,34 @@ def run(
     volumes = settings.volumes
     own = heat is not None or cutoff_ratio is not None
     q = charge.heat_added if heat is None else heat
-    one = np.ones(len(charge.recipe))
     start = state("TP", charge.trapped.T, charge.trapped.p)
     compressed, taken, exchanged = _compress(state, start, settings)
     burned, limited, q, status = _burn(state, compressed, settings, q, cutoff_ratio)
     release = state("SV", burned.s, start.v * volumes.exhaust_opening / volumes.intake_closing)
     remaining, leaving, stays, leaves, available = _exhaust(state, start, release, charge, settings)
     work = WorkParts(taken, np.where(limited, burned.p * (burned.v - compressed.v), 0.0), burned.u - release.u)
-    supplied = q if own else charge.fuel_mass * charge.lower_heating_value
+    is_limited = limited & (settings.heat_addition == "pressure-limited")
+    one = np.ones(len(charge.recipe))
+    points = [Point("trapped", start, one), Point("compressed", compressed, one)]
+    if is_limited.any():
+        heated = np.where(is_limited, compressed.T * settings.pressure_limit / compressed.p, np.nan)
+        points.append(Point("limit", state("TV", heated, compressed.v), one))
+    points += [Point("burned", burned, one), Point("release", release, one)]
+    points += [Point("blown-down", remaining, stays), Point("exhaust", leaving, leaves)]
+    energy = charge.fuel_mass * charge.lower_heating_value
+    supplied = q if own else energy
     figures = performance(
         trapped=start,
         volumes=volumes,
         work=work,
-        fuel_mass=charge.fuel_mass * (supplied / (charge.fuel_mass * charge.lower_heating_value)),
+        fuel_mass=charge.fuel_mass * supplied / energy,
         fuel_energy=supplied,
         intake_pressure=settings.intake_pressure,
         exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
     )
-    figures |= {
-        "compression_temperature_K": compressed.T,
-        "compression_pressure_Pa": compressed.p,
-        "peak_temperature_K": burned.T,
-        "peak_pressure_Pa": burned.p,
-        "release_temperature_K": release.T,
-        "release_pressure_Pa": release.p,
-        "exhaust_temperature_K": leaving.T,
-        "blowdown_temperature_K": remaining.T,
-        "cutoff_ratio": np.where(limited, burned.v / compressed.v, 1.0),
-        "residual_fraction": stays,
-        "heat_added_J_per_kg": q,
-        "blowdown_energy_J_per_kg": available,
-    }
-    points = [Point("trapped", start, one, start.v), Point("compressed", compressed, one, compressed.v)]
-    is_limited = limited & (settings.heat_addition == "pressure-limited")
-    if is_limited.any():
-        at = state("TV", np.where(is_limited, compressed.T * settings.pressure_limit / compressed.p, np.nan), compressed.v)
-        points.append(Point("limit", at, one, at.v))
-    points += [
-        Point("burned", burned, one, burned.v),
-        Point("release", release, one, release.v),
-        Point("blown-down", remaining, stays, stays * remaining.v),
-        Point("exhaust", leaving, leaves, leaves * leaving.v),
-    ]
+    cutoff = np.where(limited, burned.v / compressed.v, 1.0)
+    figures |= state_figures(tuple(points), cutoff_ratio=cutoff, heat_added=q, blowdown=available)
     scale = np.maximum(np.abs(q), 1e3)
     ledger = {
         "energy_closed_part": (start.u + exchanged + q - release.u + work.compression - work.burning - work.expansion) / scale

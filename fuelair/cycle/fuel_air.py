@@ -8,7 +8,7 @@ import numpy as np
 
 from fuelair.charge import Charge
 from fuelair.cycle.breathing import Exhaust, Settings, exhaust
-from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, performance
+from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, performance, state_figures
 from fuelair.cycle.stages import Burn, Compression, Expansion, burn, compress, end_of_constant_volume, expand
 from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, total, weighted, worst
 
@@ -93,44 +93,26 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
         shifting=kind.expansion == "equilibrium",
     )
     work = WorkParts(compression.work, burned.expansion_work * mass, mass * (burned.state.u - release.u))
-    energy = charge.fuel_mass * charge.lower_heating_value
+    limited = burned.limited & (settings.heat_addition == "pressure-limited")
+    named = _points(engine, charge, settings, compression, burned, release, out, kind, limited if points else None)
     figures = performance(
         trapped=charge.trapped,
         volumes=volumes,
         work=work,
         fuel_mass=charge.fuel_mass,
-        fuel_energy=energy,
+        fuel_energy=charge.fuel_mass * charge.lower_heating_value,
         intake_pressure=settings.intake_pressure,
         exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
-    ) | _state_figures(charge, compression, burned, release, out)
+    ) | state_figures(named, cutoff_ratio=burned.volume_ratio, heat_added=charge.heat_added, blowdown=out.blowdown_work)
     ledger = _ledger(engine, charge, compression, burned, release, out, settings, headline)
     status = worst(
         charge.status, compression.state.status, burned.status, release.status, out.remaining.status, out.leaving.status
     )
-    limited = burned.limited & (settings.heat_addition == "pressure-limited")
-    named = _points(engine, charge, settings, compression, burned, release, out, kind, limited if points else None)
     result = CycleResult(
         model, table, named, figures, ledger, {"limited": limited, "back-flow": out.back_flow}, closed(status, ledger)
     )
     return Run(charge, compression, burned, release, out, result)
-
-
-def _state_figures(charge: Charge, compression: Compression, burned: Burn, release: GasState, out: Exhaust) -> dict[str, Array]:
-    return {
-        "compression_temperature_K": compression.state.T,
-        "compression_pressure_Pa": compression.state.p,
-        "peak_temperature_K": burned.state.T,
-        "peak_pressure_Pa": burned.state.p,
-        "release_temperature_K": release.T,
-        "release_pressure_Pa": release.p,
-        "exhaust_temperature_K": out.leaving.T,
-        "blowdown_temperature_K": out.remaining.T,
-        "cutoff_ratio": burned.volume_ratio,
-        "residual_fraction": out.remaining_mass,
-        "heat_added_J_per_kg": charge.heat_added,
-        "blowdown_energy_J_per_kg": out.blowdown_work,
-    }
 
 
 def _points(
@@ -147,8 +129,8 @@ def _points(
     table, one = charge.recipe.table, np.ones(len(charge.recipe))
     mass = one + charge.injected
     named = [
-        Point("trapped", charge.trapped, one, charge.trapped.v),
-        Point("compressed", compression.state, one, compression.state.v),
+        Point("trapped", charge.trapped, one),
+        Point("compressed", compression.state, one),
     ]
     if limited is not None and limited.any():
         at, share = end_of_constant_volume(
@@ -162,13 +144,12 @@ def _points(
             limited=limited,
             chemistry=kind.chemistry,
         )
-        present = one + charge.injected * share
-        named.append(Point("limit", at, present, present * at.v))
+        named.append(Point("limit", at, one + charge.injected * share))
     named += [
-        Point("burned", burned.state, mass, mass * burned.state.v),
-        Point("release", release, mass, mass * release.v),
-        Point("blown-down", out.remaining, out.remaining_mass, out.remaining_mass * out.remaining.v),
-        Point("exhaust", out.leaving, out.leaving_mass, out.leaving_mass * out.leaving.v),
+        Point("burned", burned.state, mass),
+        Point("release", release, mass),
+        Point("blown-down", out.remaining, out.remaining_mass),
+        Point("exhaust", out.leaving, out.leaving_mass),
     ]
     return tuple(named)
 

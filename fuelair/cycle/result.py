@@ -32,12 +32,16 @@ LEDGER_LIMIT = 1e-8
 
 @dataclass(frozen=True, slots=True)
 class Point:
-    """A named state: gas state, mass and volume per kg trapped (N,)."""
+    """A named state: gas state, and its mass per kg trapped (N,)."""
 
     name: str
     state: GasState
     mass: Array
-    volume: Array
+
+    @property
+    def volume(self) -> Array:
+        """Volume per kg trapped [m3/kg]."""
+        return np.asarray(self.mass * self.state.v)
 
 
 @dataclass(frozen=True, slots=True)
@@ -123,6 +127,26 @@ def performance(
             "indicated_efficiency": gross / fuel_energy,
             "isfc_kg_per_J": fuel_mass / gross,
         }
+
+
+def state_figures(points: tuple[Point, ...], *, cutoff_ratio: Array, heat_added: Array, blowdown: Array) -> dict[str, Array]:
+    """Figures read off the named states (N,); heat and blowdown energy in J/kg trapped."""
+    at = {p.name: p for p in points}
+    compressed, burned, release = (at[k].state for k in ("compressed", "burned", "release"))
+    return {
+        "compression_temperature_K": compressed.T,
+        "compression_pressure_Pa": compressed.p,
+        "peak_temperature_K": burned.T,
+        "peak_pressure_Pa": burned.p,
+        "release_temperature_K": release.T,
+        "release_pressure_Pa": release.p,
+        "exhaust_temperature_K": at["exhaust"].state.T,
+        "blowdown_temperature_K": at["blown-down"].state.T,
+        "cutoff_ratio": cutoff_ratio,
+        "residual_fraction": at["blown-down"].mass,
+        "heat_added_J_per_kg": heat_added,
+        "blowdown_energy_J_per_kg": blowdown,
+    }
 
 
 def closed(status: Codes, ledger: dict[str, Array]) -> Codes:

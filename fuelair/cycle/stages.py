@@ -18,7 +18,6 @@ from fuelair.gas.species import FUEL, UNBURNED, SpeciesTable
 from fuelair.roots import bracketed
 
 HeatAddition = Literal["constant-volume", "constant-pressure", "pressure-limited"]
-HEAT_ADDITIONS: tuple[HeatAddition, ...] = ("constant-volume", "constant-pressure", "pressure-limited")
 Expansion = Literal["equilibrium", "frozen"]
 
 SPLIT_TOLERANCE = 1e-10

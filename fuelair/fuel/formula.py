@@ -12,7 +12,6 @@ ATOMIC_WEIGHT = {"C": 12.011, "H": 1.008, "O": 15.999, "N": 14.007, "S": 32.06}
 """kg/kmol, IUPAC abridged standard atomic weights; the gas data of Cantera 3.2.0 carry the same, so mass closes."""
 
 OXYGEN_MOLAR_MASS = 2.0 * ATOMIC_WEIGHT["O"]
-WATER_MOLAR_MASS = 2.0 * ATOMIC_WEIGHT["H"] + ATOMIC_WEIGHT["O"]
 
 FORMATION_CARBON_DIOXIDE = -393.51e6
 FORMATION_WATER_VAPOUR = -241.826e6

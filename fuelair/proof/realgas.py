@@ -26,8 +26,8 @@ FLUIDS = {
     "H2": "Hydrogen",
 }
 """Names of the species in CoolProp."""
-LOW_DENSITIES = (0.005, 0.1)
-"""Densities at which a mixture shows its second virial coefficient alone, and its second and third [kmol/m3]."""
+LOW_DENSITY = 0.3
+"""Density at which a mixture shows little but its second virial coefficient [kmol/m3]; below 0.1 CoolProp's own is noise."""
 
 
 def _fractions(table: SpeciesTable, mixture: Mapping[str, float]) -> Array:
@@ -128,24 +128,17 @@ def multi_fluid_mixture(*, mixture: dict[str, float], T: float, rho: float, resu
     return Z if result == "Z" else pick(factors, result)
 
 
-@lookup("virial-difference")
-def virial_difference(*, mixture: dict[str, float], T: float, rho: float, result: str, order: int = 3) -> float:
-    """What virial coefficients up to ``order`` (2 or 3) change in a fugacity coefficient, `real_mixture` less multi-fluid [-].
+@lookup("second-virial-difference")
+def second_virial_difference(*, mixture: dict[str, float], T: float, rho: float, result: str) -> float:
+    """What second virial coefficients change in a fugacity coefficient, `real_mixture` less multi-fluid [-].
 
-    The difference of both residual potentials at densities so low that nothing else acts, carried on in
-    proportion to density, or to density and its square.
+    The difference of both residual potentials at a low density, carried on in proportion to density.
     """
     table = build()
-    x, vt, j = _fractions(table, mixture), virial_table(table), table.index(result)
-
-    def per_density(low: float) -> float:
-        own = float(residual(vt, one(T), one(low), x).mu[0, j])
-        Z, factors = _multi_fluid(mixture, T, low * 1e3)
-        return (own - float(np.log(factors[result] * Z))) / low
-
-    second, both = per_density(LOW_DENSITIES[0]), per_density(LOW_DENSITIES[1])
-    slope = (both - second) / (LOW_DENSITIES[1] - LOW_DENSITIES[0]) if order == 3 else 0.0
-    change = (second + slope * rho) * rho
+    x, j = _fractions(table, mixture), table.index(result)
+    own = float(residual(virial_table(table), one(T), one(LOW_DENSITY), x).mu[0, j])
+    Z, factors = _multi_fluid(mixture, T, LOW_DENSITY * 1e3)
+    change = (own - float(np.log(factors[result] * Z))) * rho / LOW_DENSITY
     Z, factors = _multi_fluid(mixture, T, rho * 1e3)
     ratio = real_mixture(mixture=mixture, T=T, rho=rho, result="Z") / Z
     return factors[result] * float(np.expm1(change - np.log(ratio)))

@@ -211,6 +211,8 @@ def engine(a: Assessment) -> Table:
             "fuel_mass_flow_kg_per_s",
             "exhaust_mass_flow_kg_per_s",
             "volumetric_efficiency",
+            "effective_compression_ratio",
+            "effective_expansion_ratio",
         )
     ]
     trapped, fuel = e["trapped_mass_kg"], e["fuel_mass_per_cycle_kg"]
