@@ -10,7 +10,7 @@ from fuelair import outputs
 from fuelair.air import STANDARD_PRESSURE, DryAir
 from fuelair.assessment import Assessment
 from fuelair.case import Case
-from fuelair.charge import Charge, enters_as_liquid, supply_enthalpy
+from fuelair.charge import COLDEST, Charge, enters_as_liquid, supply_enthalpy
 from fuelair.cycle import air_standard, exergy, fuel_air, ladder
 from fuelair.cycle.breathing import Exhaust, solve_charge
 from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
@@ -56,13 +56,16 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
     InputError : the pressure limit lies below the headline model's compression pressure.
     UnsolvedError : the headline model has no solution; status and reason say why.
     """
+    if not isinstance(case, Case):
+        what = "a Case, e.g. fuelair.Case.read(path) or fuelair.Case.from_dict(tables)"
+        raise InputError(Problem("assess takes a case", "case", type(case).__name__, what))
     prepared = prepare(case, dry_air)
     own_fluid = prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
     engines = Engines(CanteraGas() if engine is None else engine, RealGas(own_fluid))
     gas = engines.of(prepared.headline)
     charge = trap(prepared, gas)
     headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
-    _refuse_unsolved(case, prepared, headline.result)
+    _refuse_unsolved(case, prepared, headline)
     results = models(prepared, engines, headline)
     return _gather(case, prepared, engines, headline, results)
 
@@ -133,7 +136,8 @@ def companions(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> di
     return out
 
 
-def _refuse_unsolved(case: Case, prepared: Prepared, result: CycleResult) -> None:
+def _refuse_unsolved(case: Case, prepared: Prepared, headline: fuel_air.Run) -> None:
+    result = headline.result
     status = Status(int(result.status[0]))
     if status is Status.OK:
         return
@@ -147,7 +151,21 @@ def _refuse_unsolved(case: Case, prepared: Prepared, result: CycleResult) -> Non
             "raise the limit, or lower compression_ratio or the trapped pressure",
         )
         raise InputError(case.place(problem))
-    raise UnsolvedError(status.label, status.reason, prepared.headline)
+    raise UnsolvedError(status.label, status.reason + _detail(status, headline.charge), prepared.headline)
+
+
+def _detail(status: Status, charge: Charge) -> str:
+    """Numbers behind a status of the charge, as a further sentence."""
+    recipe, T = charge.recipe, float(charge.trapped.T[0])
+    if status is Status.VAPOUR_ABOVE_SATURATION:
+        wet, fuel = float(charge.water_saturation_ratio[0]), float(charge.saturation_ratio[0])
+        name, ratio = ("water", wet) if wet > max(fuel, 1.0) else (recipe.fuel.name, fuel)
+        if not T > COLDEST:
+            return f". Here evaporation would cool the charge below {COLDEST:.0f} K"
+        return f". Here the charge is at {T:.0f} K and {name} vapour at {ratio:.3g} times its saturation pressure"
+    if status in (Status.CARBON_OVER_OXYGEN, Status.OXYGEN_BELOW_CARBON_MONOXIDE):
+        return f". Here the equivalence ratio is {float(recipe.equivalence_ratio[0]):.4g}"
+    return ""
 
 
 def _second_opinion(prepared: Prepared, charge: Charge) -> float | None:

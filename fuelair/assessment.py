@@ -6,14 +6,16 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from fuelair.air import Ambient
+from fuelair.air import STANDARD_PRESSURE, Ambient
 from fuelair.case import Case
 from fuelair.charge import Charge, enters_as_liquid
 from fuelair.cycle.exergy import ExergyBalance
 from fuelair.cycle.ladder import Step
 from fuelair.cycle.result import CycleResult
+from fuelair.errors import InputError, Problem
 from fuelair.fuel import Fuel
 from fuelair.gas.engine import Status
+from fuelair.gas.species import R
 from fuelair.sources import Source
 
 if TYPE_CHECKING:
@@ -67,14 +69,23 @@ class Assessment:
     verdict: str
 
     def figures(self, model: str | None = None) -> dict[str, float | None]:
-        """Figures of a model (default the headline), None where it was not solved."""
-        result = self.results[model or self.headline]
+        """Figures of a model (default the headline), None where it was not solved.
+
+        Raises InputError for a model that is not there.
+        """
+        result = self._result(model)
         good = result.status[0] == Status.OK
         return {k: _number(v[0]) if good else None for k, v in result.figures.items()}
 
     def status(self, model: str | None = None) -> Status:
         """How a model ended."""
-        return Status(int(self.results[model or self.headline].status[0]))
+        return Status(int(self._result(model).status[0]))
+
+    def _result(self, model: str | None) -> CycleResult:
+        name = self.headline if model is None else model
+        if name not in self.results:
+            raise InputError(Problem("no such model", "model", name, ", ".join(self.results)))
+        return self.results[name]
 
     def table(self) -> pd.DataFrame:
         """Models as rows, quantities (SI, unit in the name) as columns, NaN where not solved."""
@@ -92,7 +103,7 @@ class Assessment:
 
     def to_states(self, model: str | None = None) -> list[dict[str, Any]]:
         """Named states of a model (default the headline) as dictionaries, SI; mole fractions where there are any."""
-        result = self.results[model or self.headline]
+        result = self._result(model)
         if self.charge.status[0] != Status.OK:
             return []
         scale = None if self.swept_volume is None else self.engine_figures["trapped_mass_kg"]
@@ -164,14 +175,19 @@ class Assessment:
 
     @property
     def pump_work(self) -> float | None:
-        """Least work to press the liquid fuel from its reference pressure to the injector [J/kg fuel]; None for gas.
+        """Least work to press the fuel to the injector [J/kg fuel]; None if it is not injected.
 
-        v (p - p0); a ledger line of its own, not deducted from the indicated efficiency.
+        v (p - p0) for a liquid, R T ln(p/p0) for a gas, from its reference pressure or one atmosphere; a line of
+        its own, not deducted from the indicated efficiency.
         """
-        volume = self.fuel.liquid_volume
-        if not self.liquid_fuel or volume is None:
+        recipe, volume = self.charge.recipe, self.fuel.liquid_volume
+        pressure = float(recipe.fuel_pressure[0])
+        if recipe.admission == "premixed":
             return None
-        return max(volume * (float(self.charge.recipe.fuel_pressure[0]) - self.fuel.liquid_reference_pressure), 0.0)
+        if self.liquid_fuel and volume is not None:
+            return max(volume * (pressure - self.fuel.liquid_reference_pressure), 0.0)
+        work = R / self.fuel.molar_mass * float(recipe.fuel_temperature[0]) * math.log(pressure / STANDARD_PRESSURE)
+        return max(work, 0.0)
 
     def exergy_figures(self) -> dict[str, Any]:
         """Exergy balance in J per kg trapped, and the fuel's exergy basis."""

@@ -6,13 +6,14 @@ Exit codes: 0 done, 1 some rows failed, 2 the input is wrong, 3 could not be sol
 
 from __future__ import annotations
 
+import io
 import json
 import os
 import sys
 import traceback
 from collections.abc import Iterable
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import IO, TYPE_CHECKING, Annotated, Literal, cast
 
 import typer
 from rich import box
@@ -28,9 +29,11 @@ if TYPE_CHECKING:
     from fuelair.assessment import Assessment
     from fuelair.report.tables import Table
 
-NARROWEST, WIDEST, PIPED = 60, 150, 120
-"""Width of the output in characters: least, most, and when it is not a terminal."""
+NARROWEST, PIPED = 110, 120
+"""Width of the output in characters: the least that cuts no table, and when it is not a terminal."""
 INTERRUPTED = 130
+LONGEST_CELL = 22
+"""Width up to which a number or a word of a head is never cut."""
 TRACEBACK_VARIABLE = "FUELAIR_TRACEBACK"
 
 app = typer.Typer(
@@ -57,7 +60,10 @@ def main() -> None:
             raise
         _complain("interrupted; nothing half written")
         raise SystemExit(INTERRUPTED) from None
-    except BrokenPipeError:
+    except OSError as error:
+        if not isinstance(error, BrokenPipeError):
+            _complain(f"cannot write standard output: {error.strerror or error}")
+            raise SystemExit(2) from None
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         raise SystemExit(0) from None
     except Exception as error:
@@ -100,11 +106,13 @@ def assess(
     from fuelair import assess as run
     from fuelair.report import files, tables
 
+    if out is not None and not str(out).strip("."):
+        raise InputError(Problem("names no folder of its own", "--out", str(out), "a folder", "--out results"))
     result = run(Case.read(case))
     to_stdout = str(json_file) == "-"
     if json_file is not None and not to_stdout:
-        files.write_text(json_file, files.as_json(result))
-    written = files.write_folder(result, out) if out is not None else []
+        files.write_text(json_file, files.as_json(result), keep=case)
+    written = files.write_folder(result, out, keep=case) if out is not None else []
     if to_stdout:
         print(files.as_json(result), end="")
         return
@@ -252,7 +260,11 @@ def _grid(
     body = [tuple(row) for row in rows]
     for i, name in enumerate(columns):
         numeric = i > 0 and any(columns) and sum(_is_number(row[i]) for row in body) * 2 > len(body)
-        grid.add_column(escape(name), justify="right" if numeric else "left", style="bold" if i == stressed else "")
+        words = [w for line in name.splitlines() for w in line.split()]
+        least = max([len(w) for w in words] + [len(row[i]) for row in body if numeric], default=1)
+        justify: Literal["right", "left"] = "right" if numeric else "left"
+        style = "bold" if i == stressed else ""
+        grid.add_column(escape(name), justify=justify, style=style, min_width=min(least, LONGEST_CELL), overflow="fold")
     for row in body:
         grid.add_row(*(escape(cell) for cell in row))
     console.print(Padding(grid, (0, 2)))
@@ -279,14 +291,30 @@ def _list(console: Console, title: str, items: Iterable[str]) -> None:
     console.print()
 
 
+class _Trimmed(io.TextIOBase):
+    """Standard output without the blanks that tables leave at line ends."""
+
+    def __init__(self) -> None:
+        self.rest = ""
+
+    def write(self, text: str) -> int:
+        *lines, self.rest = (self.rest + text).split("\n")
+        sys.stdout.writelines(line.rstrip() + "\n" for line in lines)
+        return len(text)
+
+    def flush(self) -> None:
+        sys.stdout.flush()
+
+
 def _console(*, stderr: bool = False) -> Console:
-    stream = sys.stderr if stderr else sys.stdout
-    console = Console(stderr=stderr, highlight=False, soft_wrap=False)
-    if not stream.isatty():
-        return Console(stderr=stderr, highlight=False, width=PIPED)
-    if not NARROWEST <= console.width <= WIDEST:
-        return Console(stderr=stderr, highlight=False, width=min(max(console.width, NARROWEST), WIDEST))
-    return console
+    if stderr:
+        return Console(stderr=True, highlight=False)
+    if sys.stdout.isatty():
+        console = Console(highlight=False)
+        return console if console.width >= NARROWEST else Console(highlight=False, width=NARROWEST)
+    asked = os.environ.get("COLUMNS", "")
+    width = max(int(asked), NARROWEST) if asked.isdigit() else PIPED
+    return Console(file=cast("IO[str]", _Trimmed()), highlight=False, width=width)
 
 
 def _complain(text: str) -> None:

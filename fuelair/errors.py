@@ -16,6 +16,9 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+LONGEST_ECHO = 80
+"""Characters of a wrong value that an error repeats."""
+
 
 @dataclass(frozen=True, slots=True)
 class Problem:
@@ -49,12 +52,18 @@ class Problem:
         if self.quoted:
             rows.append(f"    | {self.quoted.strip()}")
         if self.value is not None:
-            rows.append(f"    given:   {self.value!r}")
+            rows.append(f"    given:   {_echo(self.value)}")
         if self.allowed:
             rows.append(f"    allowed: {self.allowed}")
         if self.hint:
             rows.append(f"    try:     {self.hint}")
         return "\n".join(rows)
+
+
+def _echo(value: object) -> str:
+    """A value as TOML spells it, long ones cut."""
+    text = str(value).lower() if isinstance(value, bool) else repr(value)
+    return text if len(text) <= LONGEST_ECHO else f"{text[:LONGEST_ECHO]}... ({len(text)} characters)"
 
 
 class FuelairError(Exception):

@@ -41,6 +41,7 @@ def engine_figures(prepared: Prepared, run: Run, engine: Engine, cylinders: int)
         "net_indicated_power_W": None if swept is None or rate is None else net * swept * rate * cylinders,
         "air_mass_flow_kg_per_s": flow(passing),
         "fuel_mass_flow_kg_per_s": flow(float(charge.fuel_mass[0])),
+        "recirculated_mass_flow_kg_per_s": flow(float(charge.recirculated[0])),
         "exhaust_mass_flow_kg_per_s": flow(float(run.exhaust.leaving_mass[0]) + passing - fresh),
         "volumetric_efficiency": volumetric,
         "effective_compression_ratio": float(volumes.effective_compression[0]),

@@ -9,7 +9,7 @@ import numpy as np
 from fuelair import air
 from fuelair.air import Ambient, DryAir
 from fuelair.case import Case, fuels
-from fuelair.charge import Recipe
+from fuelair.charge import Recipe, enters_as_liquid
 from fuelair.crank import kinematics
 from fuelair.cycle.breathing import DEFAULT_FREEZE, Settings
 from fuelair.cycle.geometry import Volumes
@@ -102,6 +102,15 @@ def _recipe(case: Case, outside: Ambient, mixture: DryAir) -> Recipe:
         water_temperature=None if charge.water_temperature is None else _one(charge.water_temperature),
         water_at_combustion=charge.water_admission == "cylinder",
     )
+    if recipe.admission == "port-liquid" and not enters_as_liquid(recipe)[0]:
+        problem = Problem(
+            f"{fuel.name} is a gas at {case.fuel.temperature:g} K and {case.fuel.pressure / 1e5:.4g} bar",
+            "fuel.admission",
+            case.written("fuel.admission"),
+            "a supply state in which the fuel is liquid",
+            'admission = "premixed", or fuel.pressure above its vapour pressure',
+        )
+        raise InputError(case.place(problem))
     phi = equivalence_ratio(case, recipe.stoichiometric_air_fuel_ratio)
     return recipe if phi is None else recipe.with_equivalence_ratio(_one(phi))
 

@@ -97,12 +97,14 @@ co2_kg_per_J                       | per energy | co2 | CO2 per indicated work
 co2_kg_per_J_fuel                  | per heat | co2_f | CO2 per fuel energy
 work_J_per_kg                      | e | w       | Indicated work per kg trapped
 heat_supplied_J_per_kg             | e | q_f     | Fuel energy supplied per kg trapped
-heat_added_J_per_kg                | e | q       | Fuel energy that burns per kg trapped
+heat_added_J_per_kg                | e | q       | Heat added per kg trapped
+compression_heat_J_per_kg          | e | q_c     | Heat taken in during compression
 blowdown_energy_J_per_kg           | e | e_bd    | Blowdown energy per kg trapped
 indicated_power_W                  | P | P_i     | Indicated power (gross)
 net_indicated_power_W              | P | P_n     | Indicated power less pumping (net)
 air_mass_flow_kg_per_s             | flow | m_air  | Air mass flow
 fuel_mass_flow_kg_per_s            | flow | m_fuel | Fuel mass flow
+recirculated_mass_flow_kg_per_s    | flow | m_egr  | of which is recirculated
 exhaust_mass_flow_kg_per_s         | flow | m_exh  | Exhaust mass flow from the cylinders
 effective_compression_ratio        | ratio | r_c  | Effective compression ratio
 effective_expansion_ratio          | ratio | r_e  | Effective expansion ratio

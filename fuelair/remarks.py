@@ -33,25 +33,40 @@ REAL_GAS_MATTERS = 0.01
 def verdict(a: Assessment) -> str:
     """One sentence: what to expect, and how far off the constant-k air cycle is."""
     f = a.figures()
-    held = bool(a.results[a.headline].flags["limited"][0])
+    result = a.results[a.headline]
+    held = bool(result.flags["limited"][0])
+    before, after = (a.exhaust_figures[k] for k in ("exhaust_temperature_before_scavenge_air_K", "exhaust_temperature_K"))
     text = (
         f"Expect a peak of {shown('peak_temperature_K', f['peak_temperature_K'])} (mass mean) and "
         f"{shown('peak_pressure_Pa', f['peak_pressure_Pa'])}{' (held)' if held else ''}, exhaust at "
-        f"{shown('exhaust_temperature_K', a.exhaust_figures['exhaust_temperature_K'])} and "
+        f"{shown('exhaust_temperature_K', after)}{'' if before == after else ' after scavenge air'} and "
         f"{shown('imep_gross_Pa', f['imep_gross_Pa'])} gross indicated mean pressure at "
         f"{shown('indicated_efficiency', f['indicated_efficiency'])} gross indicated efficiency"
     )
+    if bool(result.flags["back-flow"][0]):
+        text += ", with exhaust flowing back into the cylinder"
+    return f"{text}; {_against_constant_k(a, f)}."
+
+
+def _against_constant_k(a: Assessment, f: dict[str, float | None]) -> str:
+    """How far off the constant-k air cycle is; for rich charges on the heat that the oxygen allows."""
+    limited = a.companions.get("oxygen-limited-heat", {}).get("air-cold")
+    name = "the constant-k air cycle" + (" (on the heat that the oxygen allows)" if limited is not None else "")
     cold = a.figures("air-cold")
-    if cold["peak_temperature_K"] is None:
-        return text + f"; the constant-k air cycle has no solution here ({a.status('air-cold').label})."
-    hot = (cold["peak_temperature_K"] or 0.0) - (f["peak_temperature_K"] or 0.0)
-    eager = (cold["indicated_efficiency"] or 0.0) / (f["indicated_efficiency"] or 1.0) - 1.0
-    pressure = (cold["peak_pressure_Pa"] or 0.0) / (f["peak_pressure_Pa"] or 1.0) - 1.0
+    if limited is not None:
+        solved = limited.status[0] == Status.OK
+        cold = {k: float(v[0]) if solved else None for k, v in limited.figures.items()}
+    peak, pressure, work = (cold[k] for k in ("peak_temperature_K", "peak_pressure_Pa", "work_J_per_kg"))
+    if peak is None or pressure is None or work is None:
+        return f"{name} has no solution here ({a.status('air-cold').label})"
+    hot = peak - (f["peak_temperature_K"] or 0.0)
+    high = pressure / (f["peak_pressure_Pa"] or 1.0) - 1.0
+    eager = work / (f["work_J_per_kg"] or 1.0) - 1.0
     words = [f"{abs(hot):.0f} K too {'hot' if hot >= 0.0 else 'cold'}"]
-    if abs(pressure) >= 0.005:
-        words.append(f"{abs(pressure):.0%} too {'high' if pressure >= 0.0 else 'low'} in peak pressure")
-    words.append(f"{abs(eager):.0%} too {'efficient' if eager >= 0.0 else 'inefficient'}")
-    return f"{text}; the constant-k air cycle is {', '.join(words[:-1])} and {words[-1]}."
+    if abs(high) >= 0.005:
+        words.append(f"{100 * abs(high):.0f} % too {'high' if high >= 0.0 else 'low'} in peak pressure")
+    words.append(f"{100 * abs(eager):.0f} % too {'efficient' if eager >= 0.0 else 'inefficient'}")
+    return f"{name} is {', '.join(words[:-1])} and {words[-1]}"
 
 
 def warnings(a: Assessment) -> list[str]:
@@ -74,7 +89,7 @@ def _mixture(a: Assessment) -> Iterator[str]:
     oxygen = float(a.charge.oxygen_excess_ratio()[0])
     if float(a.charge.oxygen_left()[0]) < -RICH:
         yield (
-            f"Rich: the trapped oxygen burns only {oxygen:.1%} of the fuel; carbon monoxide and hydrogen leave with the "
+            f"Rich: the trapped oxygen burns only {100 * oxygen:.1f} % of the fuel; {_unburned(a)} with the "
             "exhaust. Air-standard companions with oxygen-limited heat are in the results."
         )
     result = a.results[a.headline]
@@ -96,9 +111,19 @@ def _mixture(a: Assessment) -> Iterator[str]:
         )
     ratio = float(a.charge.saturation_ratio[0])
     if ratio > 0.9:
-        yield f"The fuel vapour is at {ratio:.0%} of saturation in the trapped charge: a little colder and it condenses."
+        yield f"The fuel vapour is at {100 * ratio:.0f} % of saturation in the trapped charge: a little colder and it condenses."
+    injector, compressed = float(a.charge.recipe.fuel_pressure[0]), a.figures()["compression_pressure_Pa"]
+    if a.case.fuel.admission == "direct" and compressed is not None and injector <= compressed:
+        yield (
+            f"Fuel pressure {injector / 1e5:.4g} bar is not above the compression pressure: nothing could be injected. "
+            "Give fuel.pressure; its enthalpy moves the peak temperature."
+        )
     if a.exergy.from_correlation:
         yield "The fuel's exergy rests on the Szargut-Styrylo ratio, not on species data."
+
+
+def _unburned(a: Assessment) -> str:
+    return "carbon monoxide and hydrogen leave" if a.fuel.mass_fractions.get("C") else "hydrogen leaves"
 
 
 def _validity(a: Assessment) -> Iterator[str]:
@@ -111,8 +136,9 @@ def _validity(a: Assessment) -> Iterator[str]:
         status = Status(int(result.status[0]))
         if status is not Status.OK:
             yield f"{model}: {status.label}: {status.reason}."
+    walls = "no heat to the walls" + (" but that of polytropic compression" if a.case.gas.compression_exponent else "")
     yield (
-        "Ideal cycle: instant adiabatic combustion, no heat to the walls, no flow losses. It is a ceiling for work and "
+        f"Ideal cycle: instant adiabatic combustion, {walls}, no flow losses. It is a ceiling for work and "
         "efficiency; common practice puts real indicated efficiency at 0.80 to 0.90 of it."
     )
 
@@ -125,15 +151,17 @@ def _real_gas(a: Assessment) -> Iterator[str]:
     if pressure is None or peak is None or base is None or ideal_peak is None:
         return
     share, share_peak = pressure / base - 1.0, peak / ideal_peak - 1.0
+    follows = f", peak pressure {100 * share_peak:.1f} %" if share_peak > 5e-4 else ""
     if a.headline != REAL_MODEL and share > REAL_GAS_MATTERS:
         yield (
-            f"Real gas: compression pressure is {share:.1%} above the ideal gas ({shown('compression_pressure_Pa', pressure)}), "
-            f'peak pressure {share_peak:.1%}. [gas] model = "real" makes that model the headline.'
+            f"Real gas: compression pressure is {100 * share:.1f} % above the ideal gas "
+            f"({shown('compression_pressure_Pa', pressure)}){follows}. "
+            '[gas] model = "real" makes that model the headline.'
         )
     if a.second_opinion is not None and share > REAL_GAS_MATTERS:
         yield (
             f"Second opinion: Peng-Robinson puts compression pressure at {shown('compression_pressure_Pa', a.second_opinion)}, "
-            f"{a.second_opinion / pressure - 1.0:+.1%} against {REAL_MODEL}."
+            f"{100 * (a.second_opinion / pressure - 1.0):+.1f} % against {REAL_MODEL}."
         )
 
 

@@ -74,14 +74,22 @@ def test_out_writes_every_file_and_can_be_repeated(tmp_path: Path) -> None:
         out = run("assess", str(DEMO), "--out", str(target))
         assert out.returncode == 0, out.stderr
     names = {p.name for p in target.iterdir()}
-    assert names == {"assessment.json", "models.csv", "states.csv", "ladder.csv", "overprediction.csv", "case.toml", "log.txt"}
+    assert names == {
+        "assessment.json",
+        "models.csv",
+        "states.csv",
+        "ladder.csv",
+        "overprediction.csv",
+        "resolved-case.toml",
+        "log.txt",
+    }
     assert [p.name for p in target.parent.iterdir()] == [target.name]
     with (target / "models.csv").open(newline="") as file:
         rows = list(csv.DictReader(file))
     assert next(r["model"] for r in rows) == "air-cold"
     data = json.loads((target / "assessment.json").read_text())
     assert float(rows[-1]["peak_pressure_Pa"]) == data["models"]["fuel-air-equilibrium"]["peak_pressure_Pa"]
-    again = fuelair.assess(fuelair.Case.read(target / "case.toml"))
+    again = fuelair.assess(fuelair.Case.read(target / "resolved-case.toml"))
     assert again.to_dict()["models"] == data["models"]
 
 

@@ -124,6 +124,10 @@ def _two_stroke(draft: Draft) -> Iterator[Problem]:
             message = "a two-stroke engine (engine.strokes_per_cycle = 2) needs one of charge.scavenging_efficiency, "
             yield Problem(message + "charge.residual_fraction", "charge", None, hint='scavenging_efficiency = "92 %"')
         yield from _delivered(draft, ratio, efficiency)
+        if draft.has(ratio) and draft.get("fuel.admission") in ("premixed", "port-liquid"):
+            message = f'would carry fuel straight to the exhaust with fuel.admission = "{draft.get("fuel.admission")}"'
+            hint = 'admission = "direct" or "early-direct", or remove the key'
+            yield Problem(message, ratio, draft.raw(ratio), hint=hint)
 
 
 def _delivered(draft: Draft, ratio: str, efficiency: str) -> Iterator[Problem]:

@@ -206,7 +206,7 @@ class GasSection(Section):
     model: Annotated[GasModel, Choice(get_args(GasModel))] = _key("gas law of the headline model", "ideal")
     expansion: Annotated[Expansion, Choice(get_args(Expansion))] = _key("composition during expansion", "equilibrium")
     freeze_temperature: Annotated[float | None, Within("temperature", 1000.0, 3000.0, "K")] = _key(
-        "equilibrium above, frozen below; default: equilibrium all the way down", example="1800 K"
+        "expansion frozen below it; default: equilibrium to release, exhaust composition frozen as at 1740 K", example="1800 K"
     )
     compression_exponent: Annotated[float | None, Within("ratio", 1.01, 1.67)] = _key(
         "polytropic exponent of compression, its heat booked; default: isentropic", example=1.35

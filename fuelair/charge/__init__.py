@@ -5,7 +5,7 @@ Trapped gas holds the fuel when it is admitted before compression (``premixed``,
 ``early-direct``); with ``direct`` the fuel joins at combustion and the trapped gas holds none.
 """
 
-from fuelair.charge.mixing import compose, drain
+from fuelair.charge.mixing import COLDEST, compose, drain
 from fuelair.charge.recipe import (
     ADMISSIONS,
     WATER_CP,
@@ -21,6 +21,7 @@ from fuelair.charge.trapped import BurnedGas, Charge
 
 __all__ = [
     "ADMISSIONS",
+    "COLDEST",
     "WATER_CP",
     "WATER_LATENT_HEAT",
     "Admission",

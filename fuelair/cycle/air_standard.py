@@ -136,6 +136,7 @@ def run(
     )
     cutoff = np.where(limited, burned.v / compressed.v, 1.0)
     figures |= state_figures(tuple(points), cutoff_ratio=cutoff, heat_added=q, blowdown=available)
+    figures["compression_heat_J_per_kg"] = exchanged
     scale = np.maximum(np.abs(q), 1e3)
     ledger = {
         "energy_closed_part": (start.u + exchanged + q - release.u + work.compression - work.burning - work.expansion) / scale

@@ -105,6 +105,7 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
         exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
     ) | state_figures(named, cutoff_ratio=burned.volume_ratio, heat_added=charge.heat_added, blowdown=out.blowdown_work)
+    figures["compression_heat_J_per_kg"] = compression.heat
     ledger = _ledger(engine, charge, compression, burned, release, out, settings, headline)
     status = worst(
         charge.status, compression.state.status, burned.status, release.status, out.remaining.status, out.leaving.status

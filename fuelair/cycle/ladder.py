@@ -78,14 +78,19 @@ def _change(a: dict[str, Array], b: dict[str, Array], case: int) -> dict[str, fl
     return {k: float(b[k][case] - a[k][case]) for k in QUANTITIES}
 
 
-def overprediction(results: dict[str, CycleResult], case: int = 0) -> dict[str, dict[str, dict[str, float | None]]]:
-    """Each solved model against the fuel-air equilibrium cycle: absolute (SI) and relative, per quantity."""
-    if REFERENCE_MODEL not in results or results[REFERENCE_MODEL].status[case] != Status.OK:
+def overprediction(
+    results: dict[str, CycleResult], case: int = 0, *, against: str = REFERENCE_MODEL
+) -> dict[str, dict[str, dict[str, float | None]]]:
+    """Each solved model of the ladder against one of them, by default the fuel-air equilibrium cycle.
+
+    Absolute (SI) and relative per quantity; empty if that one is not solved.
+    """
+    if against not in results or results[against].status[case] != Status.OK:
         return {}
-    reference = results[REFERENCE_MODEL].figures
+    reference = results[against].figures
     out: dict[str, dict[str, dict[str, float | None]]] = {}
     for model in MODELS:
-        if model == REFERENCE_MODEL or model not in results or results[model].status[case] != Status.OK:
+        if model == against or model not in results or results[model].status[case] != Status.OK:
             continue
         out[model] = {}
         for key in QUANTITIES:

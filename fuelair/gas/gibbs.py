@@ -31,6 +31,8 @@ TOLERANCE = 1e-13
 STALL = 1e-10
 """Change that counts as done when it no longer shrinks."""
 START_TEMPERATURE = 2500.0
+HOTTEST_GUESS = 4000.0
+"""A hotter guess is not used: above 6000 K the polynomials of the data run astray and offer further roots."""
 SEED = 1e-5
 """Mole fraction that species other than those of complete combustion start from."""
 LOWEST = -690.0
@@ -108,9 +110,14 @@ def equilibrate(
     Elements absent from a case are dropped from it. Elements are restored exactly at the end.
     """
     n = len(x)
-    T0 = np.full(n, START_TEMPERATURE) if guess is None else np.where(guess > 0.0, guess, START_TEMPERATURE)
-    T = np.where(np.isfinite(x), x, START_TEMPERATURE) if pair[0] == "T" else T0
-    T = np.where(np.isfinite(y), y, START_TEMPERATURE) if pair == "ST" else T
+    finite = np.isfinite(x) & np.isfinite(y) & (y > 0.0)
+    if pair[0] == "T":
+        finite &= x > 0.0
+    T0 = np.full(n, START_TEMPERATURE)
+    if guess is not None:
+        T0 = np.where((guess > 0.0) & (guess <= HOTTEST_GUESS), guess, START_TEMPERATURE)
+    T = np.where(finite, x, START_TEMPERATURE) if pair[0] == "T" else T0
+    T = np.where(finite, y, START_TEMPERATURE) if pair == "ST" else T
     start, _ = composition(table, amounts, np.full(n, START_TEMPERATURE))
     atoms = table.reactive_atoms
     b = weighted(start, atoms)
@@ -118,9 +125,10 @@ def equilibrate(
     absent = b <= 0.0
     usable = allowed & ~((atoms > 0.0)[None] & absent[:, None, :]).any(axis=2) & ~table.inert
     whole = total(start)
+    finite &= whole > 0.0
+    whole = np.where(finite, whole, 1.0)
     log_n = np.where(usable, np.log(np.maximum(np.where(usable, start, 0.0), SEED * whole[:, None])), -np.inf)
     state = _State(log_n, np.log(T), np.log(R * whole * T / 5e6) if pair[1] != "V" else np.log(np.maximum(y, TINY)))
-    finite = np.isfinite(x) & np.isfinite(y) & (y > 0.0)
     active, failed = finite.copy(), ~finite
     iterations, previous = np.zeros(n, np.int32), np.full(n, np.inf)
     solver = _Solver(table, pair, np.where(finite, x, 1.0), np.where(finite, y, 1.0), b, absent, inert, departure)

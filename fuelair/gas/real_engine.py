@@ -25,6 +25,8 @@ STALL = 1e-11
 """Relative change of the unknown at which a search is done; the second when it no longer shrinks."""
 MAX_ITERATIONS = 80
 WATER_GAS_STEPS = 60
+WATER_GAS_START = 2000.0
+WATER_GAS_TOLERANCE = 1e-13
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,6 +60,12 @@ class RealGas:
         """States of a batch; see `fuelair.gas.engine.Engine.state`. ``guess`` is not needed and not used."""
         x, y = (np.array(a, float) for a in np.broadcast_arrays(x, y))
         amounts = np.array(amounts, dtype=float)
+        empty = ~(total(amounts) > 0.0)  # a stream without mass, or NaN: computed as nitrogen, told by its status
+        if empty.any():
+            nitrogen = table.amounts({"N2": 1.0})
+            state = self.state(table, pair, np.where(empty, np.nan, x), y, np.where(empty[:, None], nitrogen, amounts), chemistry)
+            state.amounts[empty] = amounts[empty]
+            return state
         gas = virial_table(table, self.fuel_fluid)
         if chemistry == "frozen":
             return _fixed(table, gas, pair, x, y, amounts)
@@ -85,15 +93,21 @@ def _equilibrium(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y:
 
 def _complete(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
     """Complete combustion; when rich the water-gas composition follows the state's temperature."""
-    burned, short = composition(table, amounts, np.full(len(x), 2000.0))
+    T = np.full(len(x), WATER_GAS_START)
+    burned, short = composition(table, amounts, T)
     state = _fixed(table, gas, pair, x, y, burned)
-    if (oxygen_excess(table, amounts) < 0.0).any():
-        for _ in range(WATER_GAS_STEPS):
-            T = np.where(np.isfinite(state.T), state.T, 2000.0)
-            burned, short = composition(table, amounts, T)
-            state = _fixed(table, gas, pair, x, y, burned)
-            if not np.nanmax(np.append(np.abs(state.T / T - 1.0), 0.0)) > 1e-13:
-                break
+    active = (oxygen_excess(table, amounts) < 0.0) & np.isfinite(state.T)
+    previous = np.full(len(x), np.inf)
+    for _ in range(WATER_GAS_STEPS):
+        if not active.any():
+            break
+        T = np.where(active, state.T, T)  # what has converged is held: no case follows its neighbours
+        burned, short = composition(table, amounts, T)
+        state = _fixed(table, gas, pair, x, y, burned)
+        size = np.abs(state.T / T - 1.0)
+        active &= (size > WATER_GAS_TOLERANCE) & ~((size <= STALL) & (size >= previous))  # False for NaN
+        previous = size
+    state.status[active] = Status.NO_SOLUTION
     state.status[short] = Status.OXYGEN_BELOW_CARBON_MONOXIDE
     return state
 
@@ -101,8 +115,8 @@ def _complete(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y: Ar
 def _departure(gas: VirialTable, T: Array, size: Array, amounts: Array, at_pressure: bool) -> Departure:
     whole = total(amounts)
     x = amounts / whole[:, None]
-    rho = density(gas, T, size, x) if at_pressure else whole / size
     with np.errstate(invalid="ignore"):
+        rho = density(gas, T, size, x) if at_pressure else whole / size
         r = residual(gas, T, rho, x)
     cp = r.cv + (r.Z + r.dZ_dT_T) ** 2 / (r.Z + r.dZ_drho_rho) - 1.0
     if not at_pressure:
@@ -137,13 +151,17 @@ def _search(
     n = mixture.moles
     finite = np.isfinite(x) & np.isfinite(y) & (y > 0.0)
     safe_x, safe_y = np.where(finite, x, 1.0), np.where(finite, y, 1.0)
+    finite &= (x > 0.0) if pair[0] == "T" else True
     if pair[0] == "T":
         T = np.where(finite, x, 1000.0)
     if pair == "ST":
-        T = safe_y
+        T = np.where(finite, y, 1000.0)
 
     def volume(t: Array) -> Array:
-        return n / density(gas, t, safe_y, fractions) if pair[1] == "P" else safe_y
+        if pair[1] != "P":
+            return safe_y
+        with np.errstate(invalid="ignore"):  # as in `_at`
+            return np.asarray(n / density(gas, t, safe_y, fractions))
 
     log_v = np.log(n * R * T / 5e6)
     active, done = finite & (pair[0] != "T"), np.zeros(len(T), np.int32)

@@ -2,7 +2,7 @@
 
 Source of the thermodynamic data: the file ``nasa_gas.yaml`` bundled with Cantera (NASA
 seven-coefficient polynomials with a break at 1000 K, 200 to 6000 K; each entry there names its
-origin). ``mechanisms/phases/products.yaml`` names which of them make up burned gas. The fuel's
+origin). ``mechanisms/phases/products.toml`` names which of them make up burned gas. The fuel's
 vapour arrives as plain numbers: its heating value fixes the enthalpy, named species of the same
 file lend the shape of cp(T).
 
@@ -13,10 +13,11 @@ that jump, so that enthalpy and entropy are continuous and every inversion has o
 from __future__ import annotations
 
 import hashlib
-import json
+import tomllib
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property, lru_cache
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -37,7 +38,7 @@ T_STANDARD = 298.15
 FUEL = "fuel"
 UNBURNED = "unburned-fuel"
 GRAPHITE_FILE, GRAPHITE = "nasa_condensed.yaml", "C(gr)"
-_PHASES = "products.yaml"
+_PHASES = "products.toml"
 _SPECIES_FILE = "nasa_gas.yaml"
 
 
@@ -121,10 +122,30 @@ class SpeciesTable:
 @lru_cache(maxsize=1)
 def _sets() -> dict[str, tuple[str, ...]]:
     """Names of the species sets in ``mechanisms/phases``."""
+    path = resources.folder("mechanisms/phases") / _PHASES
+    try:
+        data = tomllib.loads(path.read_text(encoding="utf-8"))
+        return {n: tuple(data[n]) for n in ("products", "sulfur")}
+    except (OSError, KeyError, tomllib.TOMLDecodeError) as error:
+        raise DataError(f"species sets cannot be read from {path}: {error}") from None
+
+
+@lru_cache(maxsize=4)
+def _entries(file: str) -> dict[str, str]:
+    """Text of every species entry of a data file that Cantera bundles, by name.
+
+    Read here and handed on as text: Cantera itself would look into the current folder first, and loses
+    letters beyond ASCII from the path of its own data folder.
+    """
     import cantera as ct
 
-    path = str(resources.folder("mechanisms/phases") / _PHASES)
-    return {n: tuple(ct.Solution(path, n).species_names) for n in ("products", "sulfur")}
+    path = Path(ct.__file__).resolve().parent / "data" / file
+    try:
+        text = path.read_text(encoding="utf-8")
+    except OSError as error:
+        raise DataError(f"data file {file} of Cantera cannot be read: {error}") from None
+    blocks = text.partition("\nspecies:\n")[2].split("- name: ")[1:]
+    return {block.partition("\n")[0].strip().strip("\"'"): "- name: " + block for block in blocks}
 
 
 @lru_cache(maxsize=64)
@@ -132,12 +153,12 @@ def _species(names: tuple[str, ...], file: str = _SPECIES_FILE) -> dict[str, Any
     """Species of a bundled data file by name; only those asked for are built."""
     import cantera as ct
 
-    phase = {"name": "chosen", "thermo": "ideal-gas", "species": [{f"{file}/species": list(names)}]}
-    try:
-        made = ct.Solution(yaml=json.dumps({"phases": [phase]}))
-    except ct.CanteraError:
-        raise DataError(f"not all of these species are in {file}: {', '.join(names)}") from None
-    return {n: made.species(n) for n in names}
+    entries = _entries(file)
+    missing = [n for n in names if n not in entries]
+    if missing:
+        raise DataError(f"species not in {file}: {', '.join(missing)}")
+    made = ct.Species.list_from_yaml("".join(entries[n].rstrip() + "\n" for n in names))
+    return dict(zip(names, made, strict=True))
 
 
 def data_versions() -> dict[str, str]:

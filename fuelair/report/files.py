@@ -37,7 +37,7 @@ def contents(a: Assessment) -> dict[str, str]:
         "states.csv": _csv(states),
         "ladder.csv": _csv(steps),
         "overprediction.csv": _csv(over),
-        "case.toml": a.case.to_toml(),
+        "resolved-case.toml": a.case.to_toml(),
         "log.txt": log(a),
     }
 
@@ -60,14 +60,20 @@ def log(a: Assessment) -> str:
     return "\n".join([*rows, "", CAUTION, ""])
 
 
-def write_folder(a: Assessment, folder: Path) -> list[Path]:
+def write_folder(a: Assessment, folder: Path, *, keep: Path | None = None) -> list[Path]:
     """Write every result file into ``folder`` (made if missing); returns their paths.
+
+    ``keep`` is a file that must not be replaced: the case that was read.
 
     Raises
     ------
-    InputError : the folder cannot be made or written; nothing is left behind.
+    InputError : the folder cannot be made or written, or a name in it is taken; nothing is left behind.
     """
     texts = contents(a)
+    if folder.exists() and not folder.is_dir():
+        raise InputError(Problem("is a file, not a folder", "--out", str(folder), "a folder, or a name that is free"))
+    for name in texts:
+        _guard(folder / name, keep, "--out")
     try:
         folder.parent.mkdir(parents=True, exist_ok=True)
         staging = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
@@ -76,7 +82,6 @@ def write_folder(a: Assessment, folder: Path) -> list[Path]:
     try:
         for name, text in texts.items():
             (staging / name).write_text(text, encoding="utf-8", newline="")
-        staging.chmod(0o755)
         folder.mkdir(exist_ok=True)
         for name in texts:
             os.replace(staging / name, folder / name)
@@ -87,13 +92,17 @@ def write_folder(a: Assessment, folder: Path) -> list[Path]:
     return [folder / name for name in texts]
 
 
-def write_text(path: Path, text: str, key: str = "--json") -> None:
+def write_text(path: Path, text: str, key: str = "--json", *, keep: Path | None = None) -> None:
     """Write one file by way of a temporary neighbour, so that it is whole or not there.
+
+    A symbolic link is followed; ``keep`` is a file that must not be replaced.
 
     Raises
     ------
-    InputError : it cannot be written.
+    InputError : it cannot be written, or is no ordinary file.
     """
+    _guard(path, keep, key)
+    path = path.resolve()
     try:
         handle, name = tempfile.mkstemp(prefix=f".{path.name}-", dir=path.parent)
     except OSError as error:
@@ -109,6 +118,16 @@ def write_text(path: Path, text: str, key: str = "--json") -> None:
     except BaseException:
         Path(name).unlink(missing_ok=True)
         raise
+
+
+def _guard(path: Path, keep: Path | None, key: str) -> None:
+    """Refuse a target that is the case itself, a folder, a device or a pipe."""
+    if not path.name:
+        raise InputError(Problem("names no file", key, str(path), "a file name"))
+    if path.exists() and not path.is_file():
+        raise InputError(Problem("is no ordinary file", key, str(path), "an ordinary file, or a name that is free"))
+    if keep is not None and path.exists() and path.samefile(keep):
+        raise InputError(Problem("is the case itself, which would be lost", key, str(path), "another name"))
 
 
 def _refused(path: Path, error: OSError, key: str = "--out") -> InputError:

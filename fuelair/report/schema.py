@@ -18,7 +18,7 @@ MODEL_NUMBERS = (
     "compression_temperature_K", "compression_pressure_Pa", "peak_temperature_K", "peak_pressure_Pa", "release_temperature_K",
     "release_pressure_Pa", "exhaust_temperature_K", "blowdown_temperature_K", "cutoff_ratio", "residual_fraction",
     "imep_gross_Pa", "imep_net_Pa", "pmep_Pa", "indicated_efficiency", "isfc_kg_per_J", "work_J_per_kg",
-    "heat_supplied_J_per_kg", "heat_added_J_per_kg", "blowdown_energy_J_per_kg",
+    "heat_supplied_J_per_kg", "heat_added_J_per_kg", "compression_heat_J_per_kg", "blowdown_energy_J_per_kg",
 )  # fmt: skip
 NUMBER: dict[str, Any] = {"type": ["number", "null"]}
 
