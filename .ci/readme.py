@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import re
 import subprocess
 import sys
@@ -12,7 +13,9 @@ ROOT = Path(__file__).resolve().parents[1]
 
 def run(*words: str) -> str:
     """Standard output of a command of the running interpreter's environment."""
-    return subprocess.run([sys.executable, *words], cwd=ROOT, capture_output=True, text=True, check=False).stdout
+    return subprocess.run(
+        [sys.executable, *words], cwd=ROOT, capture_output=True, text=True, check=False, env=os.environ | {"COLUMNS": ""}
+    ).stdout
 
 
 def workboat() -> str:

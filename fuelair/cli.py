@@ -22,7 +22,7 @@ from rich.markup import escape
 from rich.padding import Padding
 from rich.table import Table as RichTable
 
-from fuelair.errors import FuelairError, InputError, Problem
+from fuelair.errors import FuelairError, InputError, MissingExtraError, Problem
 from fuelair.version import __version__
 
 if TYPE_CHECKING:
@@ -215,7 +215,9 @@ def validate(
     console = _console()
     for title, columns, rows in book.rows_for_print([r for r in results if not (failed_only and r.passed)]):
         _grid(console, title, columns, rows)
-    console.print(escape(book.summary(results)))
+    console.print(escape(book.summary(results)), soft_wrap=True)
+    if any(r.skipped for r in results):
+        console.print(str(MissingExtraError("test", "Every skipped row")))
     if any(not r.passed and not r.skipped for r in results):
         raise typer.Exit(1)
 

@@ -99,6 +99,25 @@ def test_out_leaves_foreign_files_alone(tmp_path: Path) -> None:
     assert (tmp_path / "notes.txt").read_text() == "mine"
 
 
+def test_species_data_of_the_current_folder_are_not_used(tmp_path: Path) -> None:
+    (tmp_path / "nasa_gas.yaml").write_text("species: []")
+    assert run("assess", str(DEMO), cwd=tmp_path).returncode == 0
+
+
+def test_the_case_and_special_files_are_never_replaced(tmp_path: Path) -> None:
+    mine = tmp_path / "mine.toml"
+    mine.write_text(DEMO.read_text())
+    (tmp_path / "link.json").symlink_to(tmp_path / "target.json")
+    for words in (("--json", str(mine)), ("--out", "."), ("--out", ""), ("--json", str(tmp_path))):
+        out = run("assess", str(mine), *words, cwd=tmp_path)
+        assert out.returncode == 2, words
+        assert words[0] in out.stderr
+    assert mine.read_text() == DEMO.read_text()
+    assert run("assess", str(mine), "--json", str(tmp_path / "link.json")).returncode == 0
+    assert (tmp_path / "link.json").is_symlink()
+    assert (tmp_path / "target.json").is_file()
+
+
 def test_out_onto_a_file_is_refused(tmp_path: Path) -> None:
     place = tmp_path / "taken"
     place.write_text("mine")

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import doctest
 import importlib
+import os
 import re
 import subprocess
 import sys
@@ -47,6 +48,7 @@ def test_what_the_readme_shows_is_what_the_command_prints() -> None:
         encoding="utf-8",
         check=True,
         cwd=PACKAGE,
+        env=os.environ | {"COLUMNS": ""},
     ).stdout
     printed = {line.rstrip() for line in out.splitlines()}
     shown = re.search(r"<!-- shown:workboat -->\n```text\n(.*?)```", README, re.S)

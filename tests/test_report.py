@@ -43,7 +43,7 @@ def test_models_table_shows_the_figures_in_bar_and_kelvin(boat: fuelair.Assessme
 
 
 def test_cost_rows_add_up_to_the_last(boat: fuelair.Assessment) -> None:
-    *steps, last = tables.costs(boat).rows
+    *steps, last = (r for r in tables.costs(boat).rows if r[0] != "up to the headline")
     for column in range(2, len(last)):
         assert float(last[column]) == pytest.approx(sum(float(r[column]) for r in steps), abs=0.51 * len(steps))
 

@@ -160,7 +160,8 @@ class ChargeSection(Section):
         "liquid water added, mass over the mass of fuel", example=0.5
     )
     water_admission: Annotated[WaterAdmission | None, Choice(get_args(WaterAdmission))] = _key(
-        "intake (default): the water evaporates before compression; cylinder: it joins at combustion", example="cylinder"
+        "intake (default): it evaporates before compression, as far as the charge can hold it; cylinder: it joins at combustion",
+        example="cylinder",
     )
     water_temperature: Annotated[float | None, Within("temperature", 273.15, 373.15, "degC")] = _key(
         "of the added water; default 298.15 K", example="40 degC"

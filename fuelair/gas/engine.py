@@ -57,7 +57,8 @@ class Status(IntEnum):
 _REASONS = {
     Status.OK: "",
     Status.OUTSIDE_DATA: "a state lies outside the species data (200 to 6000 K, fuel vapour as its record says) "
-    "or above 600 bar; move the trapped state, the ratio or the fuel amount",
+    "above 600 bar, or for the real gas above 8 kmol/m3 or near condensing; "
+    "move the trapped state, the ratio or the fuel amount",
     Status.NO_SOLUTION: "no gas state fits the given pair of properties; check the case for an extreme value",
     Status.CARBON_OVER_OXYGEN: "carbon atoms reach or exceed oxygen atoms in the charge, so solid carbon must form, "
     "which a gas-phase model cannot carry; use a leaner mixture",

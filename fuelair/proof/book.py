@@ -178,7 +178,6 @@ def rows_for_print(results: Iterable[RowResult]) -> list[Sheet]:
     """One sheet of text cells per file, in the order of the run."""
     heads = (
         "row",
-        "quantity",
         "computed",
         "published",
         "unit",
@@ -196,12 +195,11 @@ def rows_for_print(results: Iterable[RowResult]) -> list[Sheet]:
 
 
 def _cells(r: RowResult) -> tuple[str, ...]:
-    standing = f"{r.standing}, own computation" if r.own else r.standing
-    verdict = f"skipped: {r.skipped}" if r.passed is None else "ok" if r.passed else f"FAILED {r.error}".strip()
+    standing = f"{r.standing}, own" if r.own else r.standing
+    verdict = f"skipped: {r.skipped.partition(':')[0]}" if r.passed is None else "ok" if r.passed else f"FAILED {r.error}".strip()
     known = f"{r.expected_difference:+.3g}" if r.expected_difference else ""
     return (
         r.id,
-        r.quantity,
         _shown(r.computed),
         _shown(r.published),
         "" if r.unit == "1" else r.unit,

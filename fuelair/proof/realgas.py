@@ -11,6 +11,7 @@ from fuelair.gas.engine import Array, GasState, total
 from fuelair.gas.mixture import mix
 from fuelair.gas.real_engine import RealGas
 from fuelair.gas.real_gas import density, residual, valid, virial_table
+from fuelair.gas.second_opinion import compression_pressure
 from fuelair.gas.species import R, SpeciesTable, build
 from fuelair.proof.registry import computation, lookup, one, pick, solved
 
@@ -52,6 +53,15 @@ def real_air_compression(*, T1: float, p1: float, r: float, result: str) -> floa
     """Isentropic compression of dry air as a real gas to the volume ratio ``r``: ``T`` [K], ``p`` [Pa], ``work`` [J/kg]."""
     start, end = _compressed(T1, p1, r)
     return pick({"T": end.T[0], "p": end.p[0], "work": end.u[0] - start.u[0]}, result)
+
+
+@computation("peng-robinson-air-compression")
+def peng_robinson_air_compression(*, T1: float, p1: float, r: float) -> float:
+    """End pressure [Pa] of isentropic compression of dry air by the second opinion, Cantera's Peng-Robinson."""
+    table, amounts = _air()
+    start = solved(RealGas().state(table, "TP", one(T1), one(p1), amounts))
+    found = compression_pressure(table, start, one(r))
+    return float("nan") if found is None else found
 
 
 @computation("real-air")
