@@ -217,7 +217,7 @@ def validate(
         _grid(console, title, columns, rows)
     console.print(escape(book.summary(results)), soft_wrap=True)
     if any(r.skipped for r in results):
-        console.print(str(MissingExtraError("test", "Every skipped row")))
+        console.print(escape(str(MissingExtraError("test", "Every skipped row"))))
     if any(not r.passed and not r.skipped for r in results):
         raise typer.Exit(1)
 
