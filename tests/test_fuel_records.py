@@ -1,5 +1,3 @@
-from pathlib import Path
-
 """Fuel records: complete, sourced, and right against sources independent of their own."""
 
 import math
@@ -7,6 +5,7 @@ import pickle
 import subprocess
 import sys
 import tomllib
+from pathlib import Path
 
 import pytest
 
@@ -15,7 +14,7 @@ from fuelair.errors import DataError, InputError
 from fuelair.fuel import Fuel, card, formula, load, names, records, surrogates
 
 
-def bundled(ct):
+def data_text(ct):
     """Text of Cantera's species file; by its name Cantera loses letters beyond ASCII from its own path."""
     return (Path(ct.__file__).parent / "data" / "nasa_gas.yaml").read_text(encoding="utf-8")
 
@@ -253,7 +252,7 @@ def test_load_is_shared_and_frozen():
 
 def test_shape_species_exist_and_reach_low_temperature():
     ct = pytest.importorskip("cantera")
-    known = {s.name: s.thermo for s in ct.Species.list_from_yaml(bundled(ct), "species")}
+    known = {s.name: s.thermo for s in ct.Species.list_from_yaml(data_text(ct), "species")}
     used = {s for name in names() for s, _ in load(name).vapour.shape} | set(surrogates.SPECIES)
     for species in used:
         assert known[species].min_temp <= 200.0 and known[species].max_temp >= 6000.0, species
@@ -263,7 +262,7 @@ def test_shape_species_exist_and_reach_low_temperature():
 # ethanol 0.36 %, n-dodecane by increment 0.30 %, n-hexadecane 0.40 %. n-butane's is the NASA value itself.
 def test_entropy_against_nasa_polynomials():
     ct = pytest.importorskip("cantera")
-    known = {s.name: s.thermo for s in ct.Species.list_from_yaml(bundled(ct), "species")}
+    known = {s.name: s.thermo for s in ct.Species.list_from_yaml(data_text(ct), "species")}
     checked = 0
     for name in names():
         fuel = load(name)
@@ -280,7 +279,7 @@ def test_entropy_against_nasa_polynomials():
 def test_group_increment_cp(name, cas):
     ct = pytest.importorskip("cantera")
     heat = pytest.importorskip("chemicals.heat_capacity")
-    known = {s.name: s.thermo for s in ct.Species.list_from_yaml(bundled(ct), "species")}
+    known = {s.name: s.thermo for s in ct.Species.list_from_yaml(data_text(ct), "species")}
     row = heat.TRC_gas_data.loc[cas]
     for temperature in (300.0, 400.0, 500.0, 700.0, 1000.0):
         ours = sum(n * known[s].cp(temperature) for s, n in load(name).vapour.shape) / 1e3

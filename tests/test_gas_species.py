@@ -14,7 +14,7 @@ from fuelair.gas.mixture import gibbs, mix
 from fuelair.gas.species import FUEL, T_BREAK, UNBURNED, R, build, data_versions, shape_is_molecule
 
 
-def bundled(ct):
+def data_text(ct):
     """Text of Cantera's species file; by its name Cantera loses letters beyond ASCII from its own path."""
     return (Path(ct.__file__).parent / "data" / "nasa_gas.yaml").read_text(encoding="utf-8")
 
@@ -39,7 +39,7 @@ def ours(name, T):
 @pytest.fixture(scope="module")
 def bundled():
     ct = pytest.importorskip("cantera")
-    return {s.name: s.thermo for s in ct.Species.list_from_yaml(bundled(ct), "species")}
+    return {s.name: s.thermo for s in ct.Species.list_from_yaml(data_text(ct), "species")}
 
 
 @pytest.mark.parametrize("T", T_LOW)
@@ -77,7 +77,7 @@ def test_enthalpy_and_entropy_are_continuous_at_the_break(name):
 
 def test_molar_masses_are_canteras():
     ct = pytest.importorskip("cantera")
-    weights = {s.name: s.molecular_weight for s in ct.Species.list_from_yaml(bundled(ct), "species")}
+    weights = {s.name: s.molecular_weight for s in ct.Species.list_from_yaml(data_text(ct), "species")}
     for name, mass in zip(TABLE.names, TABLE.molar_mass, strict=True):
         assert mass == pytest.approx(weights[name], rel=1e-14)
 
