@@ -23,6 +23,8 @@ from fuelair.gas.species import R, SpeciesTable
 TOLERANCE = 1e-14
 STALL = 1e-11
 """Relative change of the unknown at which a search is done; the second when it no longer shrinks."""
+ACCEPTED = 1e-9
+"""Step that the property of a pair may still ask for, and distance of the equilibrium's own temperature."""
 MAX_ITERATIONS = 80
 WATER_GAS_STEPS = 60
 WATER_GAS_START = 2000.0
@@ -84,7 +86,8 @@ def _equilibrium(table: SpeciesTable, gas: VirialTable, pair: Pair, x: Array, y:
     found = equilibrate(table, pair, x, y, amounts, allowed, departure=departure)
     state = _fixed(table, gas, pair, x, y, found.amounts, start=found.T)
     status = state.status.copy()
-    status[found.failed] = Status.NO_SOLUTION
+    apart = np.abs(found.T / state.T - 1.0) > 10.0 * ACCEPTED  # the equilibrium must be that of the state itself
+    status[found.failed | (apart & (status == Status.OK))] = Status.NO_SOLUTION
     status[refused] = Status.CARBON_OVER_OXYGEN
     bad = (status == Status.NO_SOLUTION) | refused
     fields = {k: np.where(bad, np.nan, getattr(state, k)) for k in ("T", "p", "v", "u", "h", "s", "cp", "sound")}
@@ -170,15 +173,7 @@ def _search(
     for _ in range(MAX_ITERATIONS):
         if not active.any():
             break
-        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-            if pair == "ST":
-                step = (safe_x - point.s) / point.ds_dv_v
-            elif pair[0] == "S":
-                step = (safe_x - point.s) / (point.cp if pair[1] == "P" else point.cv)
-            else:
-                value, slope = (point.h, point.cp) if pair == "HP" else (point.u, point.cv)
-                step = np.log1p(np.clip((safe_x - value) / (slope * T), -0.6, 1.5))
-        step = np.clip(step, -1.0, 1.0)
+        step = _step(point, pair, safe_x)
         size = np.abs(step)
         if pair == "ST":
             log_v = np.where(active, log_v + step, log_v)
@@ -188,7 +183,21 @@ def _search(
         active &= ~((size <= TOLERANCE) | ((size <= STALL) & (size >= previous))) & np.isfinite(size)
         previous = size
         point = _at(mixture, gas, fractions, T, np.exp(log_v) if pair == "ST" else volume(T))
-    return point, done, ~finite | active | ~np.isfinite(point.p) | ~np.isfinite(previous) & (pair[0] != "T")
+    met = np.ones(len(T), np.bool_) if pair[0] == "T" else np.abs(_step(point, pair, safe_x)) <= ACCEPTED
+    return point, done, ~finite | active | ~np.isfinite(point.p) | ~met
+
+
+def _step(point: _Point, pair: Pair, x: Array) -> Array:
+    """Newton step of the unknown, ln T or for ST ln v, towards the first property of the pair."""
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        if pair == "ST":
+            step = (x - point.s) / point.ds_dv_v
+        elif pair[0] == "S":
+            step = (x - point.s) / (point.cp if pair[1] == "P" else point.cv)
+        else:
+            value, slope = (point.h, point.cp) if pair == "HP" else (point.u, point.cv)
+            step = np.log1p(np.clip((x - value) / (slope * point.T), -0.6, 1.5))
+    return np.asarray(np.clip(step, -1.0, 1.0))
 
 
 def _at(mixture: Mixture, gas: VirialTable, fractions: Array, T: Array, v: Array) -> _Point:
