@@ -8,6 +8,7 @@ that does not pass raises a pydantic error of type :data:`OWN_ERROR` whose conte
 from __future__ import annotations
 
 import difflib
+from abc import ABC, abstractmethod
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from numbers import Real
@@ -38,20 +39,20 @@ def fail(message: str, *, allowed: str = "", hint: str = "") -> NoReturn:
     raise PydanticCustomError(OWN_ERROR, "{message}", {"message": message, "allowed": allowed, "hint": hint})
 
 
-class Kind:
+class Kind(ABC):
     """Base of the field kinds: hooks a check and a JSON Schema into pydantic."""
 
+    @abstractmethod
     def check(self, value: object, *, ambient_pressure: float = STANDARD_ATMOSPHERE) -> Any:
         """Return the accepted value in stored units or raise a pydantic error."""
-        raise NotImplementedError
 
+    @abstractmethod
     def allowed(self) -> str:
         """Return what is allowed, as text."""
-        raise NotImplementedError
 
+    @abstractmethod
     def schema(self) -> dict[str, Any]:
         """Return the JSON Schema of what may be written."""
-        raise NotImplementedError
 
     def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
         return with_info_plain_validator_function(self._validate)
