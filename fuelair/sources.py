@@ -21,7 +21,8 @@ _ALL = (
     Source(
         "cantera-data",
         "Species data nasa_gas.yaml bundled with Cantera (NASA seven-coefficient polynomials, "
-        "200 to 6000 K; each entry there names its origin); Cantera, cantera.org",
+        "200 to 6000 K; each entry there names its origin), N2 and O2 from airNASA9.yaml (nine-coefficient); "
+        "Cantera, cantera.org",
         "read",
     ),
     Source("iso2533", "ISO 2533:1975, Standard Atmosphere (same dry air as US Standard Atmosphere 1976)", "from memory"),

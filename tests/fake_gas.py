@@ -39,7 +39,7 @@ def fake_table() -> SpeciesTable:
     atoms = np.array(list(ATOMS.values()), float)
     mass = atoms @ WEIGHTS
     n = len(mass)
-    data = np.zeros((n, 7))
+    data = np.zeros((n, 9))
     data[:, 0] = CP
     burns = np.array([name.endswith("fuel") for name in ATOMS])
     data[burns, 5] = HEATING_VALUE * mass[burns] / R
@@ -54,7 +54,7 @@ def fake_table() -> SpeciesTable:
         t_max=np.full(n, 1e5),
         forms=~burns,
         inert=np.array([name == "unburned-fuel" for name in ATOMS]),
-        graphite=np.zeros((2, 7)),
+        graphite=np.zeros((2, 9)),
         reference_pressure=REFERENCE_PRESSURE,
     )
 

@@ -190,7 +190,7 @@ def test_limit_below_the_headline_compression_is_an_input_error_with_the_line() 
     (problem,) = caught.value.problems
     assert problem.key == "combustion.pressure_limit"
     assert problem.line == 1 + text.splitlines().index('pressure_limit = "100 bar"')
-    assert "129.8 bar" in problem.allowed
+    assert "129.9 bar" in problem.allowed
     assert problem.value == "100 bar"
 
 

@@ -25,7 +25,7 @@ from fuelair.gas.engine import Array, Chemistry, GasState, Pair, Status, weighte
 from fuelair.gas.frozen import assemble, frozen_state, temperature
 from fuelair.gas.gibbs import equilibrate
 from fuelair.gas.mixture import gibbs, mix
-from fuelair.gas.species import SpeciesTable
+from fuelair.gas.species import SpeciesTable, cantera_thermo
 
 SOLVERS: tuple[tuple[Literal["element_potential"], float], ...] = (
     ("element_potential", 1e-12),
@@ -225,12 +225,7 @@ def _definition(table: SpeciesTable, chosen: npt.NDArray[np.intp]) -> dict[str, 
             {
                 "name": name,
                 "composition": atoms,
-                "thermo": {
-                    "model": "NASA7",
-                    "reference-pressure": table.reference_pressure,
-                    "temperature-ranges": [float(table.t_min[j]), 1000.0, float(table.t_max[j])],
-                    "data": [[float(c) for c in table.low[j]], [float(c) for c in table.high[j]]],
-                },
+                "thermo": cantera_thermo(table, int(j)),
             }
         )
     return {

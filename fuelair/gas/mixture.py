@@ -1,6 +1,6 @@
 """Polynomials of a mixture: mix the coefficients once, then every property is a short formula.
 
-All per kg of gas. Ideal gas, NASA seven-coefficient form with one break at 1000 K.
+All per kg of gas. Ideal gas, NASA form of seven or nine coefficients with one break at 1000 K.
 """
 
 from __future__ import annotations
@@ -8,7 +8,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from fuelair.gas.engine import Array, total, weighted
 from fuelair.gas.species import T_BREAK, R, SpeciesTable
@@ -20,7 +19,7 @@ class Mixture:
 
     Attributes
     ----------
-    low, high : (N, 7) mixed coefficients below and above 1000 K [kmol/kg].
+    low, high : (N, 9) mixed coefficients below and above 1000 K [kmol/kg].
     moles : (N,) amount of gas [kmol/kg].
     mixing : (N,) entropy of mixing, -sum n ln x [kmol/kg].
     t_min, t_max : (N,) common validity range of the species present [K].
@@ -38,9 +37,11 @@ class Mixture:
     def thermal(self, T: Array) -> tuple[Array, Array, Array]:
         """cp [J/(kg K)], h [J/kg] and s at the reference pressure incl. mixing [J/(kg K)] at ``T`` (N,)."""
         a = np.where((T < T_BREAK)[:, None], self.low, self.high)
-        cp = a[:, 0] + T * (a[:, 1] + T * (a[:, 2] + T * (a[:, 3] + T * a[:, 4])))
+        inverse, log_t = 1.0 / T, np.log(T)
+        cp = a[:, 0] + T * (a[:, 1] + T * (a[:, 2] + T * (a[:, 3] + T * a[:, 4]))) + inverse * (a[:, 8] + inverse * a[:, 7])
         h = T * (a[:, 0] + T * (a[:, 1] / 2 + T * (a[:, 2] / 3 + T * (a[:, 3] / 4 + T * (a[:, 4] / 5))))) + a[:, 5]
-        s = a[:, 0] * np.log(T) + a[:, 6] + self.mixing
+        h = h + a[:, 8] * log_t - a[:, 7] * inverse
+        s = a[:, 0] * log_t + a[:, 6] + self.mixing - inverse * (a[:, 8] + 0.5 * inverse * a[:, 7])
         s = s + T * (a[:, 1] + T * (a[:, 2] / 2 + T * (a[:, 3] / 3 + T * (a[:, 4] / 4))))
         return R * cp, R * h, R * s
 
@@ -60,8 +61,8 @@ def mix(table: SpeciesTable, amounts: Array) -> Mixture:
     t_min = np.where(present, table.t_min, 0.0).max(axis=1)
     t_max = np.where(present, table.t_max, np.inf).min(axis=1)
     return Mixture(
-        low=both[:, :7],
-        high=both[:, 7:],
+        low=both[:, :9],
+        high=both[:, 9:],
         moles=moles,
         mixing=total(terms),
         t_min=t_min,
@@ -72,25 +73,27 @@ def mix(table: SpeciesTable, amounts: Array) -> Mixture:
 
 def gibbs(table: SpeciesTable, T: Array) -> Array:
     """Standard molar Gibbs energy over R T of every species at ``T`` (N,) -> (N, S)."""
-    return _gibbs_over_rt(np.where((T < T_BREAK)[:, None, None], table.low, table.high), T[:, None])
+    _, h, s = species_thermal(table, T)
+    return h - s
 
 
 def species_thermal(table: SpeciesTable, T: Array) -> tuple[Array, Array, Array]:
     """cp/R, h/(R T) and standard s/R of every species at ``T`` (N,), each (N, S)."""
-    a = np.where((T < T_BREAK)[:, None, None], table.low, table.high)
-    t = T[:, None]
-    cp = a[..., 0] + t * (a[..., 1] + t * (a[..., 2] + t * (a[..., 3] + t * a[..., 4])))
-    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5))) + a[..., 5] / t
-    s = a[..., 0] * np.log(t) + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
-    return cp, h, s
+    return _thermal(np.where((T < T_BREAK)[:, None, None], table.low, table.high), T[:, None])
 
 
 def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:
     """Molar Gibbs energy over R T of graphite at ``T`` (N,) -> (N,)."""
-    return _gibbs_over_rt(np.where((T < T_BREAK)[:, None], table.graphite[0], table.graphite[1]), T)
+    _, h, s = _thermal(np.where((T < T_BREAK)[:, None], table.graphite[0], table.graphite[1]), T)
+    return h - s
 
 
-def _gibbs_over_rt(a: Array, t: Array) -> npt.NDArray[np.float64]:
-    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5))) + a[..., 5] / t
-    s = a[..., 0] * np.log(t) + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
-    return np.asarray(h - s)
+def _thermal(a: Array, t: Array) -> tuple[Array, Array, Array]:
+    """cp/R, h/(R T), s/R from coefficients (..., 9) at temperatures (...)."""
+    inverse, log_t = 1.0 / t, np.log(t)
+    cp = a[..., 0] + t * (a[..., 1] + t * (a[..., 2] + t * (a[..., 3] + t * a[..., 4])))
+    cp = cp + inverse * (a[..., 8] + inverse * a[..., 7])
+    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5)))
+    h = h + inverse * (a[..., 5] + a[..., 8] * log_t - inverse * a[..., 7])
+    s = a[..., 0] * log_t + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
+    return cp, h, s - inverse * (a[..., 8] + 0.5 * inverse * a[..., 7])

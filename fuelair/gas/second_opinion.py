@@ -17,7 +17,7 @@ import numpy as np
 from fuelair import resources
 from fuelair.errors import DataError
 from fuelair.gas.engine import Array, GasState
-from fuelair.gas.species import T_BREAK, SpeciesTable
+from fuelair.gas.species import SpeciesTable, cantera_thermo
 from fuelair.roots import bracketed
 
 UNKNOWN_SHARE = 2e-3
@@ -69,17 +69,11 @@ def _phase(table: SpeciesTable, names: tuple[str, ...]) -> Any:
     for name in names:
         j, own = table.index(name), _constants()[name]
         atoms = {e: float(a) for e, a in zip(table.elements, table.atoms[j], strict=True) if a}
-        ranges = [float(table.t_min[j]), T_BREAK, float(table.t_max[j])]
         species.append(
             {
                 "name": name,
                 "composition": atoms,
-                "thermo": {
-                    "model": "NASA7",
-                    "reference-pressure": table.reference_pressure,
-                    "temperature-ranges": ranges,
-                    "data": [[float(c) for c in table.low[j]], [float(c) for c in table.high[j]]],
-                },
+                "thermo": cantera_thermo(table, j),
                 "critical-parameters": {
                     "critical-temperature": own["temperature"],
                     "critical-pressure": own["pressure"],

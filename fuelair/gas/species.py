@@ -2,9 +2,10 @@
 
 Source of the thermodynamic data: the file ``nasa_gas.yaml`` bundled with Cantera (NASA
 seven-coefficient polynomials with a break at 1000 K, 200 to 6000 K; each entry there names its
-origin). ``mechanisms/phases/products.toml`` names which of them make up burned gas. The fuel's
-vapour arrives as plain numbers: its heating value fixes the enthalpy, named species of the same
-file lend the shape of cp(T).
+origin); nitrogen and oxygen in the nine-coefficient form of ``airNASA9.yaml``, also bundled.
+``mechanisms/phases/products.toml`` names which of them make up burned gas. The fuel's vapour arrives
+as plain numbers: its heating value fixes the enthalpy, named species of the same file lend the shape
+of cp(T).
 
 The bundled polynomials jump by up to 3e-7 R T at their break; here the upper range is shifted by
 that jump, so that enthalpy and entropy are continuous and every inversion has one root.
@@ -26,13 +27,12 @@ import numpy.typing as npt
 from fuelair import resources
 from fuelair.errors import DataError
 from fuelair.fuel import Vapour
+from fuelair.gas.polynomials import T_BREAK as T_BREAK
+from fuelair.gas.polynomials import R as R
+from fuelair.gas.polynomials import enthalpy_at, entropy_at, limits_of, ranges_of
 
 Array = npt.NDArray[np.float64]
 
-R = 8314.46261815324
-"""Molar gas constant, exact by the SI of 2019 [J/(kmol K)]."""
-T_BREAK = 1000.0
-"""Temperature at which the two ranges of every polynomial meet [K]."""
 T_STANDARD = 298.15
 """Reference temperature of heating values and formation enthalpies [K]."""
 FUEL = "fuel"
@@ -40,6 +40,7 @@ UNBURNED = "unburned-fuel"
 GRAPHITE_FILE, GRAPHITE = "nasa_condensed.yaml", "C(gr)"
 _PHASES = "products.toml"
 _SPECIES_FILE = "nasa_gas.yaml"
+NINE_FILE = "airNASA9.yaml"
 
 
 @dataclass(frozen=True, eq=False)
@@ -53,11 +54,11 @@ class SpeciesTable:
     elements : E element symbols.
     atoms : (S, E) atoms per molecule (``unburned-fuel`` has its atoms here too).
     molar_mass : (S,) [kg/kmol].
-    low, high : (S, 7) NASA coefficients below and above 1000 K.
+    low, high : (S, 9) NASA coefficients below and above 1000 K, in the order of `polynomials`.
     t_min, t_max : (S,) validity limits [K].
     forms : (S,) mask of the species that equilibrium may form.
     inert : (S,) mask of species that never react.
-    graphite : (2, 7) NASA coefficients of graphite, to see when solid carbon would form.
+    graphite : (2, 9) NASA coefficients of graphite, to see when solid carbon would form.
     reference_pressure : standard-state pressure of the data [Pa].
     """
 
@@ -94,7 +95,7 @@ class SpeciesTable:
 
     @cached_property
     def coefficients(self) -> Array:
-        """(S, 14) both ranges side by side, for mixing."""
+        """(S, 18) both ranges side by side, for mixing."""
         return np.hstack([self.low, self.high])
 
     @cached_property
@@ -125,7 +126,8 @@ def _sets() -> dict[str, tuple[str, ...]]:
     path = resources.folder("mechanisms/phases") / _PHASES
     try:
         data = tomllib.loads(path.read_text(encoding="utf-8"))
-        return {n: tuple(data[n]) for n in ("products", "sulfur")}
+        nine = data["nine_coefficients"]
+        return {n: tuple(data[n]) for n in ("products", "sulfur")} | {"nine_coefficients": tuple(nine["species"])}
     except (OSError, KeyError, tomllib.TOMLDecodeError) as error:
         raise DataError(f"species sets cannot be read from {path}: {error}") from None
 
@@ -149,59 +151,51 @@ def _entries(file: str) -> dict[str, str]:
 
 
 @lru_cache(maxsize=64)
-def _species(names: tuple[str, ...], file: str = _SPECIES_FILE) -> dict[str, Any]:
-    """Species of a bundled data file by name; only those asked for are built."""
+def _species(names: tuple[str, ...], file: str | None = None) -> dict[str, Any]:
+    """Species by name from a bundled data file; by default each from the file that ``mechanisms/phases`` names."""
     import cantera as ct
 
-    entries = _entries(file)
-    missing = [n for n in names if n not in entries]
+    places = {n: file or _file_of(n) for n in names}
+    missing = [n for n, place in places.items() if n not in _entries(place)]
     if missing:
-        raise DataError(f"species not in {file}: {', '.join(missing)}")
-    made = ct.Species.list_from_yaml("".join(entries[n].rstrip() + "\n" for n in names))
-    return dict(zip(names, made, strict=True))
+        raise DataError(f"species not in {_SPECIES_FILE}: {', '.join(missing)}")
+    made = ct.Species.list_from_yaml("".join(_entries(place)[n].rstrip() + "\n" for n, place in places.items()))
+    return dict(zip(places, made, strict=True))
+
+
+def _file_of(name: str) -> str:
+    nine = _sets()["nine_coefficients"]
+    return NINE_FILE if name in nine else _SPECIES_FILE
 
 
 def data_versions() -> dict[str, str]:
     """Version of Cantera, whose bundled species data are used."""
     import cantera as ct
 
-    return {"cantera": str(ct.__version__), "species_data": f"{_SPECIES_FILE} of Cantera {ct.__version__}"}
+    return {
+        "cantera": str(ct.__version__),
+        "species_data": f"{_SPECIES_FILE}, N2 and O2 of {NINE_FILE}, of Cantera {ct.__version__}",
+    }
 
 
-def _ranges(species: Any) -> Array:
-    """(2, 7) coefficients below and above 1000 K, made continuous at the break."""
-    thermo = species.thermo
-    c = np.asarray(thermo.coeffs, dtype=float)
-    middle, high, low = float(c[0]), c[1:8].copy(), c[8:15].copy()
-    if middle >= thermo.max_temp:  # one range only
-        high = low.copy()
-    elif middle != T_BREAK:
-        raise DataError(f"species {species.name}: polynomial break at {middle} K, expected {T_BREAK} K")
-    t = T_BREAK
-    difference = low - high
-    powers_h = np.array([t, t**2 / 2, t**3 / 3, t**4 / 4, t**5 / 5, 1.0, 0.0])
-    powers_s = np.array([np.log(t), t, t**2 / 2, t**3 / 3, t**4 / 4, 0.0, 1.0])
-    high[5] += float(np.sum(difference * powers_h))
-    high[6] += float(np.sum(difference * powers_s))
-    return np.vstack([low, high])
-
-
-def _enthalpy(ranges: Array, t: float) -> float:
-    a = ranges[0] if t < T_BREAK else ranges[1]
-    return float(R * (a[0] * t + a[1] * t**2 / 2 + a[2] * t**3 / 3 + a[3] * t**4 / 4 + a[4] * t**5 / 5 + a[5]))
-
-
-def _entropy(ranges: Array, t: float) -> float:
-    a = ranges[0] if t < T_BREAK else ranges[1]
-    return float(R * (a[0] * np.log(t) + a[1] * t + a[2] * t**2 / 2 + a[3] * t**3 / 3 + a[4] * t**4 / 4 + a[6]))
+def cantera_thermo(table: SpeciesTable, j: int) -> dict[str, Any]:
+    """Thermodynamic entry of species ``j`` for a Cantera phase definition, from the table's own numbers."""
+    rows = [[float(c) for c in row] for row in (table.low[j], table.high[j])]
+    nine = any(row[7] or row[8] for row in rows)
+    return {
+        "model": "NASA9" if nine else "NASA7",
+        "reference-pressure": table.reference_pressure,
+        "temperature-ranges": [float(table.t_min[j]), T_BREAK, float(table.t_max[j])],
+        "data": [[*row[7:], *row[:7]] if nine else row[:7] for row in rows],
+    }
 
 
 def _vapour_ranges(vapour: Vapour, mass: float) -> tuple[Array, float, float]:
     """Polynomial of a fuel vapour: shape from named species, enthalpy from the heating value."""
     species = _species(tuple(dict.fromkeys([*(n for n, _ in vapour.shape), "O2", "CO2", "H2O", "N2", "SO2"])))
-    ranges = np.zeros((2, 7))
+    ranges = np.zeros((2, 9))
     for name, share in vapour.shape:
-        ranges += share * _ranges(species[name])
+        ranges += share * ranges_of(species[name])
     atoms = dict(vapour.atoms)
     products = {
         "CO2": atoms.get("C", 0.0),
@@ -210,13 +204,13 @@ def _vapour_ranges(vapour: Vapour, mass: float) -> tuple[Array, float, float]:
         "SO2": atoms.get("S", 0.0),
     }
     oxygen = products["CO2"] + products["H2O"] / 2 + products["SO2"] - atoms.get("O", 0.0) / 2
-    target = vapour.lower_heating_value * mass - oxygen * _enthalpy(_ranges(species["O2"]), T_STANDARD)
-    target += sum(n * _enthalpy(_ranges(species[k]), T_STANDARD) for k, n in products.items())
-    ranges[:, 5] += (target - _enthalpy(ranges, T_STANDARD)) / R
+    target = vapour.lower_heating_value * mass - oxygen * enthalpy_at(ranges_of(species["O2"]), T_STANDARD)
+    target += sum(n * enthalpy_at(ranges_of(species[k]), T_STANDARD) for k, n in products.items())
+    ranges[:, 5] += (target - enthalpy_at(ranges, T_STANDARD)) / R
     if vapour.entropy is not None:
-        ranges[:, 6] += (vapour.entropy - _entropy(ranges, T_STANDARD)) / R
-    low = max(float(species[n].thermo.min_temp) for n, _ in vapour.shape)
-    high = min(float(species[n].thermo.max_temp) for n, _ in vapour.shape)
+        ranges[:, 6] += (vapour.entropy - entropy_at(ranges, T_STANDARD)) / R
+    low = max(limits_of(species[n])[0] for n, _ in vapour.shape)
+    high = min(limits_of(species[n])[1] for n, _ in vapour.shape)
     return ranges, low, high
 
 
@@ -258,9 +252,9 @@ def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
     elements = ("C", "H", "O", "N", "Ar") + (("S",) if sulfur else ())
     weight = _atomic_weights(elements)
     atoms = [[float(species[n].composition.get(e, 0.0)) for e in elements] for n in products]
-    ranges = [_ranges(species[n]) for n in products]
-    t_min = [float(species[n].thermo.min_temp) for n in products]
-    t_max = [float(species[n].thermo.max_temp) for n in products]
+    ranges = [ranges_of(species[n]) for n in products]
+    t_min = [limits_of(species[n])[0] for n in products]
+    t_max = [limits_of(species[n])[1] for n in products]
     reference = {float(species[n].thermo.reference_pressure) for n in products}
     names = list(products)
     forms = [True] * len(names)
@@ -292,7 +286,7 @@ def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
         t_max=np.array(t_max),
         forms=np.array(forms),
         inert=np.array(inert),
-        graphite=_ranges(_species((GRAPHITE,), GRAPHITE_FILE)[GRAPHITE]),
+        graphite=ranges_of(_species((GRAPHITE,), GRAPHITE_FILE)[GRAPHITE]),
         reference_pressure=reference.pop(),
     )
 

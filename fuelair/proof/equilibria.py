@@ -13,8 +13,8 @@ from fuelair.errors import UnsolvedError
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.complete import water_gas_constant
 from fuelair.gas.engine import total
-from fuelair.gas.mixture import gibbs, mix
-from fuelair.gas.species import T_BREAK, R, SpeciesTable, build
+from fuelair.gas.mixture import gibbs, mix, species_thermal
+from fuelair.gas.species import R, SpeciesTable, build
 from fuelair.proof import packages
 from fuelair.proof.registry import computation, lookup, one, solved
 from fuelair.roots import bracketed
@@ -198,9 +198,9 @@ def species_property(*, species: str, T: float, result: str) -> float:
 
 
 def _standard_enthalpy(table: SpeciesTable, species: str) -> float:
-    a = table.low[table.index(species)] if T_REFERENCE < T_BREAK else table.high[table.index(species)]
-    powers = [T_REFERENCE ** (i + 1) / (i + 1) for i in range(5)]
-    return float(R / 1e3 * (sum(c * x for c, x in zip(a[:5], powers, strict=True)) + a[5]))
+    """Molar enthalpy at 298.15 K on the elements' datum [J/mol]."""
+    _, h, _ = species_thermal(table, one(T_REFERENCE))
+    return float(h[0, table.index(species)]) * R / 1e3 * T_REFERENCE
 
 
 @lookup("janaf-species")
