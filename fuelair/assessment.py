@@ -15,7 +15,7 @@ from fuelair.cycle.result import CycleResult
 from fuelair.errors import InputError, Problem
 from fuelair.fuel import Fuel
 from fuelair.gas.engine import Status
-from fuelair.gas.species import R
+from fuelair.gas.polynomials import R
 from fuelair.sources import Source
 
 if TYPE_CHECKING:

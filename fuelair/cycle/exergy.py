@@ -19,7 +19,8 @@ from fuelair.cycle.fuel_air import Run
 from fuelair.fuel import Fuel
 from fuelair.gas.engine import Array, GasState, weighted
 from fuelair.gas.mixture import gibbs, mix
-from fuelair.gas.species import FUEL, R, SpeciesTable, shape_is_molecule
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import FUEL, SpeciesTable, shape_is_molecule
 
 T0, P0 = 298.15, 101325.0
 """Dead state [K], [Pa]."""

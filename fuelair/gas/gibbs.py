@@ -23,7 +23,8 @@ import numpy.typing as npt
 from fuelair.gas.complete import composition
 from fuelair.gas.engine import Array, Mask, Pair, total, weighted
 from fuelair.gas.mixture import species_thermal
-from fuelair.gas.species import R, SpeciesTable
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import SpeciesTable
 
 MAX_ITERATIONS = 200
 TOLERANCE = 1e-13

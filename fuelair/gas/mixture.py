@@ -10,7 +10,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from fuelair.gas.engine import Array, total, weighted
-from fuelair.gas.species import T_BREAK, R, SpeciesTable
+from fuelair.gas.polynomials import T_BREAK, R
+from fuelair.gas.species import SpeciesTable
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,14 +37,8 @@ class Mixture:
 
     def thermal(self, T: Array) -> tuple[Array, Array, Array]:
         """cp [J/(kg K)], h [J/kg] and s at the reference pressure incl. mixing [J/(kg K)] at ``T`` (N,)."""
-        a = np.where((T < T_BREAK)[:, None], self.low, self.high)
-        inverse, log_t = 1.0 / T, np.log(T)
-        cp = a[:, 0] + T * (a[:, 1] + T * (a[:, 2] + T * (a[:, 3] + T * a[:, 4]))) + inverse * (a[:, 8] + inverse * a[:, 7])
-        h = T * (a[:, 0] + T * (a[:, 1] / 2 + T * (a[:, 2] / 3 + T * (a[:, 3] / 4 + T * (a[:, 4] / 5))))) + a[:, 5]
-        h = h + a[:, 8] * log_t - a[:, 7] * inverse
-        s = a[:, 0] * log_t + a[:, 6] + self.mixing - inverse * (a[:, 8] + 0.5 * inverse * a[:, 7])
-        s = s + T * (a[:, 1] + T * (a[:, 2] / 2 + T * (a[:, 3] / 3 + T * (a[:, 4] / 4))))
-        return R * cp, R * h, R * s
+        cp, h, s = _thermal(np.where((T < T_BREAK)[:, None], self.low, self.high), T)
+        return R * cp, R * T * h, R * (s + self.mixing)
 
     def gas_constant(self) -> Array:
         """Specific gas constant [J/(kg K)], shape (N,)."""

@@ -17,8 +17,9 @@ from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, GasStat
 from fuelair.gas.frozen import frozen_state
 from fuelair.gas.gibbs import Departure, equilibrate
 from fuelair.gas.mixture import Mixture, mix
+from fuelair.gas.polynomials import R
 from fuelair.gas.real_gas import Residual, VirialTable, density, residual, valid, virial_table
-from fuelair.gas.species import R, SpeciesTable
+from fuelair.gas.species import SpeciesTable
 
 TOLERANCE = 1e-14
 STALL = 1e-11

@@ -25,7 +25,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fuelair.gas.engine import Array, Mask, total, weighted
-from fuelair.gas.species import R
+from fuelair.gas.polynomials import R
 from fuelair.gas.virial_data import VirialTable, fluids, virial_table
 
 __all__ = ["DENSITY_LIMIT", "Residual", "VirialTable", "density", "fluids", "residual", "valid", "virial_table"]

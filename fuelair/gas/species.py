@@ -27,9 +27,7 @@ import numpy.typing as npt
 from fuelair import resources
 from fuelair.errors import DataError
 from fuelair.fuel import Vapour
-from fuelair.gas.polynomials import T_BREAK as T_BREAK
-from fuelair.gas.polynomials import R as R
-from fuelair.gas.polynomials import enthalpy_at, entropy_at, limits_of, ranges_of
+from fuelair.gas.polynomials import T_BREAK, R, enthalpy_at, entropy_at, limits_of, ranges_of
 
 Array = npt.NDArray[np.float64]
 
@@ -39,8 +37,6 @@ FUEL = "fuel"
 UNBURNED = "unburned-fuel"
 GRAPHITE_FILE, GRAPHITE = "nasa_condensed.yaml", "C(gr)"
 _PHASES = "products.toml"
-_SPECIES_FILE = "nasa_gas.yaml"
-NINE_FILE = "airNASA9.yaml"
 
 
 @dataclass(frozen=True, eq=False)
@@ -120,14 +116,25 @@ class SpeciesTable:
         return np.asarray(n / float(np.sum(n * self.molar_mass)))
 
 
+@dataclass(frozen=True, slots=True)
+class _Phases:
+    """Names of the species of burned gas, and the bundled data files that they come from."""
+
+    products: tuple[str, ...]
+    sulfur: tuple[str, ...]
+    file: str
+    nine_file: str
+    nine: tuple[str, ...]
+
+
 @lru_cache(maxsize=1)
-def _sets() -> dict[str, tuple[str, ...]]:
-    """Names of the species sets in ``mechanisms/phases``."""
+def _phases() -> _Phases:
+    """Species sets and their data files, read from ``mechanisms/phases``."""
     path = resources.folder("mechanisms/phases") / _PHASES
     try:
         data = tomllib.loads(path.read_text(encoding="utf-8"))
         nine = data["nine_coefficients"]
-        return {n: tuple(data[n]) for n in ("products", "sulfur")} | {"nine_coefficients": tuple(nine["species"])}
+        return _Phases(tuple(data["products"]), tuple(data["sulfur"]), data["data"], nine["file"], tuple(nine["species"]))
     except (OSError, KeyError, tomllib.TOMLDecodeError) as error:
         raise DataError(f"species sets cannot be read from {path}: {error}") from None
 
@@ -156,25 +163,26 @@ def _species(names: tuple[str, ...], file: str | None = None) -> dict[str, Any]:
     import cantera as ct
 
     places = {n: file or _file_of(n) for n in names}
-    missing = [n for n, place in places.items() if n not in _entries(place)]
+    missing = {n: place for n, place in places.items() if n not in _entries(place)}
     if missing:
-        raise DataError(f"species not in {_SPECIES_FILE}: {', '.join(missing)}")
+        raise DataError(f"species not in {' or '.join(sorted(set(missing.values())))}: {', '.join(missing)}")
     made = ct.Species.list_from_yaml("".join(_entries(place)[n].rstrip() + "\n" for n, place in places.items()))
     return dict(zip(places, made, strict=True))
 
 
 def _file_of(name: str) -> str:
-    nine = _sets()["nine_coefficients"]
-    return NINE_FILE if name in nine else _SPECIES_FILE
+    phases = _phases()
+    return phases.nine_file if name in phases.nine else phases.file
 
 
 def data_versions() -> dict[str, str]:
     """Version of Cantera, whose bundled species data are used."""
     import cantera as ct
 
+    phases = _phases()
     return {
         "cantera": str(ct.__version__),
-        "species_data": f"{_SPECIES_FILE}, N2 and O2 of {NINE_FILE}, of Cantera {ct.__version__}",
+        "species_data": f"{phases.file}, {' and '.join(phases.nine)} of {phases.nine_file}, of Cantera {ct.__version__}",
     }
 
 
@@ -244,9 +252,9 @@ def build(vapour: Vapour | None = None, *, extra: Sequence[str] = ()) -> Species
 
 @lru_cache(maxsize=64)
 def _build(vapour: Vapour | None, extra: tuple[str, ...]) -> SpeciesTable:
-    sets = _sets()
+    phases = _phases()
     sulfur = vapour is not None and any(e == "S" for e, _ in vapour.atoms)
-    products = list(sets["products"]) + (list(sets["sulfur"]) if sulfur else [])
+    products = list(phases.products) + (list(phases.sulfur) if sulfur else [])
     products += [n for n in extra if n not in products]
     species = _species(tuple(products))
     elements = ("C", "H", "O", "N", "Ar") + (("S",) if sulfur else ())

@@ -14,7 +14,8 @@ from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.complete import water_gas_constant
 from fuelair.gas.engine import total
 from fuelair.gas.mixture import gibbs, mix, species_thermal
-from fuelair.gas.species import R, SpeciesTable, build
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import SpeciesTable, build
 from fuelair.proof import packages
 from fuelair.proof.registry import computation, lookup, one, solved
 from fuelair.roots import bracketed

@@ -9,10 +9,11 @@ import numpy as np
 
 from fuelair.gas.engine import Array, GasState, total
 from fuelair.gas.mixture import mix
+from fuelair.gas.polynomials import R
 from fuelair.gas.real_engine import RealGas
 from fuelair.gas.real_gas import density, residual, valid, virial_table
 from fuelair.gas.second_opinion import compression_pressure
-from fuelair.gas.species import R, SpeciesTable, build
+from fuelair.gas.species import SpeciesTable, build
 from fuelair.proof.registry import computation, lookup, one, pick, solved
 
 LEMMON_AIR = {"N2": 0.7812, "O2": 0.2096, "Ar": 0.0092}

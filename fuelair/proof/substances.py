@@ -11,7 +11,8 @@ from fuelair.air import dry_air, humidity_ratio, standard_atmosphere, water_dew_
 from fuelair.cycle.exergy import P0, T0, element_potentials, standard_vapour_exergy
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.mixture import gibbs, mix
-from fuelair.gas.species import R, build
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import build
 from fuelair.proof import packages
 from fuelair.proof.equilibria import species_property
 from fuelair.proof.flames import named_vapour
