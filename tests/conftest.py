@@ -6,6 +6,7 @@ import importlib.util
 import sys
 from pathlib import Path
 
+import cantera as ct
 import numpy as np
 import pytest
 
@@ -105,6 +106,15 @@ def _fake_module():
 @pytest.fixture(scope="session")
 def gas():
     return CanteraGas()
+
+
+@pytest.fixture(scope="session")
+def bundled_species():
+    """Cantera's own species by name, N2 and O2 from its nine-coefficient file; read as text, see `gas.species`."""
+    folder = Path(ct.__file__).parent / "data"
+    files = ("nasa_gas.yaml", "airNASA9.yaml")
+    gas, air = (ct.Species.list_from_yaml((folder / f).read_text(encoding="utf-8"), "species") for f in files)
+    return {s.name: s for s in gas} | {s.name: s for s in air if s.name in ("N2", "O2")}
 
 
 @pytest.fixture(scope="session")

@@ -12,7 +12,8 @@ import numpy as np
 from fuelair.fuel import Fuel, Vapour
 from fuelair.gas.complete import composition
 from fuelair.gas.engine import GasState, Status, total
-from fuelair.gas.species import R, SpeciesTable
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import SpeciesTable
 
 K = 1.4
 CP = K / (K - 1.0)  # cp over R, per mole

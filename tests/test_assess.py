@@ -114,15 +114,15 @@ def test_engine_figures_agree_with_each_other(demos: dict[str, fuelair.Assessmen
     for a in demos.values():
         e, f = a.engine_figures, a.figures()
         assert None not in (e["indicated_power_W"], e["fuel_mass_flow_kg_per_s"], f["isfc_kg_per_J"])
-        assert e["fuel_mass_flow_kg_per_s"] == pytest.approx(e["indicated_power_W"] * f["isfc_kg_per_J"], rel=1e-12)  # type: ignore[operator]
+        assert e["fuel_mass_flow_kg_per_s"] == pytest.approx(e["indicated_power_W"] * f["isfc_kg_per_J"], rel=1e-12)
         assert e["exhaust_mass_flow_kg_per_s"] == pytest.approx(
             e["air_mass_flow_kg_per_s"] + e["fuel_mass_flow_kg_per_s"], rel=1e-9
-        )  # type: ignore[operator]
+        )
         swept = a.swept_volume
         assert swept is not None
         assert a.case.engine.speed is not None
         rate = a.case.engine.speed * 2 / a.case.engine.strokes_per_cycle * a.case.engine.cylinders
-        assert e["net_indicated_power_W"] == pytest.approx(f["imep_net_Pa"] * swept * rate, rel=1e-12)  # type: ignore[operator]
+        assert e["net_indicated_power_W"] == pytest.approx(f["imep_net_Pa"] * swept * rate, rel=1e-12)
 
 
 def test_exhaust_equivalence_ratio_is_that_of_the_fresh_charge(demos: dict[str, fuelair.Assessment]) -> None:
@@ -147,17 +147,18 @@ def test_fuel_mass_gives_back_the_equivalence_ratio() -> None:
     assert again.charge_figures()["equivalence_ratio"] == pytest.approx(0.9, rel=1e-10)
 
 
+CUT_OFF = {
+    "fuel.name": "diesel",
+    "fuel.admission": "direct",
+    "engine.compression_ratio": 18.0,
+    "combustion.heat_addition": "constant-pressure",
+    "charge.equivalence_ratio": None,
+}
+"""Instead of the amount of fuel, the cut-off ratio is given."""
+
+
 def test_cutoff_ratio_gives_back_itself() -> None:
-    case = small().replace(
-        {
-            "fuel.name": "diesel",
-            "fuel.admission": "direct",
-            "engine.compression_ratio": 18.0,
-            "combustion.heat_addition": "constant-pressure",
-            "charge.equivalence_ratio": None,
-            "combustion.cutoff_ratio": 2.2,
-        }
-    )
+    case = small().replace(CUT_OFF | {"combustion.cutoff_ratio": 2.2})
     a = fuelair.assess(case)
     assert a.figures()["cutoff_ratio"] == pytest.approx(2.2, rel=1e-10)
     same = a.companions["same-cutoff-ratio"]["air-cold"].figures
@@ -167,16 +168,7 @@ def test_cutoff_ratio_gives_back_itself() -> None:
 
 
 def test_a_cutoff_ratio_out_of_reach_is_a_named_status() -> None:
-    case = small().replace(
-        {
-            "fuel.name": "diesel",
-            "fuel.admission": "direct",
-            "engine.compression_ratio": 18.0,
-            "combustion.heat_addition": "constant-pressure",
-            "charge.equivalence_ratio": None,
-            "combustion.cutoff_ratio": 9.0,
-        }
-    )
+    case = small().replace(CUT_OFF | {"combustion.cutoff_ratio": 9.0})
     with pytest.raises(fuelair.UnsolvedError) as caught:
         fuelair.assess(case)
     assert caught.value.status == "cutoff-not-reached"
@@ -226,8 +218,8 @@ def test_rich_charges_are_said_to_be_rich_and_offer_oxygen_limited_heat() -> Non
     a = fuelair.assess(small(charge__equivalence_ratio=1.25))
     assert any(w.startswith("Rich") for w in a.warnings)
     limited = a.companions["oxygen-limited-heat"]["air-cold"].figures["heat_added_J_per_kg"][0]
-    assert limited == pytest.approx(a.charge_figures()["heat_added_J_per_kg"] / 1.25, rel=1e-9)  # type: ignore[operator]
-    assert a.exhaust_figures["exhaust_CO_dry"] > 0.02  # type: ignore[operator]
+    assert limited == pytest.approx(a.charge_figures()["heat_added_J_per_kg"] / 1.25, rel=1e-9)
+    assert a.exhaust_figures["exhaust_CO_dry"] > 0.02
 
 
 def test_recirculated_exhaust_counts_its_oxygen() -> None:
@@ -244,7 +236,7 @@ def test_recirculated_exhaust_counts_its_oxygen() -> None:
             }
         )
     )
-    assert 1 / a.charge_figures()["oxygen_excess_ratio"] == pytest.approx(0.547, abs=5e-4)  # type: ignore[operator]
+    assert 1 / a.charge_figures()["oxygen_excess_ratio"] == pytest.approx(0.547, abs=5e-4)
 
 
 def test_resolved_case_reads_back_to_the_same_result() -> None:

@@ -188,9 +188,9 @@ def test_replace_checks_again() -> None:
 def test_case_is_frozen_and_travels() -> None:
     case = demo("workboat")
     with pytest.raises(ValueError, match="frozen"):
-        case.title = "other"  # type: ignore[misc]
+        case.title = "other"
     with pytest.raises(ValueError, match="frozen"):
-        case.charge.pressure = 1.0  # type: ignore[misc]
+        case.charge.pressure = 1.0
     for twin in (copy.deepcopy(case), pickle.loads(pickle.dumps(case))):
         assert twin == case
         assert hash(twin) == hash(case)
@@ -246,7 +246,7 @@ def test_json_schema_accepts_the_raw_demos(name: str) -> None:
 )
 def test_json_schema_refuses_what_the_case_refuses(section: str, key: str, value: object) -> None:
     raw = copy.deepcopy(PLAIN)
-    raw.setdefault(section, {})[key] = value  # type: ignore[index]
+    raw.setdefault(section, {})[key] = value
     with pytest.raises(jsonschema.ValidationError):
         jsonschema.validate(raw, SCHEMA)
     with pytest.raises(InputError):

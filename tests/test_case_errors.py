@@ -315,7 +315,7 @@ def test_dictionaries_have_no_line() -> None:
     assert (problem.file, problem.line, problem.quoted, problem.key) == ("", 0, "", "charge.pressure")
     for wrong in ([], "text", {1: 2}, None):
         with pytest.raises(InputError):
-            Case.from_dict(wrong)  # type: ignore[arg-type]
+            Case.from_dict(wrong)
 
 
 def test_lines_of_every_spelling_of_a_key() -> None:

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import numpy as np
 import pytest
 
@@ -12,17 +10,6 @@ from fuelair.cycle.air_standard import ColdAir, run, variable_air
 from fuelair.cycle.geometry import Volumes
 from fuelair.gas.engine import Status
 from fuelair.gas.species import build
-
-
-def bundled_species(ct):
-    """Cantera's own species, N2 and O2 from its nine-coefficient file; read as text, see `gas.species`."""
-    folder = Path(ct.__file__).parent / "data"
-    named = {}
-    for file in ("nasa_gas.yaml", "airNASA9.yaml"):
-        made = ct.Species.list_from_yaml((folder / file).read_text(encoding="utf-8"), "species")
-        named |= {s.name: s for s in made if file == "nasa_gas.yaml" or s.name in ("N2", "O2")}
-    return named
-
 
 COLD = ColdAir()
 CV, CP = 287.05 / 0.4, 287.05 * 1.4 / 0.4
@@ -103,11 +90,11 @@ def test_every_pair_of_the_cold_air_leads_back():
 
 
 @pytest.fixture(scope="module")
-def integrals():
+def integrals(bundled_species):
     """cp of dry air from Cantera's own phase, and its integrals by Gauss quadrature, split at the break of the data."""
     ct = pytest.importorskip("cantera")
     x = {k: v for k, v in dry_air().composition().items() if v > 0.0}
-    phase = ct.Solution(thermo="ideal-gas", species=[s for s in bundled_species(ct).values() if s.name in x])
+    phase = ct.Solution(thermo="ideal-gas", species=[s for s in bundled_species.values() if s.name in x])
     phase.TPX = 300.0, 1e5, x
     gas_constant = ct.gas_constant / phase.mean_molecular_weight
     nodes, weights = np.polynomial.legendre.leggauss(12)

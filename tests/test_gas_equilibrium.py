@@ -10,7 +10,8 @@ import pytest
 from fuelair import fuel as fuels
 from fuelair.gas.engine import Status, weighted
 from fuelair.gas.mixture import gibbs
-from fuelair.gas.species import R, build
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import build
 
 TABLE = build(fuels.load("iso-octane").vapour)
 PAIRS = ("TP", "TV", "HP", "UV", "SP", "SV", "ST")

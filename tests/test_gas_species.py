@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import numpy as np
 import pytest
 
@@ -11,24 +9,12 @@ from fuelair import fuel as fuels
 from fuelair.errors import DataError
 from fuelair.fuel import Vapour
 from fuelair.gas.mixture import gibbs, mix
-from fuelair.gas.species import FUEL, T_BREAK, UNBURNED, R, build, data_versions, shape_is_molecule
-
-
-def bundled_species(ct):
-    """Cantera's own species, N2 and O2 from its nine-coefficient file; read as text, see `gas.species`."""
-    folder = Path(ct.__file__).parent / "data"
-    named = {}
-    for file in ("nasa_gas.yaml", "airNASA9.yaml"):
-        made = ct.Species.list_from_yaml((folder / file).read_text(encoding="utf-8"), "species")
-        named |= {s.name: s for s in made if file == "nasa_gas.yaml" or s.name in ("N2", "O2")}
-    return named
-
+from fuelair.gas.polynomials import T_BREAK, R
+from fuelair.gas.species import FUEL, UNBURNED, build, data_versions, shape_is_molecule
 
 TABLE = build()
-T_LOW, T_HIGH = (
-    (200.0, 298.15, 650.0, 999.9),
-    (1000.1, 2000.0, 3500.0, 5999.9),
-)  # at 6000 K the nine-coefficient data change range
+T_LOW = (200.0, 298.15, 650.0, 999.9)
+T_HIGH = (1000.1, 2000.0, 3500.0, 5999.9)  # at 6000 K the nine-coefficient data change range
 
 
 def pure(table, name):
@@ -45,9 +31,8 @@ def ours(name, T):
 
 
 @pytest.fixture(scope="module")
-def bundled():
-    ct = pytest.importorskip("cantera")
-    return {s.name: s.thermo for s in bundled_species(ct).values()}
+def bundled(bundled_species):
+    return {s.name: s.thermo for s in bundled_species.values()}
 
 
 @pytest.mark.parametrize("T", T_LOW)
@@ -83,9 +68,8 @@ def test_enthalpy_and_entropy_are_continuous_at_the_break(name):
     assert below[2] == pytest.approx(above[2], abs=1e-12 * R * 100)
 
 
-def test_molar_masses_are_canteras():
-    ct = pytest.importorskip("cantera")
-    weights = {s.name: s.molecular_weight for s in bundled_species(ct).values()}
+def test_molar_masses_are_canteras(bundled_species):
+    weights = {s.name: s.molecular_weight for s in bundled_species.values()}
     for name, mass in zip(TABLE.names, TABLE.molar_mass, strict=True):
         assert mass == pytest.approx(weights[name], rel=1e-14)
 

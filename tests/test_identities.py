@@ -11,7 +11,8 @@ import pytest
 from fuelair import fuel as fuels
 from fuelair.gas.engine import Status, total
 from fuelair.gas.mixture import gibbs
-from fuelair.gas.species import R, build
+from fuelair.gas.polynomials import R
+from fuelair.gas.species import build
 
 BOOK = tomllib.loads(Path(__file__).with_name("identities.toml").read_text(encoding="utf-8"))
 TOLERANCE = BOOK["tolerances"]

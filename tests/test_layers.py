@@ -79,7 +79,7 @@ def test_cantera_is_imported_only_in_the_gas_room_and_only_the_command_line_prin
         assert not any(name.split(".")[0] == "cantera" for name in imports(tree))
     if room(path) != "cli":
         calls = [n for n in ast.walk(tree) if isinstance(n, ast.Call) and isinstance(n.func, ast.Name)]
-        assert not [c.lineno for c in calls if c.func.id == "print"]  # type: ignore[attr-defined]
+        assert not [c.lineno for c in calls if c.func.id == "print"]
 
 
 def test_importing_the_door_and_the_command_line_loads_nothing_heavy() -> None:

@@ -13,8 +13,9 @@ from fuelair.cycle.result import MODELS, REAL_MODEL, REFERENCE_MODEL
 from fuelair.cycle.stages import compress
 from fuelair.errors import InputError
 from fuelair.gas.engine import Status, total
+from fuelair.gas.polynomials import R
 from fuelair.gas.real_engine import RealGas
-from fuelair.gas.species import R, build
+from fuelair.gas.species import build
 
 REAL = RealGas()
 DEMOS = ("workboat", "hydrogen-genset", "methanol-ferry", "gasoline-launch")

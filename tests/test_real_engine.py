@@ -9,9 +9,10 @@ from fuelair import fuel as fuels
 from fuelair.gas.complete import oxygen_excess
 from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Status, total, weighted
 from fuelair.gas.mixture import gibbs
+from fuelair.gas.polynomials import R
 from fuelair.gas.real_engine import RealGas
 from fuelair.gas.real_gas import DENSITY_LIMIT, residual, virial_table
-from fuelair.gas.species import R, build
+from fuelair.gas.species import build
 
 TABLE = build(fuels.load("n-dodecane").vapour)
 ENGINE = RealGas()

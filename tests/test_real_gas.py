@@ -11,8 +11,9 @@ import pytest
 from fuelair import fuel as fuels
 from fuelair.errors import DataError
 from fuelair.gas.mixture import mix
+from fuelair.gas.polynomials import R
 from fuelair.gas.real_gas import DENSITY_LIMIT, density, fluids, residual, valid, virial_table
-from fuelair.gas.species import R, build
+from fuelair.gas.species import build
 from fuelair.gas.virial_data import nearest_fuel
 
 AIR = {"N2": 0.7812, "O2": 0.2096, "Ar": 0.0092}  # Lemmon et al. 2000, from memory
@@ -63,7 +64,10 @@ def test_every_temperature_derivative_is_that_of_the_helmholtz_energy():
     T, rho, x = states()
     r = residual(GAS, T, rho, x)
     scale = 1.0 + np.abs(r.a) + np.abs(r.u) + np.abs(r.cv)
-    by_log_t = lambda f: slope(lambda e: f(residual(GAS, T * np.exp(e), rho, x), np.exp(e)))  # noqa: E731
+
+    def by_log_t(f):
+        return slope(lambda e: f(residual(GAS, T * np.exp(e), rho, x), np.exp(e)))
+
     close(-by_log_t(lambda k, e: k.a), r.u, scale)
     close(-by_log_t(lambda k, e: k.a * e), r.s, scale)
     close(by_log_t(lambda k, e: k.u * e), r.cv, scale)
@@ -76,7 +80,10 @@ def test_every_density_derivative_is_that_of_the_helmholtz_energy():
     T, rho, x = states(seed=6)
     r = residual(GAS, T, rho, x)
     scale = 1.0 + np.abs(r.a) + np.abs(r.u)
-    by_log_rho = lambda f: slope(lambda e: f(residual(GAS, T, rho * np.exp(e), x)))  # noqa: E731
+
+    def by_log_rho(f):
+        return slope(lambda e: f(residual(GAS, T, rho * np.exp(e), x)))
+
     close(by_log_rho(lambda k: k.a), r.Z - 1.0, scale)
     close(by_log_rho(lambda k: k.Z), r.dZ_drho_rho, scale)
     # Maxwell: (ds/dv)_T = (dp/dT)_v, ideal part -R ln rho included
@@ -195,7 +202,10 @@ def test_limits_of_validity():
 def test_every_species_is_stood_for():
     assert np.array_equal(GAS.mapping.sum(axis=1), np.ones(len(TABLE)))
     assert virial_table(TABLE) is GAS
-    of = lambda name: {GAS.fluids[i]: GAS.mapping[TABLE.index(name), i] for i in np.flatnonzero(GAS.mapping[TABLE.index(name)])}  # noqa: E731
+
+    def of(name):
+        return {GAS.fluids[i]: GAS.mapping[TABLE.index(name), i] for i in np.flatnonzero(GAS.mapping[TABLE.index(name)])}
+
     assert of("OH") == {"H2O": 1.0}
     assert of("NO") == {"N2": 0.5, "O2": 0.5}
     assert of("fuel") == of("unburned-fuel") == {"n-heptane": 1.0}

@@ -16,8 +16,9 @@ from fuelair.cycle.result import REAL_MODEL, REFERENCE_MODEL
 from fuelair.errors import InputError
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.engine import Status, total, weighted
+from fuelair.gas.polynomials import R
 from fuelair.gas.real_engine import RealGas
-from fuelair.gas.species import FUEL, R
+from fuelair.gas.species import FUEL
 
 M_WATER = 18.01528
 LATENT = 44.004e6 / M_WATER  # CRC: -241.826 and -285.830 kJ/mol at 298.15 K
