@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
@@ -16,26 +16,13 @@ from fuelair.cycle.breathing import Exhaust, solve_charge
 from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
 from fuelair.errors import InputError, Problem, UnsolvedError
 from fuelair.gas import virial_data
-from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.engine import Engine, Status
-from fuelair.gas.real_engine import RealGas
+from fuelair.gas.engines import Engines, pick
 from fuelair.gas.second_opinion import compression_pressure
 from fuelair.gas.species import T_STANDARD, data_versions
 from fuelair.prepare import Prepared, prepare
 from fuelair.remarks import sources, verdict, warnings
 from fuelair.version import __version__
-
-
-@dataclass(frozen=True, slots=True)
-class Engines:
-    """The gas engine of the ideal models and that of the real-gas model."""
-
-    ideal: Engine
-    real: Engine
-
-    def of(self, model: str) -> Engine:
-        """Engine that runs a model."""
-        return self.real if model == REAL_MODEL else self.ideal
 
 
 def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None = None) -> Assessment:
@@ -61,13 +48,19 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
         raise InputError(Problem("assess takes a case", "case", type(case).__name__, what))
     prepared = prepare(case, dry_air)
     own_fluid = prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
-    engines = Engines(CanteraGas() if engine is None else engine, RealGas(own_fluid))
-    gas = engines.of(prepared.headline)
+    usual = pick("reference", own_fluid)
+    engines = usual if engine is None else replace(usual, ideal=engine)
+    gas = of_model(engines, prepared.headline)
     charge = trap(prepared, gas)
     headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
     _refuse_unsolved(case, prepared, headline)
     results = models(prepared, engines, headline)
     return _gather(case, prepared, engines, headline, results)
+
+
+def of_model(engines: Engines, model: str) -> Engine:
+    """Engine that runs a model."""
+    return engines.real if model == REAL_MODEL else engines.ideal
 
 
 def trap(prepared: Prepared, engine: Engine) -> Charge:
@@ -95,8 +88,8 @@ def models(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> dict
         if model == prepared.headline:
             results[model] = headline.result
             continue
-        engine = engines.of(model)
-        own = charge if engine is engines.of(prepared.headline) else fuel_air.seen_by(engine, charge)
+        engine = of_model(engines, model)
+        own = charge if engine is of_model(engines, prepared.headline) else fuel_air.seen_by(engine, charge)
         results[model] = fuel_air.run(engine, own, settings, model, headline=False).result
     if prepared.headline == FREEZE_MODEL:
         results[FREEZE_MODEL] = headline.result
@@ -178,7 +171,7 @@ def _gather(
     case: Case, prepared: Prepared, engines: Engines, headline: fuel_air.Run, results: dict[str, CycleResult]
 ) -> Assessment:
     balance = exergy.balance(headline)
-    engine = engines.of(prepared.headline)
+    engine = of_model(engines, prepared.headline)
     engine_figures = outputs.engine_figures(prepared, headline, engine, case.engine.cylinders)
     exhaust_figures = outputs.exhaust_figures(prepared, headline, engine)
     flame = outputs.stoichiometric_flame_temperature(headline, engine)
