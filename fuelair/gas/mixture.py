@@ -10,7 +10,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fuelair.gas.engine import Array, total, weighted
-from fuelair.gas.polynomials import T_BREAK, R
+from fuelair.gas.polynomials import T_BREAK, R, thermal
 from fuelair.gas.species import SpeciesTable
 
 
@@ -85,10 +85,5 @@ def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:
 
 def _thermal(a: Array, t: Array) -> tuple[Array, Array, Array]:
     """cp/R, h/(R T), s/R from coefficients (..., 9) at temperatures (...)."""
-    inverse, log_t = 1.0 / t, np.log(t)
-    cp = a[..., 0] + t * (a[..., 1] + t * (a[..., 2] + t * (a[..., 3] + t * a[..., 4])))
-    cp = cp + inverse * (a[..., 8] + inverse * a[..., 7])
-    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5)))
-    h = h + inverse * (a[..., 5] + a[..., 8] * log_t - inverse * a[..., 7])
-    s = a[..., 0] * log_t + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
-    return cp, h, s - inverse * (a[..., 8] + 0.5 * inverse * a[..., 7])
+    a0, a1, a2, a3, a4, a5, a6, a7, a8 = np.moveaxis(a, -1, 0)
+    return thermal(a0, a1, a2, a3, a4, a5, a6, a7, a8, t, 1.0 / t, np.log(t))
