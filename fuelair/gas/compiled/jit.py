@@ -12,7 +12,7 @@ import hashlib
 import os
 import sys
 import tempfile
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from functools import lru_cache
 from pathlib import Path
 from typing import Any, TypeVar, cast
@@ -23,27 +23,39 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 
 CONTRACT = frozenset({"contract", "nsz", "arcp"})
 """Freedom of the compiler that keeps NaN, infinity and the order of sums."""
+LANES_ONLY = CONTRACT | {"nnan", "ninf"}
+"""Freedom without which comparisons keep loops from running in vector lanes."""
 
 
 def compiled(function: Function) -> Function:
-    """Compile a function when it is first called."""
-    return with_freedom(CONTRACT)(function)
+    """Compile a function when it is first called: one that Python calls."""
+    return _decorated(function, CONTRACT, inside=False)
 
 
-def with_freedom(fastmath: Iterable[str]) -> Callable[[Function], Function]:
-    """The decorator with another set of LLVM's fast-math flags, see `CONTRACT`."""
+def inlined(function: Function) -> Function:
+    """Compile a function into those that call it.
 
-    def decorate(function: Function) -> Function:
-        config: Any = numba.config
-        folder, before = cache_folder(), config.CACHE_DIR
-        config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
-        try:
-            made = numba.njit(cache=folder is not None, nogil=True, error_model="numpy", fastmath=set(fastmath))(function)
-        finally:
-            config.CACHE_DIR = before
-        return cast(Function, made)
+    Without that a fresh process and one that loads its code from disk run different copies of a called function, which
+    the compiler has treated differently: their last bits would not agree.
+    """
+    return _decorated(function, CONTRACT, inside=True)
 
-    return decorate
+
+def vectorised(function: Function) -> Function:
+    """As `inlined`, for loops over lanes: no value there may be NaN or infinite."""
+    return _decorated(function, LANES_ONLY, inside=True)
+
+
+def _decorated(function: Function, fastmath: frozenset[str], *, inside: bool) -> Function:
+    config: Any = numba.config
+    folder, before = cache_folder(), config.CACHE_DIR
+    config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
+    try:
+        options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": set(fastmath), "forceinline": inside}
+        made = numba.njit(cache=folder is not None and not inside, **options)(function)
+    finally:
+        config.CACHE_DIR = before
+    return cast(Function, made)
 
 
 @lru_cache(maxsize=1)
