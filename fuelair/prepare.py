@@ -143,7 +143,7 @@ def _settings(case: Case, recipe: Recipe, swept: float | None) -> Settings:
         intake_pressure=recipe.pressure,
         swept_volume=_one(swept),
         four_stroke=case.engine.strokes_per_cycle == 4,
-        compression_exponent=case.gas.compression_exponent,
+        compression_exponent=None if case.gas.compression_exponent is None else _one(case.gas.compression_exponent),
     )
 
 
