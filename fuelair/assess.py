@@ -17,7 +17,7 @@ from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
 from fuelair.errors import InputError, Problem, UnsolvedError
 from fuelair.gas import virial_data
 from fuelair.gas.engine import Engine, Status
-from fuelair.gas.engines import Engines, pick
+from fuelair.gas.engines import EngineName, Engines, pick
 from fuelair.gas.second_opinion import compression_pressure
 from fuelair.gas.species import T_STANDARD, data_versions
 from fuelair.prepare import Prepared, prepare
@@ -25,13 +25,13 @@ from fuelair.remarks import sources, verdict, warnings
 from fuelair.version import __version__
 
 
-def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None = None) -> Assessment:
+def assess(case: Case, *, engine: Engine | EngineName | None = None, dry_air: DryAir | None = None) -> Assessment:
     """Run a case through every cycle model and set the results side by side.
 
     Parameters
     ----------
     case : what the user wrote.
-    engine : gas engine of the ideal-gas models; default the reference engine on Cantera.
+    engine : gas engines by name, or the one of the ideal-gas models itself; default the reference on Cantera.
     dry_air : composition of dry air; default `fuelair.air.dry_air`.
 
     Returns
@@ -47,15 +47,20 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
         what = "a Case, e.g. fuelair.Case.read(path) or fuelair.Case.from_dict(tables)"
         raise InputError(Problem("assess takes a case", "case", type(case).__name__, what))
     prepared = prepare(case, dry_air)
-    own_fluid = prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
-    usual = pick("reference", own_fluid)
-    engines = usual if engine is None else replace(usual, ideal=engine)
+    engines = pick(engine if isinstance(engine, str) else "reference", own_fluid(prepared))
+    if engine is not None and not isinstance(engine, str):
+        engines = replace(engines, ideal=engine)
     gas = of_model(engines, prepared.headline)
     charge = trap(prepared, gas)
     headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
     _refuse_unsolved(case, prepared, headline)
     results = models(prepared, engines, headline)
     return _gather(case, prepared, engines, headline, results)
+
+
+def own_fluid(prepared: Prepared) -> str | None:
+    """Fluid of the virial data that is the fuel itself; None if there is none."""
+    return prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
 
 
 def of_model(engines: Engines, model: str) -> Engine:
