@@ -206,15 +206,16 @@ class Study:
 
 def _groups(given: Sequence[Column], n: int) -> Iterator[tuple[Labels, Index]]:
     """Labels of each group and its rows, in the order of the labels."""
-    labelled = [column for column in given if column.labels is not None]
     code, found = np.zeros(n, np.int64), []
-    for column in labelled:
+    for column in given:
+        if column.labels is None:
+            continue
         names, number = np.unique(column.labels, return_inverse=True)
-        found.append((names, number))
+        found.append((column.key, names, number))
         code = np.unique(code * len(names) + number, return_inverse=True)[1]
     order = np.argsort(code, kind="stable")
     for rows in np.split(order, np.flatnonzero(np.diff(code[order])) + 1):
-        own = {c.key: names[number[rows[0]]].item() for c, (names, number) in zip(labelled, found, strict=True)}
+        own = {key: names[number[rows[0]]].item() for key, names, number in found}
         yield {key: label for key, label in own.items() if label != ""}, rows
 
 
