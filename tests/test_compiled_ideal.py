@@ -237,12 +237,12 @@ def test_species_beyond_the_set_go_to_the_generic_solver():
 def test_rich_cold_gas_is_handed_back_and_solved():
     table = TABLES["methane"]
     amounts = mixture(table, np.array([1.5, 2.0]))
-    numbers, found, T = constants(table), np.empty_like(amounts), np.empty(2)
+    numbers, found, out = constants(table), np.empty_like(amounts), np.empty((8, 2))
     code, taken = np.zeros(2, np.int8), np.zeros(2, np.int32)
     nested.solve(
         rows.TP, np.array([2400.0, 800.0]), np.array([50e5, 50e5]), amounts, numbers.linear, numbers.base, numbers.reactions,
         numbers.atoms, numbers.columns, numbers.stays, (8314.46261815324, table.reference_pressure), np.full(2, 2000.0),
-        found, T, code, taken,
+        out, found, code, taken,
     )  # fmt: skip
     assert code.tolist() == [rows.DONE, rows.WIDE]
     state = BatchGas().state(table, "TP", np.array([800.0]), np.array([50e5]), amounts[1:], "equilibrium")
