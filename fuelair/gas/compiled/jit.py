@@ -30,15 +30,24 @@ def compiled(function: Function) -> Function:
     return with_freedom(CONTRACT)(function)
 
 
-def with_freedom(fastmath: Iterable[str]) -> Callable[[Function], Function]:
-    """The decorator with another set of LLVM's fast-math flags, see `CONTRACT`."""
+def bare(function: Function) -> Function:
+    """Compile a function into its callers: for what is called within a state, with arrays in and no array made or returned.
+
+    Numba keeps no reference counts in it, which otherwise cost more than the arithmetic.
+    """
+    return with_freedom(CONTRACT, forceinline=True, _nrt=False)(function)
+
+
+def with_freedom(fastmath: Iterable[str], **options: bool) -> Callable[[Function], Function]:
+    """The decorator with another set of LLVM's fast-math flags, see `CONTRACT`, and further options of numba's."""
 
     def decorate(function: Function) -> Function:
         config: Any = numba.config
         folder, before = cache_folder(), config.CACHE_DIR
         config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
         try:
-            made = numba.njit(cache=folder is not None, nogil=True, error_model="numpy", fastmath=set(fastmath))(function)
+            cache = folder is not None
+            made = numba.njit(cache=cache, nogil=True, error_model="numpy", fastmath=set(fastmath), **options)(function)
         finally:
             config.CACHE_DIR = before
         return cast(Function, made)
