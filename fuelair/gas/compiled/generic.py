@@ -6,7 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from fuelair.gas.compiled import virial
-from fuelair.gas.compiled.jit import bare
+from fuelair.gas.compiled.jit import bare, compiled
 from fuelair.gas.compiled.layout import PAIRS, ST, Species, Work, species_of, work_for, STATE, AMOUNT, LOG, USABLE
 from fuelair.gas.compiled.newton import PLACINGS, search
 from fuelair.gas.compiled.start import balances, burned
@@ -24,7 +24,7 @@ def solve_one(t: Species, f: virial.Fluids, real: bool, pair: int, x: float, y: 
     return search(t, f, real, pair, x, y, PLACINGS, MAX_ITERATIONS, w, v)
 
 
-@bare
+@compiled
 def run(t: Species, f: virial.Fluids, real: bool, pair: int, x: Array, y: Array, amounts: Array, start: Array, out: Array, T: Array, failed: Mask, iterations: npt.NDArray[np.int32], w: Work, v: virial.Blend) -> None:
     for i in range(len(x)):
         good = balances(t, amounts[i], w) and np.isfinite(x[i]) and np.isfinite(y[i]) and y[i] > 0.0

@@ -12,7 +12,7 @@ import hashlib
 import os
 import sys
 import tempfile
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from functools import lru_cache
 from pathlib import Path
 from typing import Any, TypeVar, cast
@@ -23,36 +23,49 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 
 CONTRACT = frozenset({"contract", "nsz", "arcp"})
 """Freedom of the compiler that keeps NaN, infinity and the order of sums."""
+LANES_ONLY = CONTRACT | {"nnan", "ninf"}
+"""Freedom without which comparisons keep loops from running in vector lanes."""
 
 
 def compiled(function: Function) -> Function:
-    """Compile a function when it is first called."""
-    return with_freedom(CONTRACT)(function)
+    """Compile a function when it is first called: one that Python calls."""
+    return _decorated(function, CONTRACT, inside=False)
+
+
+def inlined(function: Function) -> Function:
+    """Compile a function into those that call it.
+
+    Without that a fresh process and one that loads its code from disk run different copies of a called function, which
+    the compiler has treated differently: their last bits would not agree.
+    """
+    return _decorated(function, CONTRACT, inside=True)
 
 
 def bare(function: Function) -> Function:
-    """Compile a function into its callers: for what is called within a state, with arrays in and no array made or returned.
-
-    Numba keeps no reference counts in it, which otherwise cost more than the arithmetic.
-    """
-    return with_freedom(CONTRACT, forceinline=True, _nrt=False)(function)
+    """As `inlined`, for what makes and returns no array: numba keeps no reference counts there, which cost as much as the work."""
+    return _decorated(function, CONTRACT, inside=True, counted=False)
 
 
-def with_freedom(fastmath: Iterable[str], **options: bool) -> Callable[[Function], Function]:
-    """The decorator with another set of LLVM's fast-math flags, see `CONTRACT`, and further options of numba's."""
+def summing(function: Function) -> Function:
+    """As `bare`, with sums in the order that is fastest: another than that written, but the same in every call."""
+    return _decorated(function, CONTRACT | {"reassoc"}, inside=True, counted=False)
 
-    def decorate(function: Function) -> Function:
-        config: Any = numba.config
-        folder, before = cache_folder(), config.CACHE_DIR
-        config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
-        try:
-            cache = folder is not None
-            made = numba.njit(cache=cache, nogil=True, error_model="numpy", fastmath=set(fastmath), **options)(function)
-        finally:
-            config.CACHE_DIR = before
-        return cast(Function, made)
 
-    return decorate
+def vectorised(function: Function) -> Function:
+    """As `inlined`, for loops over lanes: no value there may be NaN or infinite."""
+    return _decorated(function, LANES_ONLY, inside=True)
+
+
+def _decorated(function: Function, fastmath: frozenset[str], *, inside: bool, counted: bool = True) -> Function:
+    config: Any = numba.config
+    folder, before = cache_folder(), config.CACHE_DIR
+    config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
+    try:
+        options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": set(fastmath), "forceinline": inside}
+        made = numba.njit(cache=folder is not None and not inside, _nrt=counted, **options)(function)
+    finally:
+        config.CACHE_DIR = before
+    return cast(Function, made)
 
 
 @lru_cache(maxsize=1)

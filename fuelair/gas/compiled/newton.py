@@ -19,7 +19,7 @@ import numpy as np
 
 from fuelair.gas import polynomials
 from fuelair.gas.compiled import virial
-from fuelair.gas.compiled.jit import CONTRACT, bare, with_freedom
+from fuelair.gas.compiled.jit import bare, summing
 from fuelair.gas.compiled.layout import (
     ABSENT, AMOUNT, BALANCE, CP, ENERGY, ENTHALPY, ENTROPY, EXCESS, HP, LOG, POTENTIAL, REACTING, RIGHT, SIZE, SP,
     ST, STATE, STEP, SV, TP, TV, USABLE, UV, WEIGHT, Species, Work,
@@ -30,8 +30,6 @@ from fuelair.gas.gibbs import LOWEST, MAJOR
 from fuelair.gas.polynomials import T_BREAK, R
 
 thermal = bare(polynomials.thermal)
-summing = with_freedom(CONTRACT | {"reassoc"}, forceinline=True, _nrt=False)
-"""Sums over species in the order that is fastest: the same in every call."""
 
 TOLERANCE = 1e-13
 """Error of ln n, ln T and ln V at which a state is done, judged by the last step and how much smaller it was."""

@@ -1,0 +1,1 @@
+"""Studies: the same functions over many cases. `batch.Study` is their core."""
