@@ -42,7 +42,7 @@ def inlined(function: Function) -> Function:
 
 
 def bare(function: Function) -> Function:
-    """As `inlined`, for what makes and returns no array: numba keeps no reference counts there, which cost as much as the work."""
+    """As `inlined`, for what makes and returns no array: no reference counts are kept, which cost as much as the work."""
     return _decorated(function, CONTRACT, inside=True, counted=False)
 
 
@@ -62,7 +62,8 @@ def _decorated(function: Function, fastmath: frozenset[str], *, inside: bool, co
     config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
     try:
         options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": set(fastmath), "forceinline": inside}
-        made = numba.njit(cache=folder is not None and not inside, _nrt=counted, **options)(function)
+        options["_nrt"] = counted
+        made = numba.njit(cache=folder is not None and not inside, **options)(function)
     finally:
         config.CACHE_DIR = before
     return cast(Function, made)

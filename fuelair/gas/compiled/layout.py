@@ -12,7 +12,7 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.compiled.jit import compiled
+from fuelair.gas.compiled.jit import inlined
 from fuelair.gas.engine import Array
 from fuelair.gas.species import SpeciesTable
 
@@ -24,7 +24,7 @@ MAJORS = ("CO2", "CO", "H2O", "H2", "O2", "N2", "Ar", "SO2")
 CO2, CO, H2O, H2, O2, N2, AR, SO2 = range(8)
 """Products of complete combustion: their places in ``columns``."""
 ELEMENTS = ("C", "H", "O", "N", "Ar", "S")
-C, H, O, N, ARGON, S = range(8, 14)
+CARBON, HYDROGEN, OXYGEN, NITROGEN, ARGON, SULFUR = range(8, 14)
 """Elements: their places in ``columns``."""
 FORMS, INERT, MAJOR = range(3)
 """Rows of ``kind``."""
@@ -81,6 +81,7 @@ def species_of(table: SpeciesTable) -> Species:
     )
 
 
+@inlined
 def work_for(t: Species) -> Work:
     """Work space for a table."""
     e, n = t.atoms.shape

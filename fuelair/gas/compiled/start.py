@@ -12,11 +12,39 @@ import numpy as np
 
 from fuelair.gas.compiled.jit import bare
 from fuelair.gas.compiled.layout import (
-    ABSENT, AMOUNT, ARGON, BALANCE, CO, CO2, ENTHALPY, ENTROPY, EXCESS, FORMS, H2, H2O, INERT, LOG, MAJOR, N2, O2,
-    POTENTIAL, REACTING, SO2, STATE, USABLE, Species, Work, AR, C, H, N, O, S,
-)  # fmt: skip
+    ABSENT,
+    AMOUNT,
+    AR,
+    ARGON,
+    BALANCE,
+    CARBON,
+    CO,
+    CO2,
+    ENTHALPY,
+    ENTROPY,
+    EXCESS,
+    FORMS,
+    H2,
+    H2O,
+    HYDROGEN,
+    INERT,
+    LOG,
+    MAJOR,
+    N2,
+    NITROGEN,
+    O2,
+    OXYGEN,
+    POTENTIAL,
+    REACTING,
+    SO2,
+    STATE,
+    SULFUR,
+    USABLE,
+    Species,
+    Work,
+)
 from fuelair.gas.engine import Array
-from fuelair.gas.gibbs import LOWEST, TINY
+from fuelair.gas.gibbs import LOWEST, SEED, TINY
 from fuelair.gas.polynomials import R
 
 MOST, STEEPEST = 650.0, 300.0
@@ -53,31 +81,40 @@ def balances(t: Species, amounts: Array, w: Work) -> bool:
 
 
 @bare
+def water_gas(carbon: float, water: float, missing: float, ratio: float) -> float:
+    """u, the amount of CO2 over that of CO, when CO and H2 together are ``missing``; H2O over H2 is ``ratio`` u.
+
+    ``ratio``: the constant of CO2 + H2 = CO + H2O turned round, H2O CO/(H2 CO2); ``carbon``, ``water``: CO + CO2, H2 + H2O.
+    """
+    a, b, c = missing * ratio, missing * (1.0 + ratio) - carbon * ratio - water, missing - carbon - water
+    root = np.sqrt(max(b * b - 4.0 * a * c, 0.0))
+    return float(-2.0 * c / (b + root) if b > 0.0 else (root - b) / (2.0 * a))
+
+
+@bare
 def oxygen(carbon: float, water: float, excess: float, log_k: float, ratio: float, log_s: float) -> float:
-    """ln u, with u the amount of CO2 over that of CO and ``ratio`` u that of H2O over that of H2.
+    """ln u as in `water_gas`, lean, rich or near stoichiometric.
 
     ``log_k``: ln of the constant of CO + O2/2 = CO2; ``log_s``: ln of amount over pressure (over its standard).
     """
     middle = (2.0 * log_k + np.log(carbon + water / ratio) - np.log(2.0) - log_s) / 3.0
     if excess > 0.0:
-        return max(log_k + 0.5 * (np.log(0.5 * excess) - log_s), middle)
+        return float(max(log_k + 0.5 * (np.log(0.5 * excess) - log_s), middle))
     missing = max(min(-excess, RICHEST * (carbon + water)), TINY)
-    a, b, c = missing * ratio, missing * (1.0 + ratio) - carbon * ratio - water, missing - carbon - water
-    root = np.sqrt(b * b - 4.0 * a * c)
-    return min(np.log(-2.0 * c / (b + root) if b > 0.0 else (root - b) / (2.0 * a)), middle)
+    return float(min(np.log(water_gas(carbon, water, missing, ratio)), middle))
 
 
 @bare
 def burned(t: Species, w: Work) -> float:
     """Amount of gas when all carbon and hydrogen are burned; the inert included."""
     b, at, n = w.elements[BALANCE], t.columns, w.species[AMOUNT]
-    whole = b[at[C]] + 0.5 * (b[at[H]] + max(b[at[O]], 0.0) + b[at[N]]) + b[at[ARGON]]
-    if at[S] >= 0:
-        whole += b[at[S]]
+    whole = b[at[CARBON]] + 0.5 * (b[at[HYDROGEN]] + max(b[at[OXYGEN]], 0.0) + b[at[NITROGEN]]) + b[at[ARGON]]
+    if at[SULFUR] >= 0:
+        whole += b[at[SULFUR]]
     for j in range(len(n)):
         if t.kind[INERT, j]:
             whole += n[j]
-    return whole
+    return float(whole)
 
 
 @bare
@@ -91,21 +128,21 @@ def place(t: Species, whole: float, pressure: bool, given: float, w: Work) -> No
     log_s = np.log(whole * p0 / given if pressure else p0 * given / R) - (0.0 if pressure else w.elements[STATE, 0])
     for j in range(len(g)):
         g[j] = w.species[ENTHALPY, j] - w.species[ENTROPY, j]
-    carbon, water = b[at[C]], 0.5 * b[at[H]]
-    if absent[at[O]] > 0.0:
-        pi[at[H]] = 0.5 * (g[at[H2]] + np.log(water) - log_s)
+    carbon, water = b[at[CARBON]], 0.5 * b[at[HYDROGEN]]
+    if absent[at[OXYGEN]] > 0.0:
+        pi[at[HYDROGEN]] = 0.5 * (g[at[H2]] + np.log(water) - log_s)
     else:
         log_k = g[at[CO]] + 0.5 * g[at[O2]] - g[at[CO2]]
         ratio = np.exp(min(max(g[at[H2]] + g[at[CO2]] - g[at[H2O]] - g[at[CO]], -STEEPEST), STEEPEST))
-        log_u = oxygen(carbon, water, b[at[O]], log_k, ratio, log_s)
+        log_u = oxygen(carbon, water, b[at[OXYGEN]], log_k, ratio, log_s)
         u = np.exp(min(log_u, MOST))
-        pi[at[O]] = log_u - log_k + 0.5 * g[at[O2]]
-        pi[at[C]] = g[at[CO2]] + np.log(carbon * u / (1.0 + u)) - log_s
-        pi[at[H]] = 0.5 * (g[at[H2O]] + np.log(water * ratio * u / (1.0 + ratio * u)) - log_s)
-    pi[at[N]] = 0.5 * (g[at[N2]] + np.log(0.5 * b[at[N]]) - log_s)
+        pi[at[OXYGEN]] = log_u - log_k + 0.5 * g[at[O2]]
+        pi[at[CARBON]] = g[at[CO2]] + np.log(carbon * u / (1.0 + u)) - log_s
+        pi[at[HYDROGEN]] = 0.5 * (g[at[H2O]] + np.log(water * ratio * u / (1.0 + ratio * u)) - log_s)
+    pi[at[NITROGEN]] = 0.5 * (g[at[N2]] + np.log(0.5 * b[at[NITROGEN]]) - log_s)
     pi[at[ARGON]] = g[at[AR]] + np.log(b[at[ARGON]]) - log_s
-    if at[S] >= 0:
-        pi[at[S]] = g[at[SO2]] + np.log(b[at[S]]) - log_s
+    if at[SULFUR] >= 0:
+        pi[at[SULFUR]] = g[at[SO2]] + np.log(b[at[SULFUR]]) - log_s
     for j in range(len(g)):
         g[j] = log_s - g[j]
     for i in range(len(t.atoms)):
@@ -117,3 +154,33 @@ def place(t: Species, whole: float, pressure: bool, given: float, w: Work) -> No
     for j in range(len(g)):
         if usable[j] > 0.0:
             log_n[j] = min(max(g[j], LOWEST), log_whole + (0.0 if t.kind[MAJOR, j] else LOG_SHARE))
+
+
+@bare
+def plain(t: Species, w: Work) -> None:
+    """The start of `gibbs.py`: complete combustion, and a seed of everything else that may form.
+
+    The oxygen short of it is shared between CO and H2 in one proportion.
+    """
+    b, at, log_n, usable = w.elements[BALANCE], t.columns, w.species[LOG], w.species[USABLE]
+    whole, carbon, water, excess = burned(t, w), b[at[CARBON]], 0.5 * b[at[HYDROGEN]], b[at[OXYGEN]]
+    share = min(max(-excess, 0.0) / max(carbon + water, TINY), 1.0)
+    for j in range(len(log_n)):
+        if usable[j] > 0.0:
+            log_n[j] = np.log(SEED * whole)
+    fill(w, at[CO2], carbon * (1.0 - share))
+    fill(w, at[CO], carbon * share)
+    fill(w, at[H2O], water * (1.0 - share))
+    fill(w, at[H2], water * share)
+    fill(w, at[O2], 0.5 * max(excess, 0.0))
+    fill(w, at[N2], 0.5 * b[at[NITROGEN]])
+    fill(w, at[AR], b[at[ARGON]])
+    if at[SULFUR] >= 0:
+        fill(w, at[SO2], b[at[SULFUR]])
+
+
+@bare
+def fill(w: Work, j: int, value: float) -> None:
+    """Set ln n of a species that may form, if that is more than its seed."""
+    if w.species[USABLE, j] > 0.0 and value > 0.0:
+        w.species[LOG, j] = max(w.species[LOG, j], np.log(value))

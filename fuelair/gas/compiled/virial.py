@@ -9,12 +9,13 @@ by ln T and ln rho, which the Newton iteration of the equilibrium needs.
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.compiled.jit import bare
+from fuelair.gas.compiled.jit import bare, inlined
 from fuelair.gas.engine import Array
 from fuelair.gas.polynomials import R
 from fuelair.gas.real_gas import DENSITY_LIMIT, MAX_ITERATIONS, STABILITY_LIMIT, STALL, TOLERANCE, VirialTable
@@ -31,7 +32,7 @@ class Fluids(NamedTuple):
     """A `VirialTable`: F fluids, K terms, S species.
 
     fluid, share (M, S): the M fluids that stand for a species and their shares, shares of zero where there are fewer;
-    b (F, K, F) and c (K, F) coefficients, terms before fluids; numbers (4 + K,).
+    b (F, K F) and c (K, F) coefficients, terms before fluids; numbers (4 + K,).
     """
 
     fluid: npt.NDArray[np.intp]
@@ -42,7 +43,7 @@ class Fluids(NamedTuple):
 
 
 class Blend(NamedTuple):
-    """Work space of one composition: fluids (5, F), rows (K, F) of sum_i y_i B_i, terms (3, K)."""
+    """Work space of one composition: fluids (5, F), rows (K F,) of sum_i y_i B_i, terms (3, K)."""
 
     fluids: Array
     rows: Array
@@ -75,6 +76,7 @@ class Excess(NamedTuple):
     X1_X: float
 
 
+@lru_cache(maxsize=64)
 def fluids_of(vt: VirialTable) -> Fluids:
     """The arrays of a table in the order of the compiled code."""
     most = int((vt.mapping > 0.0).sum(axis=1).max())
@@ -82,28 +84,30 @@ def fluids_of(vt: VirialTable) -> Fluids:
     return Fluids(
         fluid=np.ascontiguousarray(order.T),
         share=np.ascontiguousarray(np.take_along_axis(vt.mapping, order, axis=1).T),
-        b=np.ascontiguousarray(vt.b.transpose(0, 2, 1)),
+        b=np.ascontiguousarray(vt.b.transpose(0, 2, 1)).reshape(len(vt.fluids), -1),
         c=np.ascontiguousarray(vt.c.T),
         numbers=np.array([vt.closing, vt.reference_temperature, vt.t_min, vt.t_max, *vt.exponents]),
     )
 
 
+@lru_cache(maxsize=1)
 def no_fluids() -> Fluids:
     """What the ideal gas hands over in the place of a table."""
-    return Fluids(np.zeros((1, 1), np.intp), np.zeros((1, 1)), np.zeros((1, 1, 1)), np.zeros((1, 1)), np.ones(5))
+    return Fluids(np.zeros((1, 1), np.intp), np.zeros((1, 1)), np.zeros((1, 1)), np.zeros((1, 1)), np.ones(5))
 
 
+@inlined
 def blend_for(f: Fluids) -> Blend:
     """Work space for a table."""
     k, n = f.c.shape
-    return Blend(np.zeros((5, n)), np.zeros((k, n)), np.zeros((3, k)))
+    return Blend(np.zeros((5, n)), np.zeros(k * n), np.zeros((3, k)))
 
 
 @bare
 def contract(f: Fluids, n: Array, whole: float, w: Blend) -> None:
     """Contract the coefficients with the composition ``n`` (S,) of sum ``whole``."""
     terms, count = f.c.shape
-    y, scratch = w.fluids[SHARE], w.fluids[SUM]
+    y = w.fluids[SHARE]
     y[:] = 0.0
     w.rows[:] = 0.0
     for j in range(len(n)):
@@ -112,13 +116,13 @@ def contract(f: Fluids, n: Array, whole: float, w: Blend) -> None:
                 y[f.fluid[i, j]] += f.share[i, j] * n[j] / whole
     for i in range(count):
         if y[i] > 0.0:
-            for k in range(terms):
-                for m in range(count):
-                    w.rows[k, m] += y[i] * f.b[i, k, m]
+            row = f.b[i]
+            for k in range(terms * count):
+                w.rows[k] += y[i] * row[k]
     for k in range(terms):
         b = c = 0.0
         for m in range(count):
-            b += y[m] * w.rows[k, m]
+            b += y[m] * w.rows[k * count + m]
             c += y[m] * f.c[k, m]
         w.terms[B, k], w.terms[Q, k] = b, c
 
@@ -173,7 +177,7 @@ def potentials(f: Fluids, k: Cold, r: Excess, rho: float, w: Blend) -> None:
     for i in range(terms):  # sum_j y_j B_mj, its T d/dT, the cube root of C and its T d/dT
         basis, e = w.terms[BASIS, i], f.numbers[EXPONENTS + i]
         for m in range(count):
-            b, c = w.rows[i, m] * basis, f.c[i, m] * basis
+            b, c = w.rows[i * count + m] * basis, f.c[i, m] * basis
             mu[m] += b
             by_T[m] -= e * b
             by_rho[m] += c
