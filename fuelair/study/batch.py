@@ -192,7 +192,7 @@ class Study:
 
     def _case(self, labels: Labels, numbers: Mapping[str, Any]) -> Case | None:
         """The validated case of a group; None if names or words contradict each other."""
-        group = tuple(labels.values())
+        group = tuple(labels.items())
         if group not in self._cases:
             try:
                 self._cases[group] = self.case.replace(labels | {key: float(value) for key, value in numbers.items()})
