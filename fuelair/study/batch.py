@@ -143,6 +143,14 @@ class Study:
         prepare(case)
         return case
 
+    def why(self, row: Mapping[str, Any]) -> str:
+        """Why a row cannot be asked for, in words; empty if it can."""
+        try:
+            self.case_of(row)
+        except InputError as error:
+            return "; ".join(f"{p.key}: {p.message}" if p.key else p.message for p in error.problems)
+        return ""
+
     def _solve(self, labels: Labels, numbers: dict[str, Array], rows: Index, out: Rows) -> None:
         """Solve rows of one group into ``out``."""
         keep = np.flatnonzero(~self._refused(labels, numbers, len(rows)))

@@ -194,8 +194,7 @@ def design(
     ------
     InputError : no such key, text that is no range or list, a value outside the key's range, too many rows.
     """
-    if method not in METHODS:
-        raise InputError(Problem("no such design", "--design", method, ", ".join(METHODS)))
+    method = method_named(method)
     axes = tuple(_axis(case, key, given, method) for key, given in over.items())
     if not axes:
         raise InputError(Problem("nothing is varied", "--over", allowed=HELP, hint="--over charge.equivalence_ratio=0.3:1.2:10"))
@@ -213,6 +212,14 @@ def design(
     if made.rows > MOST_ROWS:
         raise InputError(Problem("too many rows", "--over", made.rows, f"up to {MOST_ROWS}", "fewer values a key"))
     return made
+
+
+def method_named(text: str) -> Method:
+    """Return the method of that name; raises InputError if there is none."""
+    for name in METHODS:
+        if name == text:
+            return name
+    raise InputError(Problem("no such design", "--design", text, ", ".join(METHODS)))
 
 
 def split(text: str) -> tuple[str, str]:
