@@ -33,6 +33,9 @@ class Dask(Backend):
         self.cluster: Any = None
         self.client: Any = None
         self.asked, self.threads = 0.0, 0
+        self.log = logging.getLogger("distributed.client")
+        self.level = self.log.level
+        self.log.setLevel(SILENT)  # a scheduler that goes is an error with one line, not pages of tracebacks
         try:
             if runner.scheduler is None:
                 self.cluster = distributed.LocalCluster(
@@ -73,6 +76,7 @@ class Dask(Backend):
 
     def close(self) -> None:
         """Leave the scheduler; end the cluster of this machine."""
+        self.log.setLevel(self.level)
         for one in (self.client, self.cluster):
             if one is not None:
                 one.close()

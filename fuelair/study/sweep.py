@@ -28,8 +28,8 @@ FORMAT: Final = 1
 """Version of the layout of parts and results."""
 ROW_GROUP: Final = 65536
 """Rows written at once to the result."""
-TASK_ROWS: Final[dict[EngineName, int]] = {"compiled": CHUNK, "reference": 32}
-PART_ROWS: Final[dict[EngineName, int]] = {"compiled": 65536, "reference": 1024}
+TASK_ROWS: Final[dict[EngineName, int]] = {"compiled": CHUNK, "reference": 8}
+PART_ROWS: Final[dict[EngineName, int]] = {"compiled": 65536, "reference": 64}
 """Rows of a task and of a part: a second or so of work, and what a killed run may lose."""
 Progress = Callable[[int, int], None]
 
@@ -138,17 +138,17 @@ def about(study: Study, design: Design) -> dict[str, Any]:
 
 def _parts(study: Study, design: Design, out: Path, *, fresh: bool, replace: bool) -> Parts:
     if out.exists() and not out.is_file():
-        raise InputError(Problem("is no ordinary file", "--out", str(out), "a file name"))
+        raise InputError(Problem("is no ordinary file", "--out", file=str(out), hint="a name that is free"))
     if not out.parent.is_dir():
-        raise InputError(Problem("lies in a folder that does not exist", "--out", str(out), hint="make the folder first"))
+        raise InputError(Problem("lies in a folder that does not exist", "--out", file=str(out), hint="make the folder first"))
     leftover = out.with_name(out.name + ".parts").is_dir()
     if out.exists() and not replace and not leftover:
-        raise InputError(Problem("exists already", "--out", str(out), hint="--replace, or another --out"))
+        raise InputError(Problem("exists already", "--out", file=str(out), hint="--replace, or another --out"))
     manifest = about(study, design) | {"part_rows": PART_ROWS[study.engine], "kind": out.suffix.lower()}
     parts = Parts(out, manifest, fresh=fresh)
     if out.exists() and not replace and parts.merged() is None:
         parts.close()
-        raise InputError(Problem("exists already", "--out", str(out), hint="--replace, or another --out"))
+        raise InputError(Problem("exists already", "--out", file=str(out), hint="--replace, or another --out"))
     return parts
 
 
