@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import os
 import signal
 import subprocess
@@ -130,7 +131,7 @@ def test_workers_end_when_their_parent_is_killed(tmp_path: Path) -> None:
     environment = os.environ | {"PYTHONPATH": str(PARENT)}
     parent = subprocess.Popen([sys.executable, str(place)], cwd=tmp_path, env=environment)
     try:
-        pids = wait_for(lambda: [int(p.name[4:]) for p in tmp_path.glob("pid-*")], 2)
+        pids = wait_for(lambda: pids(tmp_path), 2)
     finally:
         parent.send_signal(signal.SIGKILL)
         parent.wait()
@@ -185,3 +186,81 @@ def test_without_the_cluster_extra_one_line_says_how(monkeypatch: pytest.MonkeyP
     monkeypatch.setitem(sys.modules, "distributed", None)
     with pytest.raises(MissingExtraError, match=r"fuelair\[cluster\]"):
         cluster.Dask(Runner("dask", 1), ("", b""))
+
+
+def certificates(folder: Path) -> Certificates:
+    """An authority of one's own and a certificate that it signed, good for an hour."""
+    import datetime as dt
+
+    from cryptography import x509
+    from cryptography.hazmat.primitives import hashes, serialization
+    from cryptography.hazmat.primitives.asymmetric import ec
+
+    now = dt.datetime.now(dt.UTC)
+    keys = [ec.generate_private_key(ec.SECP256R1()) for _ in range(2)]
+    names = [x509.Name([x509.NameAttribute(x509.NameOID.COMMON_NAME, text)]) for text in ("authority", "127.0.0.1")]
+    for i, file in enumerate(("ca.pem", "own.pem")):
+        made = (
+            x509.CertificateBuilder()
+            .subject_name(names[i])
+            .issuer_name(names[0])
+            .public_key(keys[i].public_key())
+            .serial_number(i + 1)
+            .not_valid_before(now - dt.timedelta(minutes=5))
+            .not_valid_after(now + dt.timedelta(hours=1))
+            .add_extension(x509.BasicConstraints(ca=i == 0, path_length=None), critical=True)
+            .sign(keys[0], hashes.SHA256())
+        )
+        (folder / file).write_bytes(made.public_bytes(serialization.Encoding.PEM))
+    encoding = (serialization.Encoding.PEM, serialization.PrivateFormat.PKCS8, serialization.NoEncryption())
+    (folder / "key.pem").write_bytes(keys[1].private_bytes(*encoding))
+    return Certificates(folder / "ca.pem", folder / "own.pem", folder / "key.pem")
+
+
+def test_a_scheduler_and_two_workers_started_by_hand_over_tls(tmp_path: Path) -> None:
+    """As the README has it; one of the workers is killed on the way."""
+    tls = certificates(tmp_path)
+    (tmp_path / "work.py").write_text(
+        "import os, time\nfrom pathlib import Path\n"
+        "def square(shared, task):\n    Path(f'pid-{os.getpid()}').touch()\n    time.sleep(0.02)\n    return task * task\n",
+        encoding="utf-8",
+    )
+    environment = os.environ | {"PYTHONPATH": os.pathsep.join([str(PARENT), str(tmp_path)])}
+    files = ("--tls-ca-file", str(tls.authority), "--tls-cert", str(tls.certificate), "--tls-key", str(tls.key))
+
+    def start(*words: str) -> subprocess.Popen[bytes]:
+        quiet = subprocess.DEVNULL
+        line = [sys.executable, "-m", "dask", *words, *files, "--no-dashboard"]
+        return subprocess.Popen(line, cwd=tmp_path, env=environment, stdout=quiet, stderr=quiet)
+
+    scheduler = start("scheduler", "--host", "tls://127.0.0.1", "--port", "0", "--scheduler-file", "scheduler.json")
+    workers = []
+    try:
+        place = tmp_path / "scheduler.json"
+        wait_for(lambda: [1] if place.exists() and place.stat().st_size else [], 1)
+        address = json.loads(place.read_text(encoding="utf-8"))["address"]
+        assert address.startswith("tls://127.0.0.1:")
+        workers = [start("worker", address, "--nthreads", "1", "--host", "127.0.0.1", "--no-nanny") for _ in range(2)]
+        body = f"""
+from work import square
+
+if __name__ == "__main__":
+    tls = Certificates(Path("ca.pem"), Path("own.pem"), Path("key.pem"))
+    found = list(spread(square, None, range(300), Runner("dask", scheduler={address!r}, certificates=tls)))
+    assert found == [(i, i * i) for i in range(300)], found
+    print("good")
+"""
+        killer = threading.Thread(target=lambda: os.kill(wait_for(lambda: pids(tmp_path), 2)[0], signal.SIGKILL))
+        killer.start()
+        out = script(tmp_path, body)
+        killer.join()
+        assert out.stdout == "good\n", out.stderr
+        assert len(pids(tmp_path)) == 2
+    finally:
+        for process in (*workers, scheduler):
+            process.kill()
+            process.wait()
+
+
+def pids(folder: Path) -> list[int]:
+    return [int(p.name[4:]) for p in folder.glob("pid-*")]

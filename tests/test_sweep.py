@@ -142,6 +142,23 @@ def test_row_groups_do_not_depend_on_parts(tmp_path, small, monkeypatch):
     assert [file.metadata.row_group(i).num_rows for i in range(file.num_row_groups)] == [8, 8, 8]
 
 
+def test_the_door_gives_a_data_frame(small):
+    over = {"charge.pressure": ["2 bar", 3e5], "fuel.name": "diesel"}
+    frame = fuelair.sweep(CASE, over, also=["indicated_power"], engine="reference")
+    assert list(frame.columns[:2]) == ["charge.pressure [Pa]", "fuel.name"]
+    assert frame["charge.pressure [Pa]"].tolist() == [2e5, 3e5] and frame["status"].tolist() == ["ok", "ok"]
+    a = fuelair.assess(CASE.replace({"charge.pressure": 3e5, "fuel.name": "diesel"}))
+    assert frame["peak_temperature_K"][1] == pytest.approx(a.figures()["peak_temperature_K"], rel=1e-12)
+    assert frame["indicated_power_W"][1] == pytest.approx(a.engine_figures["indicated_power_W"], rel=1e-12)
+    rows = frame[["charge.pressure [Pa]", "fuel.name"]].rename(columns={"charge.pressure [Pa]": "charge.pressure [bar]"})
+    rows["charge.pressure [bar]"] /= 1e5
+    again = fuelair.sweep(CASE, samples=rows, also=["indicated_power"], engine="reference")
+    pd.testing.assert_frame_equal(again, frame)
+    for wrong in ({}, {"over": {"charge.pressure": [2e5]}, "samples": rows}):
+        with pytest.raises(InputError, match="either"):
+            fuelair.sweep(CASE, **wrong)
+
+
 # --- the same file whatever happens -------------------------------------------------------------------------------
 
 

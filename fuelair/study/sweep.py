@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterator, Mapping
 from contextlib import closing
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
@@ -23,6 +23,9 @@ from fuelair.study.parts import Parts
 from fuelair.study.sampling import Design
 from fuelair.study.spread import Runner, spread
 from fuelair.version import __version__
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 FORMAT: Final = 1
 """Version of the layout of parts and results."""
@@ -101,7 +104,7 @@ def sweep(
             parts.remove()
 
 
-def table(study: Study, design: Design, *, runner: Runner | None = None) -> Any:
+def table(study: Study, design: Design, *, runner: Runner | None = None) -> pd.DataFrame:
     """Solve every row of a design in memory; returns a pandas data frame laid out as the file of `sweep`."""
     size = TASK_ROWS[study.engine]
     blocks = [(start, min(start + size, design.rows)) for start in range(0, design.rows, size)]
