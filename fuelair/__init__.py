@@ -11,6 +11,7 @@ from fuelair.assessment import Assessment
 from fuelair.case import Case
 from fuelair.errors import DataError, FuelairError, InputError, MissingExtraError, Problem, UnsolvedError
 from fuelair.fuel import Fuel
+from fuelair.study.frames import sweep
 from fuelair.version import __version__
 
 __all__ = [
@@ -25,4 +26,5 @@ __all__ = [
     "UnsolvedError",
     "__version__",
     "assess",
+    "sweep",
 ]
