@@ -1,0 +1,1 @@
+"""Studies: many cases instead of one."""
