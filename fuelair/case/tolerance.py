@@ -20,7 +20,7 @@ from fuelair.quantities import STANDARD_ATMOSPHERE, parse
 Distribution = Literal["normal", "uniform", "triangular"]
 Measure = Literal["absolute", "relative"]
 
-ROWS: Final = tuple(2**k for k in range(6, 18))
+ROWS: Final = tuple(2**k for k in range(8, 18))
 """Sizes of a sample: powers of two, on which a Sobol net is balanced."""
 USUAL_ROWS, USUAL_SEED, USUAL_COVERAGE = 4096, 1, 2.0
 LARGEST_COEFFICIENT = 0.999

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fuelair.gas.engine import Array, Codes, Mask
-from fuelair.study.nets import nets
+from fuelair.study.draws import nets
 from fuelair.study.scaled import Figures, Limit, Scaled
 
 ROWS = 512
