@@ -7,11 +7,13 @@ was not read while this was written.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TypeVar
 
 import numpy as np
 import numpy.typing as npt
 
 Array = npt.NDArray[np.float64]
+Metres = TypeVar("Metres", float, Array)
 
 M_H2O = 18.01528
 """Molar mass of water [kg/kmol] (IAPWS R6-95: 18.015268; the difference is 1e-6)."""
@@ -138,18 +140,18 @@ ALTITUDE_RANGE = (-2000.0, 11000.0)
 """Geometric altitude for which `standard_atmosphere` holds [m]."""
 
 
-def standard_atmosphere(altitude: float) -> tuple[float, float]:
+def standard_atmosphere(altitude: Metres) -> tuple[Metres, Metres]:
     """Temperature [K] and pressure [Pa] of the standard atmosphere, ISO 2533.
 
     Parameters
     ----------
-    altitude : geometric altitude above mean sea level [m], -2000 to 11 000.
+    altitude : geometric altitude above mean sea level [m], -2000 to 11 000; a number or an array.
 
     >>> [round(x, 1) for x in standard_atmosphere(2000.0)]
     [275.2, 79501.4]
     """
     low, high = ALTITUDE_RANGE
-    if not low <= altitude <= high:
+    if not np.all((low <= altitude) & (altitude <= high)):
         raise ValueError(f"altitude {altitude} m is outside {low:g} to {high:g} m")
     geopotential = _EARTH * altitude / (_EARTH + altitude)
     T = _T0 - _LAPSE * geopotential

@@ -16,22 +16,22 @@ from fuelair.cycle.breathing import Exhaust, solve_charge
 from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
 from fuelair.errors import InputError, Problem, UnsolvedError
 from fuelair.gas import virial_data
-from fuelair.gas.engine import Engine, Status
-from fuelair.gas.engines import Engines, pick
+from fuelair.gas.engine import Array, Engine, Status
+from fuelair.gas.engines import EngineName, Engines, pick
 from fuelair.gas.second_opinion import compression_pressure
 from fuelair.gas.species import T_STANDARD, data_versions
-from fuelair.prepare import Prepared, prepare
+from fuelair.prepare import Prepared, ambient, prepare
 from fuelair.remarks import sources, verdict, warnings
 from fuelair.version import __version__
 
 
-def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None = None) -> Assessment:
+def assess(case: Case, *, engine: Engine | EngineName | None = None, dry_air: DryAir | None = None) -> Assessment:
     """Run a case through every cycle model and set the results side by side.
 
     Parameters
     ----------
     case : what the user wrote.
-    engine : gas engine of the ideal-gas models; default the reference engine on Cantera.
+    engine : gas engines by name, or the one of the ideal-gas models itself; default the reference on Cantera.
     dry_air : composition of dry air; default `fuelair.air.dry_air`.
 
     Returns
@@ -47,15 +47,20 @@ def assess(case: Case, *, engine: Engine | None = None, dry_air: DryAir | None =
         what = "a Case, e.g. fuelair.Case.read(path) or fuelair.Case.from_dict(tables)"
         raise InputError(Problem("assess takes a case", "case", type(case).__name__, what))
     prepared = prepare(case, dry_air)
-    own_fluid = prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
-    usual = pick("reference", own_fluid)
-    engines = usual if engine is None else replace(usual, ideal=engine)
+    engines = pick(engine if isinstance(engine, str) else "reference", own_fluid(prepared))
+    if engine is not None and not isinstance(engine, str):
+        engines = replace(engines, ideal=engine)
     gas = of_model(engines, prepared.headline)
     charge = trap(prepared, gas)
     headline = fuel_air.run(gas, charge, prepared.settings, prepared.headline)
     _refuse_unsolved(case, prepared, headline)
     results = models(prepared, engines, headline)
     return _gather(case, prepared, engines, headline, results)
+
+
+def own_fluid(prepared: Prepared) -> str | None:
+    """Fluid of the virial data that is the fuel itself; None if there is none."""
+    return prepared.fuel.name if prepared.fuel.name in virial_data.fluids() else None
 
 
 def of_model(engines: Engines, model: str) -> Engine:
@@ -77,23 +82,22 @@ def trap(prepared: Prepared, engine: Engine) -> Charge:
 
 def models(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> dict[str, CycleResult]:
     """Every model of the ladder on the headline's charge, crudest first; the freeze model last if it leads."""
+    leads = (FREEZE_MODEL,) if prepared.headline == FREEZE_MODEL else ()
+    return {model: result_of(model, prepared, engines, headline) for model in MODELS + leads}
+
+
+def result_of(model: str, prepared: Prepared, engines: Engines, headline: fuel_air.Run, *, points: bool = True) -> CycleResult:
+    """One model on the headline's charge; ``points`` as in `fuelair.cycle.fuel_air.run`."""
     charge, settings = headline.charge, prepared.settings
-    results = {
-        "air-cold": air_standard.run("air-cold", air_standard.ColdAir(), charge, settings),
-        "air-variable": air_standard.run(
-            "air-variable", air_standard.variable_air(engines.ideal, charge.recipe.air), charge, settings
-        ),
-    }
-    for model in MODELS[2:]:
-        if model == prepared.headline:
-            results[model] = headline.result
-            continue
-        engine = of_model(engines, model)
-        own = charge if engine is of_model(engines, prepared.headline) else fuel_air.seen_by(engine, charge)
-        results[model] = fuel_air.run(engine, own, settings, model, headline=False).result
-    if prepared.headline == FREEZE_MODEL:
-        results[FREEZE_MODEL] = headline.result
-    return results
+    if model == prepared.headline:
+        return headline.result
+    if model == "air-cold":
+        return air_standard.run(model, air_standard.ColdAir(), charge, settings)
+    if model == "air-variable":
+        return air_standard.run(model, air_standard.variable_air(engines.ideal, charge.recipe.air), charge, settings)
+    engine = of_model(engines, model)
+    own = charge if engine is of_model(engines, prepared.headline) else fuel_air.seen_by(engine, charge)
+    return fuel_air.run(engine, own, settings, model, headline=False, points=points).result
 
 
 def at_rest(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> CycleResult | None:
@@ -172,13 +176,10 @@ def _gather(
 ) -> Assessment:
     balance = exergy.balance(headline)
     engine = of_model(engines, prepared.headline)
-    engine_figures = outputs.engine_figures(prepared, headline, engine, case.engine.cylinders)
-    exhaust_figures = outputs.exhaust_figures(prepared, headline, engine)
-    flame = outputs.stoichiometric_flame_temperature(headline, engine)
     draft = Assessment(
         case=case,
         fuel=prepared.fuel,
-        ambient=prepared.ambient,
+        ambient=ambient(case),
         charge=headline.charge,
         headline=prepared.headline,
         results=results,
@@ -186,11 +187,11 @@ def _gather(
         ladder=tuple(ladder.steps(results, at_rest=at_rest(prepared, engines, headline))),
         overprediction=ladder.overprediction(results),
         exergy=balance,
-        engine_figures=engine_figures,
-        exhaust_figures=exhaust_figures,
-        flame_temperature=flame,
+        engine_figures=_plain(outputs.engine_figures(prepared, headline, engine)),
+        exhaust_figures=_plain(outputs.exhaust_figures(prepared, headline, engine)),
+        flame_temperature=_number(outputs.stoichiometric_flame_temperature(headline, engine)),
         second_opinion=_second_opinion(prepared, headline.charge),
-        swept_volume=prepared.swept_volume,
+        swept_volume=_number(prepared.settings.swept_volume),
         engine=engines.ideal.name,
         versions={
             "fuelair": __version__,
@@ -203,3 +204,12 @@ def _gather(
         verdict="",
     )
     return replace(draft, warnings=tuple(warnings(draft)), sources=tuple(sources(draft)), verdict=verdict(draft))
+
+
+def _plain(figures: dict[str, Array]) -> dict[str, float | None]:
+    return {k: _number(v) for k, v in figures.items()}
+
+
+def _number(figure: Array) -> float | None:
+    """The one case's figure, None where there is none."""
+    return float(figure[0]) if np.isfinite(figure[0]) else None

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +17,7 @@ from fuelair.cycle.geometry import Volumes
 from fuelair.cycle.result import FREEZE_MODEL, REAL_MODEL, REFERENCE_MODEL
 from fuelair.errors import InputError, Problem
 from fuelair.fuel import Fuel
-from fuelair.gas.engine import Array
+from fuelair.gas.engine import Array, Mask
 from fuelair.gas.species import build
 
 START_PHI = 0.5
@@ -25,84 +26,138 @@ START_PHI = 0.5
 
 @dataclass(frozen=True, slots=True)
 class Prepared:
-    """A case as numbers, a batch of one.
+    """Cases as numbers, arrays of shape (N,) in SI.
 
     Attributes
     ----------
-    fuel, ambient : the fuel and the air outside.
-    recipe, settings : what to trap, and how the cycle runs.
+    fuel, recipe, settings : the fuel, what to trap, and how the cycle runs.
     headline : model id of the verdict.
-    fuel_mass, cutoff_ratio : the amount of fuel if given that way (1,), else None.
-    swept_volume : of one cylinder [m3], None without geometry.
-    cycles_per_second : of one cylinder [1/s], None without speed.
-    scavenge_ratio : fresh charge delivered over trapped mass, None if none passes through.
+    fuel_mass, cutoff_ratio : the amount of fuel if given that way, else None.
+    ambient_pressure : [Pa].
+    cylinders : number of cylinders.
+    cycles_per_second : of one cylinder [1/s], NaN without speed.
+    scavenge_ratio : fresh charge delivered over trapped mass, NaN if none passes through.
+    refused : rows that cannot be asked for; only among columns, for a single case raises.
     """
 
     fuel: Fuel
-    ambient: Ambient
     recipe: Recipe
     settings: Settings
     headline: str
     fuel_mass: Array | None
     cutoff_ratio: Array | None
-    swept_volume: float | None
-    cycles_per_second: float | None
-    scavenge_ratio: float | None
+    ambient_pressure: Array
+    cylinders: Array
+    cycles_per_second: Array
+    scavenge_ratio: Array
+    refused: Mask
+
+    def __len__(self) -> int:
+        return len(self.recipe)
 
 
-def prepare(case: Case, dry_air: DryAir | None = None) -> Prepared:
-    """Numbers of a case.
+class _Values:
+    """Values of a case as arrays (N,), columns in place of what the case says."""
+
+    def __init__(self, case: Case, columns: Mapping[str, Array]) -> None:
+        self.of = case.values(columns)
+        self.n = len(next(iter(columns.values()))) if columns else 1
+
+    def array(self, key: str) -> Array:
+        """Value of a key for every row, NaN where there is none."""
+        value = self.of(key)
+        return np.array(np.broadcast_to(np.nan if value is None else np.asarray(value, float), (self.n,)))
+
+    def given(self, key: str) -> Array | None:
+        """Value of a key for every row, None if there is none."""
+        return None if self.of(key) is None else self.array(key)
+
+
+def prepare(case: Case, dry_air: DryAir | None = None, columns: Mapping[str, Array] | None = None) -> Prepared:
+    """Numbers of a case, or of many that differ from it in some numbers.
 
     Parameters
     ----------
     dry_air : composition of the dry air; default `fuelair.air.dry_air`.
+    columns : dotted keys of numbers -> values (N,) in stored units, which take the place of the case's own.
+        Each must be in the key's range and agree with the others (see `fuelair.case.contradictions`).
+
+    Raises
+    ------
+    InputError : without columns, a case that cannot be: humidity above the ambient pressure, a gas as port-liquid.
     """
-    charge, engine = case.charge, case.engine
-    outside = ambient(case)
-    recipe = _recipe(case, outside, dry_air or air.dry_air())
-    swept = _swept_volume(case)
+    values = _Values(case, columns or {})
+    mixture = dry_air or air.dry_air()
+    humidity = air.humidity_ratio(
+        values.array("charge.relative_humidity"),
+        values.array("charge.ambient_temperature"),
+        values.array("charge.ambient_pressure"),
+        mixture.molar_mass,
+    )
+    recipe = _recipe(case, values, mixture, humidity)
+    soaked = ~np.isfinite(humidity)
+    gaseous = ~enters_as_liquid(recipe) & (recipe.admission == "port-liquid")
+    if columns is None:
+        _refuse(case, recipe, soaked, gaseous)
+    settings = _settings(case, values, recipe)
+    phi = _equivalence_ratio(values, recipe.stoichiometric_air_fuel_ratio)
     return Prepared(
         fuel=recipe.fuel,
-        ambient=outside,
-        recipe=recipe,
-        settings=_settings(case, recipe, swept),
+        recipe=recipe if phi is None else recipe.with_equivalence_ratio(phi),
+        settings=settings,
         headline=headline_model(case),
-        fuel_mass=None if charge.fuel_mass is None else _one(charge.fuel_mass),
-        cutoff_ratio=None if case.combustion.cutoff_ratio is None else _one(case.combustion.cutoff_ratio),
-        swept_volume=swept,
-        cycles_per_second=None if engine.speed is None else engine.speed * 2.0 / engine.strokes_per_cycle,
-        scavenge_ratio=charge.scavenge_ratio,
+        fuel_mass=values.given("charge.fuel_mass"),
+        cutoff_ratio=values.given("combustion.cutoff_ratio"),
+        ambient_pressure=values.array("charge.ambient_pressure"),
+        cylinders=values.array("engine.cylinders"),
+        cycles_per_second=values.array("engine.speed") * 2.0 / case.engine.strokes_per_cycle,
+        scavenge_ratio=values.array("charge.scavenge_ratio"),
+        refused=soaked | gaseous,
     )
 
 
-def _recipe(case: Case, outside: Ambient, mixture: DryAir) -> Recipe:
-    charge, fuel = case.charge, fuels.record(case.fuel)
-    from_intake = charge.intake_pressure is not None
-    pressure, temperature = (
-        (charge.intake_pressure, charge.intake_temperature) if from_intake else (charge.pressure, charge.temperature)
-    )
-    recipe = Recipe(
+def _recipe(case: Case, values: _Values, mixture: DryAir, humidity: Array) -> Recipe:
+    fuel = fuels.record(case.fuel)
+    from_intake = values.of("charge.intake_pressure") is not None
+    pair = "charge.intake_" if from_intake else "charge."
+    return Recipe(
         table=build(fuel.vapour),
         fuel=fuel,
         air=mixture,
         admission=case.fuel.admission,
-        equivalence_ratio=_one(START_PHI),
-        humidity=_one(_humidity(case, outside, mixture)),
-        pressure=_one(pressure),
-        temperature=_one(temperature),
+        equivalence_ratio=np.full(values.n, START_PHI),
+        humidity=humidity,
+        pressure=values.array(pair + "pressure"),
+        temperature=values.array(pair + "temperature"),
         from_intake=from_intake,
-        exhaust_pressure=_one(charge.exhaust_pressure),
-        egr_fraction=_one(charge.egr_fraction),
-        egr_temperature=_one(charge.egr_temperature),
-        combustion_efficiency=_one(case.combustion.combustion_efficiency),
-        fuel_temperature=_one(case.fuel.temperature),
-        fuel_pressure=_one(case.fuel.pressure),
-        evaporated_by_gas=_one(case.fuel.evaporated_by_gas),
-        water_ratio=None if charge.water_fuel_ratio is None else _one(charge.water_fuel_ratio),
-        water_temperature=None if charge.water_temperature is None else _one(charge.water_temperature),
-        water_at_combustion=charge.water_admission == "cylinder",
+        exhaust_pressure=values.array("charge.exhaust_pressure"),
+        egr_fraction=values.array("charge.egr_fraction"),
+        egr_temperature=values.array("charge.egr_temperature"),
+        combustion_efficiency=values.array("combustion.combustion_efficiency"),
+        fuel_temperature=values.array("fuel.temperature"),
+        fuel_pressure=values.array("fuel.pressure"),
+        evaporated_by_gas=values.array("fuel.evaporated_by_gas"),
+        water_ratio=values.given("charge.water_fuel_ratio"),
+        water_temperature=values.given("charge.water_temperature"),
+        water_at_combustion=case.charge.water_admission == "cylinder",
     )
-    if recipe.admission == "port-liquid" and not enters_as_liquid(recipe)[0]:
+
+
+def _refuse(case: Case, recipe: Recipe, soaked: Mask, gaseous: Mask) -> None:
+    """Say why a single case cannot be."""
+    fuel, charge = recipe.fuel, case.charge
+    if soaked[0]:
+        T, pressure = charge.ambient_temperature or np.nan, charge.ambient_pressure or np.nan
+        most = pressure / float(air.water_saturation_pressure(T))
+        problem = Problem(
+            "the water vapour alone would exceed the ambient pressure",
+            "charge.relative_humidity",
+            charge.relative_humidity,
+            f"below {most:.1%} at {T:g} K and {pressure / 1e5:g} bar ambient",
+            "check charge.ambient_temperature and charge.ambient_pressure",
+        )
+        raise InputError(case.place(problem))
+    if gaseous[0]:
         problem = Problem(
             f"{fuel.name} is a gas at {case.fuel.temperature:g} K and {case.fuel.pressure / 1e5:.4g} bar",
             "fuel.admission",
@@ -111,39 +166,22 @@ def _recipe(case: Case, outside: Ambient, mixture: DryAir) -> Recipe:
             'admission = "premixed", or fuel.pressure above its vapour pressure',
         )
         raise InputError(case.place(problem))
-    phi = equivalence_ratio(case, recipe.stoichiometric_air_fuel_ratio)
-    return recipe if phi is None else recipe.with_equivalence_ratio(_one(phi))
 
 
-def _humidity(case: Case, outside: Ambient, mixture: DryAir) -> float:
-    """Water vapour per dry air of the air outside [kg/kg]."""
-    ratio = air.humidity_ratio(outside.relative_humidity, outside.temperature, outside.pressure, mixture.molar_mass)
-    if np.isfinite(ratio):
-        return float(ratio)
-    most = outside.pressure / float(air.water_saturation_pressure(outside.temperature))
-    problem = Problem(
-        "the water vapour alone would exceed the ambient pressure",
-        "charge.relative_humidity",
-        outside.relative_humidity,
-        f"below {most:.1%} at {outside.temperature:g} K and {outside.pressure / 1e5:g} bar ambient",
-        "check charge.ambient_temperature and charge.ambient_pressure",
-    )
-    raise InputError(case.place(problem))
-
-
-def _settings(case: Case, recipe: Recipe, swept: float | None) -> Settings:
-    charge, freeze = case.charge, case.gas.freeze_temperature
+def _settings(case: Case, values: _Values, recipe: Recipe) -> Settings:
+    freeze = values.given("gas.freeze_temperature")
+    solved = isinstance(values.of("charge.residual_fraction"), str)
     return Settings(
-        volumes=volumes(case),
+        volumes=_volumes(values),
         heat_addition=case.combustion.heat_addition,
-        pressure_limit=_one(case.combustion.pressure_limit),
-        freeze_temperature=_one(DEFAULT_FREEZE if freeze is None else freeze),
-        residual=None if charge.residual_fraction == "solve" else _one(float(charge.residual_fraction or 0.0)),
-        exhaust_pressure=_one(charge.exhaust_pressure),
+        pressure_limit=values.array("combustion.pressure_limit"),
+        freeze_temperature=np.full(values.n, DEFAULT_FREEZE) if freeze is None else freeze,
+        residual=None if solved else np.nan_to_num(values.array("charge.residual_fraction")),
+        exhaust_pressure=values.array("charge.exhaust_pressure"),
         intake_pressure=recipe.pressure,
-        swept_volume=_one(swept),
+        swept_volume=_swept_volume(values),
         four_stroke=case.engine.strokes_per_cycle == 4,
-        compression_exponent=case.gas.compression_exponent,
+        compression_exponent=values.given("gas.compression_exponent"),
     )
 
 
@@ -156,16 +194,14 @@ def headline_model(case: Case) -> str:
     return REFERENCE_MODEL if case.gas.freeze_temperature is None else FREEZE_MODEL
 
 
-def equivalence_ratio(case: Case, stoichiometric: float) -> float | None:
+def _equivalence_ratio(values: _Values, stoichiometric: float) -> Array | None:
     """Equivalence ratio given directly or as excess air or air-fuel ratio; None if it follows from the cycle."""
-    charge = case.charge
-    if charge.equivalence_ratio is not None:
-        return charge.equivalence_ratio
-    if charge.excess_air_ratio is not None:
-        return 1.0 / charge.excess_air_ratio
-    if charge.air_fuel_ratio is not None:
-        return stoichiometric / charge.air_fuel_ratio
-    return None
+    phi, excess, ratio = (values.given(f"charge.{key}") for key in ("equivalence_ratio", "excess_air_ratio", "air_fuel_ratio"))
+    if phi is not None:
+        return phi
+    if excess is not None:
+        return 1.0 / excess
+    return None if ratio is None else stoichiometric / ratio
 
 
 def ambient(case: Case) -> Ambient:
@@ -183,45 +219,38 @@ def ambient(case: Case) -> Ambient:
     )
 
 
-def volumes(case: Case) -> Volumes:
+def _volumes(values: _Values) -> Volumes:
     """Cylinder volumes at the events; an event left at its dead centre is exactly there."""
-    engine = case.engine
-    r = engine.compression_ratio
-    two_stroke = engine.strokes_per_cycle == 2
-    closing = engine.intake_closing
-    if two_stroke and engine.exhaust_closing is not None:
-        closing = max(closing, engine.exhaust_closing)
-    inner, outer = 1.0 / (r - 1.0), 1.0 / (r - 1.0) + 1.0
-
-    def at(angle: float) -> float:
-        if abs(angle) == 180.0:
-            return outer
-        if angle % 360.0 == 0.0 or engine.stroke is None or engine.rod_length is None:
-            return inner
-        return float(
-            kinematics.relative_volume(
-                angle,
-                stroke=engine.stroke,
-                rod_length=engine.rod_length,
-                compression_ratio=r,
-                pin_offset=engine.pin_offset,
-            )
-        )
-
-    last = inner if two_stroke or engine.exhaust_closing is None else at(engine.exhaust_closing)
-    return Volumes(_one(inner), _one(at(closing)), _one(at(engine.exhaust_opening)), _one(last))
+    inner = 1.0 / (values.array("engine.compression_ratio") - 1.0)
+    two_stroke, last = values.of("engine.strokes_per_cycle") == 2, values.given("engine.exhaust_closing")
+    closing = values.array("engine.intake_closing")
+    if two_stroke and last is not None:
+        closing = np.maximum(closing, last)
+    return Volumes(
+        inner,
+        _volume_at(values, closing, inner),
+        _volume_at(values, values.array("engine.exhaust_opening"), inner),
+        inner if two_stroke or last is None else _volume_at(values, last, inner),
+    )
 
 
-def _swept_volume(case: Case) -> float | None:
-    engine = case.engine
-    if engine.bore is None or engine.stroke is None:
-        return None
-    if engine.pin_offset and engine.rod_length is not None:
-        return kinematics.swept_volume(
-            bore=engine.bore, stroke=engine.stroke, rod_length=engine.rod_length, pin_offset=engine.pin_offset
-        )
-    return float(0.25 * np.pi * engine.bore**2 * engine.stroke)
+def _volume_at(values: _Values, angle: Array, inner: Array) -> Array:
+    stroke, rod = values.given("engine.stroke"), values.given("engine.rod_length")
+    at = inner
+    if stroke is not None and rod is not None:
+        r, offset = values.array("engine.compression_ratio"), values.array("engine.pin_offset")
+        at = kinematics.relative_volume(angle, stroke=stroke, rod_length=rod, compression_ratio=r, pin_offset=offset)
+    at = np.where(angle % 360.0 == 0.0, inner, at)
+    return np.where(np.abs(angle) == 180.0, inner + 1.0, at)
 
 
-def _one(value: float | None) -> Array:
-    return np.array([np.nan if value is None else float(value)])
+def _swept_volume(values: _Values) -> Array:
+    """Of one cylinder [m3], NaN without bore and stroke."""
+    bore, stroke, rod = (values.array(f"engine.{key}") for key in ("bore", "stroke", "rod_length"))
+    straight = 0.25 * np.pi * bore**2 * stroke
+    offset = values.array("engine.pin_offset")
+    aside = (offset != 0.0) & np.isfinite(rod)
+    if not aside.any():
+        return straight
+    exact = kinematics.swept_volume(bore=bore, stroke=stroke, rod_length=rod, pin_offset=offset)
+    return np.where(aside, exact, straight)

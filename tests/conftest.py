@@ -74,7 +74,7 @@ def make(
         exhaust_pressure=full["exhaust_pressure"],
         intake_pressure=full["pressure"],
         four_stroke=four_stroke,
-        compression_exponent=exponent,
+        compression_exponent=None if exponent is None else np.array(np.broadcast_to(np.asarray(exponent, float), (n,))),
         **{k: full[k] for k in SETTINGS},
     )
     return recipe, settings

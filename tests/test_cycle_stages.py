@@ -152,7 +152,7 @@ def test_polytropic_compression_books_its_heat(gas, make):
     start = gas.state(table, "TP", np.array([300.0, 350.0]), np.array([1e5, 3e5]), amounts)
     ratio = np.array([12.0, 16.0])
     for n in (1.0, 1.2, 1.35, 1.6):
-        end = compress(gas, table, start, ratio, n)
+        end = compress(gas, table, start, ratio, np.full(2, n))
         assert end.state.p == pytest.approx(start.p * ratio**n, rel=1e-14)
         assert end.state.v == pytest.approx(start.v / ratio, rel=1e-13)
         for i in range(2):

@@ -201,7 +201,7 @@ def test_the_real_gas_ends_compression_of_air_higher(gas, bar, published, within
 def test_polytropic_compression_books_its_heat(exponent):
     table = build()
     start = REAL.state(table, "TP", np.array([330.0, 350.0]), np.array([3e5, 6e5]), np.tile(table.amounts(AIR), (2, 1)))
-    end = compress(REAL, table, start, np.full(2, 14.0), exponent)
+    end = compress(REAL, table, start, np.full(2, 14.0), np.full(2, exponent))
     assert end.state.p == pytest.approx(start.p * 14.0**exponent, rel=1e-11)
     assert end.state.v == pytest.approx(start.v / 14.0, rel=1e-15)
     at, weights = np.polynomial.legendre.leggauss(24)

@@ -10,7 +10,10 @@ from fuelair.quantities import STANDARD_ATMOSPHERE
 
 
 def follow(draft: Draft) -> dict[str, Any]:
-    """Return the defaults that follow from other keys; None-safe, so a draft need not be sound."""
+    """Return the defaults that follow from other keys; None-safe, so a draft need not be sound.
+
+    Values of the draft may be columns of many rows; what follows from them is a column too.
+    """
     two_stroke = draft.get("engine.strokes_per_cycle", 4) == 2
     intake = draft.has("charge.intake_pressure")
     pressure, temperature = (draft.get(key) for key in (INTAKE_PAIR if intake else TRAPPED_PAIR))
@@ -18,9 +21,9 @@ def follow(draft: Draft) -> dict[str, Any]:
     defaults: dict[str, Any] = {
         "engine.exhaust_closing": BOTTOM_BEFORE if two_stroke else GAS_EXCHANGE_CENTRE,
         "charge.exhaust_pressure": pressure,
-        "charge.egr_temperature": temperature if draft.get("charge.egr_fraction") else None,
-        "charge.water_admission": "intake" if draft.get("charge.water_fuel_ratio") else None,
-        "charge.water_temperature": 298.15 if draft.get("charge.water_fuel_ratio") else None,
+        "charge.egr_temperature": temperature if _some(draft.get("charge.egr_fraction")) else None,
+        "charge.water_admission": "intake" if _some(draft.get("charge.water_fuel_ratio")) else None,
+        "charge.water_temperature": 298.15 if _some(draft.get("charge.water_fuel_ratio")) else None,
         "charge.residual_fraction": 0.0 if efficiency is None else 1.0 - efficiency,
     }
     outside = ambient(draft.get("charge.altitude"), draft.get("charge.reference"))
@@ -30,10 +33,15 @@ def follow(draft: Draft) -> dict[str, Any]:
     return {key: value for key, value in defaults.items() if value is not None and not draft.has(key)}
 
 
-def ambient(altitude: float | None, reference: str | None) -> tuple[float, float, float]:
+def _some(value: Any) -> bool:
+    """Whether a number, or any of a column, is there and not zero."""
+    return value is not None and bool(value.any() if hasattr(value, "any") else value)
+
+
+def ambient(altitude: Any, reference: str | None) -> tuple[Any, Any, float]:
     """Return pressure [Pa], temperature [K] and relative humidity of the air outside for a case that gives none.
 
-    Without altitude and reference: one standard atmosphere, 298.15 K, dry.
+    Without altitude and reference: one standard atmosphere, 298.15 K, dry. The altitude [m] may be a column.
     """
     if altitude is None and reference is None:
         return STANDARD_ATMOSPHERE, 298.15, 0.0

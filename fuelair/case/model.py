@@ -7,7 +7,7 @@ Sections and keys are described in `fuelair.case.schema`, rules between keys in 
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from pathlib import Path
 from typing import Annotated, Any, Self
 
@@ -128,17 +128,35 @@ class Case(BaseModel):
         """
         data = self._as_written()
         for key, value in changes.items():
-            *path, last = key.split(".")
-            table = data
+            *path, last = problems.split(key)
+            table: Any = data
             for part in path:
-                table = table.setdefault(part, {})
-                if not isinstance(table, dict):
+                listed = isinstance(table, list) and isinstance(part, int) and part < len(table)
+                table = table[part] if listed else table.setdefault(part, {}) if isinstance(table, dict) else None
+                if not isinstance(table, (dict, list)):
                     raise InputError(Problem(f"no such key: {part} is not a table", key))
+            if not isinstance(table, dict):
+                raise InputError(Problem(f"no such key: {path[-1]} is not a table", key))
             if value is None:
                 table.pop(last, None)
             else:
                 table[last] = value
         return type(self).from_dict(data)
+
+    def values(self, columns: Mapping[str, Any] | None = None) -> Callable[[str], Any]:
+        """Return a function from key path to value in stored units, with ``columns`` in place of what the case says.
+
+        Columns are arrays of N rows. Defaults that follow from a column are columns too.
+        """
+        given = dict(columns or {})
+        if given:
+            written = self.given() | given
+            given = defaults.follow(rules.Draft(written, written)) | given
+        return lambda key: given[key] if key in given else _value(self, key)
+
+    def given(self) -> dict[str, Any]:
+        """Return what the user wrote as key path to value in stored units; sections and tables under their own name too."""
+        return {key: _value(self, key) for key in self._written}
 
     def written(self, key: str) -> object:
         """Return the value of a key path as the user wrote it, None if it was not written."""
@@ -183,6 +201,11 @@ class Case(BaseModel):
             if table or name in kept:
                 data[name] = table
         return data
+
+
+def _value(case: Case, key: str) -> Any:
+    section, _, name = key.partition(".")
+    return getattr(getattr(case, section), name) if name else getattr(case, section)
 
 
 def _plain(value: Any) -> Any:

@@ -123,7 +123,8 @@ def dotted(path: Path) -> str:
     return text
 
 
-def _split(key: str) -> Path:
+def split(key: str) -> Path:
+    """Return a dotted key as a path: the other way of `dotted`."""
     pieces = key.replace("[", ".[").split(".")
     return tuple(int(piece[1:-1]) if piece.startswith("[") and piece[1:-1].isdigit() else piece for piece in pieces)
 
@@ -133,7 +134,7 @@ def place(problems: Iterable[Problem], text: str, file: str) -> list[Problem]:
     lines = {dotted(path): line for path, line in reversed(toml_text.key_lines(text).items())}
     placed = []
     for problem in problems:
-        path = _split(problem.key)
+        path = split(problem.key)
         line = 0
         while path and not line:
             line = lines.get(dotted(path), 0)

@@ -10,7 +10,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import replace
 from typing import Any, Final
 
-from fuelair.case import spreads
+from fuelair.case import contradictions, spreads
 from fuelair.case.fields import nearest
 from fuelair.errors import InputError, Problem
 
@@ -44,6 +44,10 @@ class Draft:
     def get(self, key: str, default: Any = None) -> Any:
         """Return the checked value, ``default`` if it was not written, None if it is not sound."""
         return self.sound.get(key) if self.has(key) else default
+
+    def pressure(self) -> Any:
+        """Return the pressure of the charge before compression, of whichever pair was written; None if it is not known."""
+        return self.get("charge.pressure") if self.get("charge.pressure") is not None else self.get("charge.intake_pressure")
 
     def raw(self, key: str) -> object:
         """Return the value as the user wrote it."""
@@ -124,19 +128,17 @@ def _two_stroke(draft: Draft) -> Iterator[Problem]:
         elif not both:
             message = "a two-stroke engine (engine.strokes_per_cycle = 2) needs one of charge.scavenging_efficiency, "
             yield Problem(message + "charge.residual_fraction", "charge", None, hint='scavenging_efficiency = "92 %"')
-        yield from _delivered(draft, ratio, efficiency)
+        yield from _delivered(draft, ratio)
         if draft.has(ratio) and draft.get("fuel.admission") in ("premixed", "port-liquid"):
             message = f'would carry fuel straight to the exhaust with fuel.admission = "{draft.get("fuel.admission")}"'
             hint = 'admission = "direct" or "early-direct", or remove the key'
             yield Problem(message, ratio, draft.raw(ratio), hint=hint)
 
 
-def _delivered(draft: Draft, ratio: str, efficiency: str) -> Iterator[Problem]:
-    delivered, kept = draft.get(ratio), draft.get(efficiency)
-    if kept is None and isinstance(residual := draft.get("charge.residual_fraction"), float):
-        kept, efficiency = 1.0 - residual, "1 - charge.residual_fraction"
-    if delivered is not None and kept is not None and delivered < kept:
-        message = f"less is delivered than {efficiency} = {kept:g} says is trapped"
+def _delivered(draft: Draft, ratio: str) -> Iterator[Problem]:
+    delivered, (kept, words) = draft.get(ratio), contradictions.trapped_share(draft)
+    if delivered is not None and kept is not None and contradictions.delivers_too_little(delivered, kept):
+        message = f"less is delivered than {words} = {kept:g} says is trapped"
         yield Problem(message, ratio, draft.raw(ratio), f"{kept:g} or more")
 
 
@@ -153,9 +155,9 @@ def _heat_addition(draft: Draft) -> Iterator[Problem]:
         message = f'has no meaning with {mode_key} = "constant-volume", which has no constant-pressure part'
         hint = 'heat_addition = "constant-pressure" or "pressure-limited"'
         yield Problem(message, cutoff, draft.raw(cutoff), hint=hint)
-    pressure = draft.get("charge.pressure") or draft.get("charge.intake_pressure")
-    level = draft.get(limit)
-    if mode == "pressure-limited" and level is not None and pressure is not None and level <= pressure:
+    pressure, level = draft.pressure(), draft.get(limit)
+    held = mode == "pressure-limited" and level is not None and pressure is not None
+    if held and contradictions.limit_too_low(level, pressure):
         message = f"not above the pressure before compression, {pressure / 1e5:g} bar"
         yield Problem(message, limit, draft.raw(limit), "above the compression pressure")
 
@@ -222,8 +224,8 @@ def _geometry(draft: Draft) -> Iterator[Problem]:
     if timed and lacking:
         yield Problem(f"needs {_and(lacking)} to find the volume at an angle", timed[0], draft.raw(timed[0]))
     length, travel, offset = draft.get(rod), draft.get(stroke), draft.get("engine.pin_offset", 0.0)
-    if None not in (length, travel, offset) and length <= travel / 2 + abs(offset):
-        least = 1000 * (travel / 2 + abs(offset))
+    if None not in (length, travel, offset) and length <= contradictions.shortest_rod(travel, offset):
+        least = 1000 * contradictions.shortest_rod(travel, offset)
         message = f"too short for {stroke}: the crank could not turn"
         yield Problem(message, rod, draft.raw(rod), f"more than half the stroke plus the pin offset, {least:g} mm")
 
@@ -233,8 +235,8 @@ def _timing(draft: Draft) -> Iterator[Problem]:
     angle = draft.get(key)
     if angle is None or strokes not in (2, 4):
         return
-    low, high = (300.0, 430.0) if strokes == 4 else (-180.0, -30.0)
-    if not low <= angle <= high:
+    if contradictions.out_of_time(angle, strokes):
+        low, high = contradictions.EXHAUST_CLOSING[strokes]
         message = f"outside its range with engine.strokes_per_cycle = {strokes}"
         fitting = [turn for turn in (angle - 360.0, angle + 360.0) if low <= turn <= high]
         hint = f'"{fitting[0]:g} deg", the same crank position' if fitting else "0 is the firing dead centre"

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from typing import Annotated, Final, Literal, get_args
 
-from fuelair.case.fields import Choice, Section, Text, Whole, Within, kind_of
+from fuelair.case.fields import Choice, Section, Text, Whole, Within
 from fuelair.case.fields import needed as _needed
 from fuelair.case.fields import optional as _key
 from fuelair.case.tolerance import ToleranceSection
@@ -234,16 +234,3 @@ LEAST: Final[dict[str, str]] = {
     "combustion": "heat_addition",
 }
 """What each section that must be there must hold."""
-NO_EFFECT: Final = ("limits", "tolerance")
-"""Sections that no figure depends on."""
-
-
-def numbers() -> dict[str, Within]:
-    """Return every key that is a physical number which figures may depend on, with its kind."""
-    found = {}
-    for section, model in SECTIONS.items():
-        for name, field in model.model_fields.items():
-            kind = kind_of(field)
-            if section not in NO_EFFECT and isinstance(kind, Within):
-                found[f"{section}.{name}"] = kind
-    return found

@@ -8,7 +8,8 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from fuelair.case.fields import Within
-from fuelair.case.schema import SECTIONS, numbers
+from fuelair.case.keys import numbers
+from fuelair.case.schema import SECTIONS
 from fuelair.case.tolerance import Correlation, Distribution, Spread
 from fuelair.errors import InputError, Problem
 from fuelair.quantities import in_unit

@@ -28,10 +28,10 @@ _SHARES: Final = ("%", "permille", "ppm", "\u2030")
 
 
 def numbers() -> dict[str, Within]:
-    """Return the keys that may spread, see `fuelair.case.schema.numbers`."""
-    from fuelair.case import schema  # only here, for it imports this module
+    """Return the keys that may spread, see `fuelair.case.keys.numbers`."""
+    from fuelair.case import keys  # only here, for it imports the schema, which imports this module
 
-    return schema.numbers()
+    return keys.numbers()
 
 
 @dataclass(frozen=True)

@@ -8,20 +8,28 @@ import numpy.typing as npt
 Array = npt.NDArray[np.float64]
 
 
-def swept_volume(*, bore: float, stroke: float, rod_length: float, pin_offset: float = 0.0) -> float:
-    """Swept volume of one cylinder between its true dead centres [m3]; lengths in m."""
+def swept_volume(
+    *, bore: Array | float, stroke: Array | float, rod_length: Array | float, pin_offset: Array | float = 0.0
+) -> Array:
+    """Swept volume of one cylinder between its true dead centres [m3]; lengths in m, numbers or arrays."""
     reach = _reach(stroke, rod_length, pin_offset)
-    return float(0.25 * np.pi * bore**2 * (reach[1] - reach[0]))
+    return np.asarray(0.25 * np.pi * bore**2 * (reach[1] - reach[0]))
 
 
 def relative_volume(
-    angle: Array | float, *, stroke: float, rod_length: float, compression_ratio: float, pin_offset: float = 0.0
+    angle: Array | float,
+    *,
+    stroke: Array | float,
+    rod_length: Array | float,
+    compression_ratio: Array | float,
+    pin_offset: Array | float = 0.0,
 ) -> Array:
     """Cylinder volume over swept volume at a crank angle.
 
     Parameters
     ----------
-    angle : crank angle from the true firing dead centre (smallest volume) [deg], any shape.
+    angle : crank angle from the true firing dead centre (smallest volume) [deg], any shape
+        with which the other parameters broadcast.
     stroke, rod_length : [m]; the stroke is twice the crank radius.
     compression_ratio : geometric, above 1 [-].
     pin_offset : distance of the cylinder axis from the crank axis [m], positive towards the thrust
@@ -41,9 +49,9 @@ def relative_volume(
     return np.asarray(1.0 / (compression_ratio - 1.0) + (high - distance) / (high - low))
 
 
-def _reach(stroke: float, rod_length: float, pin_offset: float) -> tuple[float, float]:
+def _reach(stroke: Array | float, rod_length: Array | float, pin_offset: Array | float) -> tuple[Array, Array]:
     """Least and greatest distance of the pin from the crank axis along the cylinder [m]."""
-    a, e = 0.5 * stroke, abs(pin_offset)
-    if rod_length <= a + e:
+    a, e = 0.5 * stroke, np.abs(pin_offset)
+    if np.any(rod_length <= a + e):
         raise ValueError(f"rod_length {rod_length} m must exceed half the stroke plus the pin offset, {a + e} m")
-    return float(np.sqrt((rod_length - a) ** 2 - e**2)), float(np.sqrt((rod_length + a) ** 2 - e**2))
+    return np.asarray(np.sqrt((rod_length - a) ** 2 - e**2)), np.asarray(np.sqrt((rod_length + a) ** 2 - e**2))

@@ -53,7 +53,7 @@ class Settings:
     exhaust_pressure, intake_pressure : [Pa].
     swept_volume : of one cylinder [m3], NaN if unknown.
     four_stroke : whether pumping strokes exist.
-    compression_exponent : polytropic exponent, None for isentropic.
+    compression_exponent : polytropic exponents (N,), None for isentropic.
     """
 
     volumes: Volumes
@@ -65,7 +65,7 @@ class Settings:
     intake_pressure: Array
     swept_volume: Array
     four_stroke: bool = True
-    compression_exponent: float | None = None
+    compression_exponent: Array | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -60,11 +60,11 @@ class Burn:
 
 
 def compress(
-    engine: Engine, table: SpeciesTable, start: GasState, volume_ratio: Array, exponent: float | None = None
+    engine: Engine, table: SpeciesTable, start: GasState, volume_ratio: Array, exponent: Array | None = None
 ) -> Compression:
     """Compress at frozen composition from ``start`` to its volume divided by ``volume_ratio``.
 
-    Isentropic, or along p v^exponent = const if an exponent is given, its heat then booked.
+    Isentropic, or along p v^exponent = const if exponents (N,) are given, the heat then booked.
     """
     v = start.v / volume_ratio
     if exponent is None:
@@ -78,12 +78,10 @@ def compress(
     ideal = start.T * volume_ratio ** (exponent - 1.0)
     T, _ = bracketed(miss, 0.5 * ideal, 2.0 * ideal, width=POLYTROPIC_WIDTH)
     state = engine.state(table, "TV", T, v, start.amounts)
-    work = (
-        (state.p * state.v - start.p * start.v) / (exponent - 1.0)
-        if exponent != 1.0
-        else start.p * start.v * np.log(volume_ratio)
-    )
-    return Compression(state, np.asarray(work), np.asarray(state.u - start.u - work))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        work = (state.p * state.v - start.p * start.v) / (exponent - 1.0)
+    work = np.where(exponent == 1.0, start.p * start.v * np.log(volume_ratio), work)
+    return Compression(state, work, np.asarray(state.u - start.u - work))
 
 
 def burn(

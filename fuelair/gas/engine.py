@@ -42,6 +42,7 @@ class Status(IntEnum):
     LEDGER_OPEN = 8
     OXYGEN_BELOW_CARBON_MONOXIDE = 9
     NO_FRESH_CHARGE = 10
+    INPUT_REFUSED = 11
 
     @property
     def label(self) -> str:
@@ -74,6 +75,7 @@ _REASONS = {
     Status.OXYGEN_BELOW_CARBON_MONOXIDE: "too rich for complete combustion: not even all carbon burns to carbon monoxide",
     Status.NO_FRESH_CHARGE: "residual gas at this exhaust pressure fills the cylinder: no room for fresh charge; "
     "lower exhaust_pressure or raise intake_pressure or the compression ratio",
+    Status.INPUT_REFUSED: "keys of this row contradict each other; `fuelair check` of such a case says which",
 }
 
 

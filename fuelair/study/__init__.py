@@ -1,1 +1,1 @@
-"""Studies: many cases instead of one."""
+"""Studies: the same functions over many cases. `batch.Study` is their core."""

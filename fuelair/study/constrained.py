@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -179,8 +180,9 @@ def _slsqp(
     def inside(function: Callable[[Array], Array]) -> Callable[[Array], Array]:
         return lambda p: function(np.clip(p, 0.0, top))  # rounding may leave the box by a bit
 
-    held = [{"type": "ineq", "fun": inside(limits), "jac": inside(limit_slopes)}] if limits is not None else []
-    result = minimize(
+    held: Any = [{"type": "ineq", "fun": inside(limits), "jac": inside(limit_slopes)}] if limits is not None else []
+    run: Any = minimize
+    result = run(
         lambda p: value(np.clip(p, 0.0, top)),
         start,
         jac=inside(slope),
@@ -189,7 +191,7 @@ def _slsqp(
         method="SLSQP",
         options={"ftol": PRECISION, "maxiter": MOST_STEPS},
     )
-    return np.clip(np.asarray(result.x, float), 0.0, top)
+    return np.asarray(np.clip(result.x, 0.0, top))
 
 
 def _report(problem: Scaled, u: Array, starts: int, agree: int, kept: int) -> Best:
@@ -226,4 +228,4 @@ def _per_number(problem: Scaled, u: Array) -> Array:
     span = problem.high - problem.low
     with np.errstate(invalid="ignore", divide="ignore"):
         log = np.log(problem.high) - np.log(problem.low)
-        return np.where(problem.log, 1.0 / (problem.numbers(u) * log), 1.0 / span)
+        return np.asarray(np.where(problem.log, 1.0 / (problem.numbers(u) * log), 1.0 / span))

@@ -14,7 +14,7 @@ import numpy as np
 
 from fuelair import roots
 from fuelair.gas.engine import Array, Codes, Mask, Status
-from fuelair.study.brackets import bisected, borders, lowest, runs
+from fuelair.study.brackets import Indices, bisected, borders, lowest, runs
 
 Evaluate = Callable[[Array], tuple[Array, Codes]]
 """(N,) numbers -> (N,) values, NaN where failed, and (N,) status codes."""
@@ -195,9 +195,8 @@ class _Search:
         places = [self._end(ends[:, side], step) for side, step in ((0, -1), (1, 1))]
         return tuple((float(a), float(b)) for a, b in zip(*places, strict=True)), taken
 
-    def _end(self, at: Array, step: int) -> Array:
+    def _end(self, at: Indices, step: int) -> Array:
         """How far stretches on the target reach beyond their last point ``at`` of the scan."""
-        at = np.asarray(at, dtype=np.int64)
         beyond = np.clip(at + step, 0, len(self.x) - 1)
         return bisected(lambda x: np.abs(self.miss(x)) <= self.met, self.x[at], self.x[beyond])
 

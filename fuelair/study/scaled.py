@@ -62,7 +62,7 @@ class Scaled:
         """Variables in their own units for scaled ones (..., D)."""
         with np.errstate(invalid="ignore", divide="ignore"):
             log = np.exp(np.log(self.low) + u * (np.log(self.high) - np.log(self.low)))
-        return np.clip(np.where(self.log, log, self.low + u * (self.high - self.low)), self.low, self.high)
+        return np.asarray(np.clip(np.where(self.log, log, self.low + u * (self.high - self.low)), self.low, self.high))
 
     def evaluate(self, u: Array) -> tuple[Array, Codes]:
         """Figures (N, F) and status (N,) at scaled points (N, D), rows counted."""
@@ -80,7 +80,7 @@ class Scaled:
         """Objective (N,) and limits (N, L) in scaled form; where there are no figures: a bad objective, limits missed."""
         f = self.sign * figures[:, 0] / self.size
         c = self.side * (self.bounds - figures[:, self.columns]) / self.sizes
-        failed = ~np.isfinite(figures).all(axis=1)
+        failed = np.asarray(~np.isfinite(figures).all(axis=1))
         return np.where(failed, self.worst, f), np.where(failed[:, None], -PENALTY, c)
 
     def figures(self, u: Array) -> Array:

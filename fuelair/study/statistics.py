@@ -44,9 +44,9 @@ def band(y: Array) -> Band:
     solved = y[np.isfinite(y)]
     if len(solved) < 2:
         return Band(*[float("nan")] * 7)
-    quantiles = np.quantile(solved, SHARES)
+    p5, p50, p95, p99 = (float(q) for q in np.quantile(solved, SHARES))
     within = half_width(y, lambda rows: np.quantile(rows[np.isfinite(rows)], 0.95))
-    return Band(float(solved.mean()), float(solved.std(ddof=1)), *map(float, quantiles), float(within))
+    return Band(float(solved.mean()), float(solved.std(ddof=1)), p5, p50, p95, p99, float(within))
 
 
 def half_width(samples: Array, estimate: Callable[[Array], Array | float]) -> Array:
