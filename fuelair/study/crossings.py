@@ -152,7 +152,7 @@ class _Search:
     def evaluate(self, x: Array) -> tuple[Array, Codes]:
         """The function, evaluations counted."""
         self.rows += len(x)
-        return self.function(x)
+        return self.function(x) if len(x) else (x, np.zeros(0, np.int8))
 
     def miss(self, x: Array) -> Array:
         """Value less target."""
@@ -225,7 +225,7 @@ class _Search:
         with np.errstate(invalid="ignore"):
             nearest = (np.abs(miss) <= np.abs(miss[a])) & (np.abs(miss) <= np.abs(miss[b]))
             one_side = (miss * miss[a] > 0.0) & (miss * miss[b] > 0.0)
-        i = np.flatnonzero(nearest & one_side & (left | right) & ~level & ~taken)
+        i = np.flatnonzero(nearest & one_side & (left | right) & ~level & ~taken & self._may_reach(miss, a, b))
         side, a, b = np.sign(miss[i]), self.x[a[i]], self.x[b[i]]
         x, least = lowest(lambda at, k: side[k] * self.miss(at), a, b)
         if len(x):
@@ -233,6 +233,17 @@ class _Search:
         beyond = least < 0.0
         brackets = [pair for one in zip(a[beyond], x[beyond], b[beyond], strict=True) for pair in (one[:2], one[1:])]
         return [(float(p), float(q)) for p, q in brackets], x[~beyond & (least <= self.met)]
+
+    def _may_reach(self, miss: Array, a: Indices, b: Indices) -> Mask:
+        """Where the target lies no farther than the change over the neighbours ``a`` to ``b``, at a border over two steps.
+
+        A parabola sinks by an eighth of that change below the lowest of three points, a kink by half of it.
+        """
+        n = np.arange(len(miss))
+        farther = np.clip(np.where(a == n, b + 1, a - 1), 0, len(miss) - 1)
+        around = np.abs(np.stack([miss[a], miss[b], np.where((a == n) != (b == n), miss[farther], 0.0)]))
+        change = np.max(around, axis=0, where=np.isfinite(around), initial=0.0) - np.abs(miss)
+        return np.asarray(change >= np.abs(miss))
 
     def _refined(self, brackets: list[tuple[float, float]]) -> Array:
         """Roots in the brackets; a bracket without one holds a jump or a gap, which is noted."""
