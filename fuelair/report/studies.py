@@ -8,13 +8,19 @@ from collections.abc import Iterable
 from fuelair.quantities import QUANTITIES, header, shown
 from fuelair.report.files import csv_text, json_text
 from fuelair.report.table import Table
-from fuelair.study.asked import label, worded
+from fuelair.study.asked import label, within, worded
 from fuelair.study.optimum import Optimum
 from fuelair.study.target import Found
 from fuelair.study.tolerance import Influence, Tolerance
 
-BESIDE = ("peak_temperature_K", "peak_pressure_Pa", "exhaust_temperature_K", "imep_gross_Pa", "indicated_efficiency")
-"""Quantities that stand beside the one that was asked for."""
+BESIDE = {
+    "peak_temperature_K": "peak\nT [K]",
+    "peak_pressure_Pa": "peak\np [bar]",
+    "exhaust_temperature_K": "exhaust\nT [K]",
+    "imep_gross_Pa": "gross imep\n[bar]",
+    "indicated_efficiency": "efficiency\n[%]",
+}
+"""Quantities that stand beside the one that was asked for, and their column heads."""
 BAND_ROWS = (
     "compression_temperature_K", "compression_pressure_Pa", "peak_temperature_K", "peak_pressure_Pa", "exhaust_temperature_K",
     "residual_fraction", "imep_gross_Pa", "imep_net_Pa", "indicated_efficiency", "isfc_kg_per_J", "work_J_per_kg",
@@ -27,27 +33,23 @@ FIRST_KEYS = 3
 def roots(found: Found) -> Table:
     """The values that meet the target."""
     v = found.varied
-    beside = [name for name in BESIDE if name != found.quantity]
+    beside = {name: head for name, head in BESIDE.items() if name != found.quantity}
     unit = f" [{v.unit}]" if v.unit else ""
-    heads = (
-        v.key + unit,
-        _head(found.quantity),
-        *map(_head, beside),
-        f"change of {found.quantity}\nper {v.unit or 'unit'}",
-        "condition\nnumber",
-    )
-    per_unit = v.one_unit
+    heads = (v.key.replace(".", ".\n") + unit, _head(found.quantity), *beside.values(), "slope", "condition")
     rows = tuple(
         (
             v.words(root.value).removesuffix(v.unit).strip(),
             _cell(found.quantity, root.figures[found.quantity]),
             *(_cell(name, root.figures[name]) for name in beside),
-            "-" if math.isnan(root.slope) else f"{_difference(found.quantity, root.slope * per_unit):.4g}",
-            f"{root.condition:.3g}" + (" (turns back)" if root.touching else ""),
+            "-" if math.isnan(root.slope) else f"{_difference(found.quantity, root.slope * v.one_unit):.4g}",
+            f"{root.condition:.3g}",
         )
         for root in found.roots
     )
-    note = "The condition number says by how many percent the key moves for one percent of the target."
+    note = (
+        f"Slope: change of {within(found.quantity)} [{_unit(found.quantity) or '1'}] per {v.unit or 'unit'} of the key. "
+        "Condition: per cent by which the key moves for one per cent of the target."
+    )
     return Table(f"{label(found.quantity)} {worded(found.quantity, found.target)}", heads, rows, note)
 
 
@@ -73,7 +75,7 @@ def optimum(o: Optimum) -> list[Table]:
             rows.append(
                 (hold.words(), worded(hold.quantity, value), f"{margin:.3g} {_unit(hold.quantity)}".strip(), state, effect)
             )
-        heads = ("Limit", "reached", "margin", "", f"{label(o.quantity)}, if the limit is moved")
+        heads = ("limit", "here", "margin", "", f"{within(o.quantity)}, if the limit moves")
         tables.append(Table("Limits", heads, tuple(rows)))
     return tables
 
@@ -130,7 +132,7 @@ def influence(t: Tolerance, name: str) -> Table:
     )
     heads = ("", "first-order\nindex", "total\nindex", "rank\ncorrelation")
     note = f"± 95 % confidence; {t.extra} further rows for the indices." if t.extra else "± 95 % confidence."
-    return Table(f"What moves {label(name)}", heads, rows, note)
+    return Table(f"What moves {within(name)}", heads, rows, note)
 
 
 def design_peak(t: Tolerance) -> Table | None:
@@ -148,7 +150,7 @@ def design_peak(t: Tolerance) -> Table | None:
         f"plus {p.coverage:g} standard deviations (2 to 3 are common practice): {100.0 * below:.1f} % of normally spread cycles "
         "lie below."
     )
-    return Table("Peak pressure of the mean cycle and for design [bar]", ("at", "mean", "design"), rows, note)
+    return Table("Design peak pressure [bar]", ("at", "mean", "design"), rows, note)
 
 
 def seen(t: Tolerance, *, chosen: bool) -> list[str]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Any, Final
 
@@ -181,6 +181,12 @@ def label(quantity: str) -> str:
     return QUANTITIES[quantity].label if quantity in QUANTITIES else quantity
 
 
+def within(quantity: str) -> str:
+    """Plain name of a quantity inside a sentence."""
+    name = label(quantity)
+    return name[0].lower() + name[1:] if name[1:2].islower() else name
+
+
 def worded(quantity: str, value: float) -> str:
     """A value of a quantity as people see it."""
     if quantity in QUANTITIES:
@@ -217,8 +223,3 @@ def failures(status: Any) -> dict[str, int]:
     codes, counts = np.unique(np.asarray(status), return_counts=True)
     found = {Status(int(code)).label: int(n) for code, n in zip(codes, counts, strict=True) if code != Status.OK}
     return dict(sorted(found.items(), key=lambda item: -item[1]))
-
-
-def ranked(values: Mapping[str, float], by: Callable[[float], float] = abs) -> list[str]:
-    """Names from the largest value to the smallest."""
-    return sorted(values, key=lambda name: -by(values[name]))

@@ -77,12 +77,12 @@ class Optimum:
     @property
     def verdict(self) -> str:
         """One sentence."""
-        b, what = self.best, f"{'most' if self.most else 'least'} {asked.label(self.quantity)}"
+        b, what = self.best, f"{'Most' if self.most else 'Least'} {asked.within(self.quantity)}"
         if b is None:
-            return f"no point of the scan could be solved: {', '.join(f'{k} {n}' for k, n in self.failed.items())}"
+            return f"No point of the scan could be solved: {', '.join(f'{k} {n}' for k, n in self.failed.items())}"
         value = asked.worded(self.quantity, float(b.figures[0]))
         if not b.feasible:
-            return f"no point meets all limits; the nearest miss has {asked.label(self.quantity)} {value}"
+            return f"No point meets all limits; the nearest miss has {asked.within(self.quantity)} {value}"
         held = f"held by {'; '.join(self.binding)}" if self.binding else "held by no limit"
         return f"{what}: {value}, {held}; best found from {b.starts} starts"
 

@@ -224,7 +224,7 @@ def _outcome(varied: Varied, quantity: str, search: Crossings) -> tuple[Outcome,
         gap = search.gaps[0]
         return "none", f"none, because no point of the scan has a figure {span}: {gap.status.label}"
     solved = " wherever it is solved" if search.gaps else ""
-    value = f"{asked.label(quantity)} is {worded(quantity, search.lowest[1])}{solved}"
+    value = f"{asked.within(quantity)} is {worded(quantity, search.lowest[1])}{solved}"
     if search.constant:
         return "not-determined", f"not determined by this input: {value} {span}"
     if len(search.roots) or search.levels:
@@ -232,6 +232,6 @@ def _outcome(varied: Varied, quantity: str, search: Crossings) -> tuple[Outcome,
     low, high = (worded(quantity, end[1]) for end in (search.lowest, search.highest))
     if search.jumps:
         at = ", ".join(varied.words(jump.at) for jump in search.jumps)
-        return "none", f"none, because {asked.label(quantity)} jumps across the target at {at}"
-    stays = f"{asked.label(quantity)} stays between {low} and {high}{solved} {span}"
+        return "none", f"none, because {asked.within(quantity)} jumps across the target at {at}"
+    stays = f"{asked.within(quantity)} stays between {low} and {high}{solved} {span}"
     return "none", f"none, because {stays}"

@@ -106,7 +106,7 @@ class Tolerance:
         """One sentence on peak pressure, or on the first quantity that spreads."""
         name = next((n for n in (PEAK, *self.bands) if self.influences.get(n)), None)
         if name is None:
-            return "no quantity moves with these spreads"
+            return "No quantity moves with these spreads"
         b, first = self.bands[name], self.influences[name][0].key
         mean, high = (asked.worded(name, value) for value in (b.mean, b.p95))
         return f"{asked.label(name)} {mean} on average, below {high} in 95 % of cases; {first} moves it most"
