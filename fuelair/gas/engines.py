@@ -48,9 +48,9 @@ def pick(name: EngineName, fuel_fluid: str | None = None) -> Engines:
     if name == "compiled":
         if not can_compile():
             raise MissingExtraError("fast", "The compiled engine")
-        from fuelair.gas.cantera_gas import CanteraGas  # until the compiled engines stand
+        from fuelair.gas.compiled.batch_gas import BatchGas
 
-        return Engines(CanteraGas(), RealGas(fuel_fluid))
+        return Engines(BatchGas(), RealGas(fuel_fluid))
     from fuelair.gas.cantera_gas import CanteraGas
 
     return Engines(CanteraGas(), RealGas(fuel_fluid))

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fuelair.gas.engine import Array, total, weighted
-from fuelair.gas.polynomials import T_BREAK, R
+from fuelair.gas.polynomials import T_BREAK, R, thermal
 from fuelair.gas.species import SpeciesTable
 
 
@@ -66,15 +66,16 @@ def mix(table: SpeciesTable, amounts: Array) -> Mixture:
     )
 
 
-def gibbs(table: SpeciesTable, T: Array) -> Array:
-    """Standard molar Gibbs energy over R T of every species at ``T`` (N,) -> (N, S)."""
-    _, h, s = species_thermal(table, T)
+def gibbs(table: SpeciesTable, T: Array, columns: list[int] | None = None) -> Array:
+    """Standard molar Gibbs energy over R T of every species at ``T`` (N,) -> (N, S), or of some columns of the table."""
+    _, h, s = species_thermal(table, T, columns)
     return h - s
 
 
-def species_thermal(table: SpeciesTable, T: Array) -> tuple[Array, Array, Array]:
-    """cp/R, h/(R T) and standard s/R of every species at ``T`` (N,), each (N, S)."""
-    return _thermal(np.where((T < T_BREAK)[:, None, None], table.low, table.high), T[:, None])
+def species_thermal(table: SpeciesTable, T: Array, columns: list[int] | None = None) -> tuple[Array, Array, Array]:
+    """cp/R, h/(R T) and standard s/R of every species, or of some columns of the table, at ``T`` (N,), each (N, S)."""
+    low, high = (table.low, table.high) if columns is None else (table.low[columns], table.high[columns])
+    return _thermal(np.where((T < T_BREAK)[:, None, None], low, high), T[:, None])
 
 
 def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:
@@ -85,10 +86,5 @@ def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:
 
 def _thermal(a: Array, t: Array) -> tuple[Array, Array, Array]:
     """cp/R, h/(R T), s/R from coefficients (..., 9) at temperatures (...)."""
-    inverse, log_t = 1.0 / t, np.log(t)
-    cp = a[..., 0] + t * (a[..., 1] + t * (a[..., 2] + t * (a[..., 3] + t * a[..., 4])))
-    cp = cp + inverse * (a[..., 8] + inverse * a[..., 7])
-    h = a[..., 0] + t * (a[..., 1] / 2 + t * (a[..., 2] / 3 + t * (a[..., 3] / 4 + t * a[..., 4] / 5)))
-    h = h + inverse * (a[..., 5] + a[..., 8] * log_t - inverse * a[..., 7])
-    s = a[..., 0] * log_t + t * (a[..., 1] + t * (a[..., 2] / 2 + t * (a[..., 3] / 3 + t * a[..., 4] / 4))) + a[..., 6]
-    return cp, h, s - inverse * (a[..., 8] + 0.5 * inverse * a[..., 7])
+    a0, a1, a2, a3, a4, a5, a6, a7, a8 = np.moveaxis(a, -1, 0)
+    return thermal(a0, a1, a2, a3, a4, a5, a6, a7, a8, t, 1.0 / t, np.log(t))

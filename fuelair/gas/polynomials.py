@@ -6,7 +6,7 @@ the enthalpy and a6 of the entropy; a7 and a8 are zero in the seven-coefficient 
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 import numpy.typing as npt
@@ -14,11 +14,27 @@ import numpy.typing as npt
 from fuelair.errors import DataError
 
 Array = npt.NDArray[np.float64]
+Real = TypeVar("Real", float, Array)
 
 R = 8314.46261815324
 """Molar gas constant, exact by the SI of 2019 [J/(kmol K)]."""
 T_BREAK = 1000.0
 """Temperature at which the two ranges of every polynomial meet [K]."""
+
+
+def thermal(
+    a0: Real, a1: Real, a2: Real, a3: Real, a4: Real, a5: Real, a6: Real, a7: Real, a8: Real, t: Real, inverse: Real, log_t: Real
+) -> tuple[Real, Real, Real]:
+    """cp/R, h/(R T) and standard s/R from nine coefficients at ``t`` [K], with 1/t and ln t.
+
+    Plain arithmetic: arrays use it as it stands, compiled code compiles it.
+    """
+    cp = a0 + t * (a1 + t * (a2 + t * (a3 + t * a4)))
+    cp = cp + inverse * (a8 + inverse * a7)
+    h = a0 + t * (a1 / 2 + t * (a2 / 3 + t * (a3 / 4 + t * a4 / 5)))
+    h = h + inverse * (a5 + a8 * log_t - inverse * a7)
+    s = a0 * log_t + t * (a1 + t * (a2 / 2 + t * (a3 / 3 + t * a4 / 4))) + a6
+    return cp, h, s - inverse * (a8 + 0.5 * inverse * a7)
 
 
 def ranges_of(species: Any) -> Array:
