@@ -1,4 +1,4 @@
-"""Batched searches on lines: borders by bisection, lowest points by golden section. Elements do not influence each other."""
+"""Batched searches on lines: borders by sections, lowest points by golden section. Elements do not influence each other."""
 
 from __future__ import annotations
 
@@ -11,8 +11,8 @@ from fuelair.gas.engine import Array, Mask
 
 Indices = npt.NDArray[np.int64]
 
-HALVINGS = 34
-"""Bisections of a border: from a step of the scan to 6e-11 of it."""
+PARTS, ROUNDS = 8, 8
+"""A border is sought in rounds, each of which cuts its interval into equal parts: to 6e-8 of a step of the scan."""
 GOLDEN_STEPS = 36
 """Steps of the golden section: to 3e-8 of the interval, beyond which rounding hides the lowest point."""
 _GOLDEN = (5.0**0.5 - 1.0) / 2.0
@@ -35,15 +35,18 @@ def borders(mask: Mask) -> tuple[Indices, Indices]:
     return np.where(first, at, at + 1), np.where(first, at + 1, at)
 
 
-def bisected(holds: Callable[[Array], Mask], inside: Array, outside: Array) -> Array:
-    """Last points (N,) at which ``holds`` is true on the way from ``inside``, where it is, to ``outside``."""
+def last(holds: Callable[[Array], Mask], inside: Array, outside: Array) -> Array:
+    """Last points (N,) at which ``holds`` is true on the way from ``inside``, where it is, to ``outside``, where it is not."""
     inside, outside = np.array(inside, float), np.array(outside, float)
     if not len(inside):
         return inside
-    for _ in range(HALVINGS):
-        middle = 0.5 * (inside + outside)
-        good = holds(middle)
-        inside, outside = np.where(good, middle, inside), np.where(good, outside, middle)
+    share = np.arange(PARTS + 1) / PARTS
+    each = np.arange(len(inside))
+    for _ in range(ROUNDS):
+        x = inside[:, None] + share * (outside - inside)[:, None]
+        good = holds(x[:, 1:-1].ravel()).reshape(len(inside), PARTS - 1)
+        first = np.where(good.all(axis=1), PARTS, 1 + good.argmin(axis=1))  # the first part end that does not hold
+        inside, outside = x[each, first - 1], x[each, first]
     return inside
 
 

@@ -14,7 +14,7 @@ import numpy as np
 
 from fuelair import roots
 from fuelair.gas.engine import Array, Codes, Mask, Status
-from fuelair.study.brackets import Indices, bisected, borders, lowest, runs
+from fuelair.study.brackets import Indices, borders, last, lowest, runs
 
 Evaluate = Callable[[Array], tuple[Array, Codes]]
 """(N,) numbers -> (N,) values, NaN where failed, and (N,) status codes."""
@@ -171,13 +171,13 @@ class _Search:
         """Note the gaps, and add the last solved point at each of their borders."""
         known = np.isfinite(self.y)
         inside, outside = borders(known)
-        last = bisected(lambda x: np.isfinite(self.miss(x)), self.x[inside], self.x[outside])
-        at = dict(zip(np.minimum(inside, outside).tolist(), last.tolist(), strict=True))
+        edge = last(lambda x: np.isfinite(self.miss(x)), self.x[inside], self.x[outside])
+        at = dict(zip(np.minimum(inside, outside).tolist(), edge.tolist(), strict=True))
         for first, final in runs(~known):
             usual = Status(int(np.bincount(status[first : final + 1]).argmax()))
             self.gaps.append(Gap(at.get(first - 1, self.low), at.get(final, self.high), usual))
-        if len(last):
-            self._add(last, self.evaluate(last)[0])
+        if len(edge):
+            self._add(edge, self.evaluate(edge)[0])
 
     def _levels(self, pairs: Mask) -> tuple[tuple[tuple[float, float], ...], Mask]:
         """Stretches on the target, and which points lie on one."""
@@ -198,7 +198,7 @@ class _Search:
     def _end(self, at: Indices, step: int) -> Array:
         """How far stretches on the target reach beyond their last point ``at`` of the scan."""
         beyond = np.clip(at + step, 0, len(self.x) - 1)
-        return bisected(lambda x: np.abs(self.miss(x)) <= self.met, self.x[at], self.x[beyond])
+        return last(lambda x: np.abs(self.miss(x)) <= self.met, self.x[at], self.x[beyond])
 
     def _signs(self, pairs: Mask, taken: Mask) -> list[tuple[float, float]]:
         """Neighbours on both sides of the target."""
