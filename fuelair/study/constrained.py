@@ -28,6 +28,8 @@ AT_LIMIT, AT_END = 1e-6, 1e-9
 """Scaled distance from a limit, and from the end of a range, up to which it counts as reached."""
 PRECISION, MOST_STEPS, ROUNDS = 1e-12, 60, 3
 """Of the polish: change of the scaled objective at which it ends, steps of a round, rounds."""
+HOPELESS = 0.5
+"""Share of the miss left after a round from which a start that misses a limit is given up."""
 ALIKE = 1e-6
 """Difference of the scaled objective up to which two ends are the same."""
 
@@ -145,7 +147,9 @@ def _polished(problem: Scaled, start: Array) -> Array:
             np.ones(len(u)),
         )
         after = problem.values(u)
-        if abs(after[0] - before[0]) <= PRECISION and np.min(after[1:], initial=0.0) >= -KEPT:
+        was, is_now = (-np.min(one[1:], initial=0.0) for one in (before, after))
+        settled = abs(after[0] - before[0]) <= PRECISION if is_now <= KEPT else is_now > HOPELESS * was
+        if settled:
             break
     return u
 
