@@ -11,7 +11,7 @@ from fuelair.report.table import Table
 from fuelair.study.asked import label, within, worded
 from fuelair.study.optimum import Optimum
 from fuelair.study.target import Found
-from fuelair.study.tolerance import Influence, Tolerance
+from fuelair.study.tolerance import Tolerance
 
 BESIDE = {
     "peak_temperature_K": "peak\nT [K]",
@@ -26,6 +26,8 @@ BAND_ROWS = (
     "residual_fraction", "imep_gross_Pa", "imep_net_Pa", "indicated_efficiency", "isfc_kg_per_J", "work_J_per_kg",
 )  # fmt: skip
 """Quantities of a band that people see if they have asked for none."""
+HARDLY = 0.005
+"""Total index below which a key is not named among those that move a quantity."""
 FIRST_KEYS = 3
 """Keys shown of those that move a quantity most."""
 
@@ -105,17 +107,26 @@ def bands(t: Tolerance, names: Iterable[str]) -> Table:
 
 def movers(t: Tolerance, names: Iterable[str]) -> Table:
     """What moves each quantity most."""
-    rows = tuple((label(name), *(_mover(t, one) for one in t.influences[name][:FIRST_KEYS])) for name in names)
-    width = max((len(row) for row in rows), default=2)
-    kind = "rank correlation" if t.correlated else "total Sobol index: share of the variance that stays while only this key moves"
-    note = f"In brackets the {kind}; + raises, - lowers the quantity."
-    heads = ("", "first", "second", "third")[:width]
-    return Table("What moves it most", heads, tuple((*row, *[""] * (width - len(row))) for row in rows), note)
+    rows = tuple((label(name), *_first(t, name)) for name in names)
+    if t.correlated:
+        note = "Rank correlation of the quantity with each key."
+    else:
+        note = "Total Sobol index: share of the variance that stays while only this key moves; + raises, - lowers the quantity."
+    return Table("What moves it most", ("", "first", "second", "third"), rows, note)
 
 
-def _mover(t: Tolerance, one: Influence) -> str:
-    sign = "+" if one.rank > 0.0 else "-"
-    return f"{one.key} ({sign}, {one.rank:.2f})" if t.correlated else f"{one.key} ({sign}, {100.0 * max(one.total, 0.0):.0f} %)"
+def _first(t: Tolerance, name: str) -> list[str]:
+    """The keys that move a quantity most, in words; those that hardly do are left out."""
+    short = [one.key.rpartition(".")[2] for one in t.spreads]
+    out = []
+    for one in t.influences[name][:FIRST_KEYS]:
+        last = one.key.rpartition(".")[2]
+        key = last if short.count(last) == 1 else one.key
+        if t.correlated:
+            out.append(f"{key} {one.rank:+.2f}")
+        elif one.total >= HARDLY:
+            out.append(f"{key} {'+' if one.rank > 0.0 else '-'}{100.0 * one.total:.0f} %")
+    return out + [""] * (FIRST_KEYS - len(out))
 
 
 def influence(t: Tolerance, name: str) -> Table:
