@@ -22,7 +22,7 @@ Measure = Literal["absolute", "relative"]
 
 ROWS: Final = tuple(2**k for k in range(8, 18))
 """Sizes of a sample: powers of two, on which a Sobol net is balanced."""
-USUAL_ROWS, USUAL_SEED, USUAL_COVERAGE = 4096, 1, 2.0
+USUAL_ROWS, USUAL_SEED, USUAL_COVERAGE = 4096, 0, 2.0
 LARGEST_COEFFICIENT = 0.999
 _SHARES: Final = ("%", "permille", "ppm", "\u2030")
 

@@ -38,6 +38,11 @@ class BurnedGas:
         """Amounts, fraction, enthalpy and volume."""
         return self.amounts, self.fraction, self.h, self.v
 
+    def put(self, index: Index, some: BurnedGas) -> None:
+        """Write the burned gas of some rows, in place."""
+        for mine, its in zip(self.fields(), some.fields(), strict=True):
+            mine[index] = its
+
     def rows(self, index: Index) -> BurnedGas:
         """The burned gas of some rows only."""
         return BurnedGas(*(values[index] for values in self.fields()))

@@ -9,7 +9,7 @@ import typer
 from rich.markup import escape
 
 from fuelair.cli.console import bullets, show, study_head, terminal
-from fuelair.cli.options import CaseFile, EngineOption, JsonOption, ModelOption, deliver, engine_named
+from fuelair.cli.options import CaseFile, EngineOption, JsonOption, ModelOption, deliver, engine_of_study
 from fuelair.errors import InputError, Problem
 
 
@@ -41,7 +41,7 @@ def band(
         raise InputError(Problem("names no folder of its own", "--out", str(out), "a folder", "--out results"))
     names = None if quantities is None else [name.strip() for name in quantities.split(",") if name.strip()]
     read = Case.read(case)
-    found = tolerance.band(read, rows=rows, seed=seed, quantities=names, model=model, engine=engine_named(engine))
+    found = tolerance.band(read, rows=rows, seed=seed, quantities=names, model=model, engine=engine_of_study(engine))
     written = files.write_texts(studies.band_files(found), out, keep=case) if out is not None else []
     if deliver(found.to_dict(), json_file, case):
         return

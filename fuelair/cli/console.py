@@ -5,7 +5,8 @@ from __future__ import annotations
 import io
 import os
 import sys
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Iterator
+from contextlib import contextmanager
 from typing import IO, TYPE_CHECKING, Literal, cast
 
 from rich import box
@@ -123,3 +124,32 @@ def terminal(*, stderr: bool = False) -> Console:
 def complain(text: str) -> None:
     """Say on standard error what is wrong."""
     print(f"fuelair: {text}", file=sys.stderr)
+
+
+def remark(text: str) -> None:
+    """Say something by the way on standard error."""
+    terminal(stderr=True).print(escape(text), style="dim", soft_wrap=True)
+
+
+@contextmanager
+def progress(what: str) -> Iterator[Callable[[int, int], None]]:
+    """A bar on standard error for work of so many rows; none where that is no terminal.
+
+    Yields a function that takes rows done and rows in all.
+    """
+    if not sys.stderr.isatty():
+        yield lambda done, rows: None
+        return
+    from rich import progress as bars
+
+    console = terminal(stderr=True)
+    columns = (
+        bars.TextColumn("{task.description}"),
+        bars.BarColumn(),
+        bars.MofNCompleteColumn(),
+        bars.TaskProgressColumn(),
+        bars.TimeRemainingColumn(),
+    )
+    with bars.Progress(*columns, console=console, transient=True) as shown:
+        task = shown.add_task(escape(what), total=None)
+        yield lambda done, rows: shown.update(task, completed=done, total=rows)

@@ -9,7 +9,7 @@ import typer
 from rich.markup import escape
 
 from fuelair.cli.console import bullets, show, study_head, terminal
-from fuelair.cli.options import CaseFile, EngineOption, JsonOption, ModelOption, deliver, engine_named
+from fuelair.cli.options import CaseFile, EngineOption, JsonOption, ModelOption, deliver, engine_of_study
 from fuelair.errors import InputError, Problem
 
 UNSOLVED = 3
@@ -38,7 +38,7 @@ def find(
     ] = None,
     model: ModelOption = None,
     engine: EngineOption = None,
-    seed: Annotated[int, typer.Option("--seed", min=0, help="Of the scan with --most or --least.")] = 1,
+    seed: Annotated[int, typer.Option("--seed", min=0, help="Of the scan with --most or --least.")] = 0,
     json_file: JsonOption = None,
 ) -> None:
     """Find which input gives a wanted figure, or the best inputs that keep several limits.
@@ -64,7 +64,7 @@ def _target(path: Path, vary: str, text: str, model: str | None, engine: str | N
 
     case = Case.read(path)
     varied, (quantity, value) = asked.read_varied(case, vary), asked.read_target(case, text)
-    found = solve(case, varied, quantity, value, model, engine_named(engine))
+    found = solve(case, varied, quantity, value, model, engine_of_study(engine))
     if not deliver(found.to_dict(), json_file, path):
         console = terminal()
         scan = f"{varied.words(varied.low)} to {varied.words(varied.high)}, {found.points} points, {found.spacing} spacing"
@@ -103,7 +103,7 @@ def _best(
     varied = [asked.read_varied(case, text) for text in vary]
     holds = [one for text in hold for one in asked.read_holds(case, text)]
     quantity = figures.resolve(most if most is not None else least or "")
-    chosen = engine_named(engine)
+    chosen = engine_of_study(engine)
     found = solve(case, varied, quantity, holds, most=most is not None, model=model, engine=chosen, seed=seed)
     if not deliver(found.to_dict(), json_file, path):
         console = terminal()

@@ -29,6 +29,8 @@ DEFAULT_FREEZE = 1740.0
 water-gas ratio 3.5 used for exhaust analysis belongs to it."""
 FIXED_POINT_TOLERANCE = 1e-12
 FIXED_POINT_STEPS = 1500
+LARGEST_MIX = 1.0
+"""Largest part of the last step that acceleration takes back or adds."""
 FIRST_RESIDUAL, FIRST_RESIDUAL_TEMPERATURE = 0.03, 1000.0
 """Where the fixed point starts: residual fraction [-] and its temperature [K]."""
 LEANEST, RICHEST = 1e-4, 1.0
@@ -192,7 +194,10 @@ def solve_charge(
 
 
 def _fixed_point(recipe: Recipe, engine: Engine, settings: Settings, cycle: Cycle, fuel_mass: Array | None) -> Charge:
-    """Picard's iteration; each row leaves it when it has settled, or where its cycle fails: its status says why."""
+    """Iterate the burned gas that comes back; each row leaves when it has settled, or where its cycle fails: its status says why.
+
+    Picard's iteration, with Anderson's acceleration of depth one (Anderson 1965, from memory) while the change shrinks.
+    """
     n = len(recipe)
     returns = settings.residual is None or bool(np.any(settings.residual > 0.0)) or bool(np.any(recipe.egr_fraction > 0.0))
     burned = _first_guess(recipe, settings) if returns else BurnedGas.none(n, len(recipe.table))
@@ -200,6 +205,7 @@ def _fixed_point(recipe: Recipe, engine: Engine, settings: Settings, cycle: Cycl
         recipe = recipe.with_equivalence_ratio(np.full(n, 0.5))
     phi = recipe.equivalence_ratio.copy()
     left = np.arange(n) if returns or fuel_mass is not None else np.arange(0)
+    before = _Before(np.zeros(n), burned.rows(left), burned.rows(left)) if returns else None
     for _ in range(FIXED_POINT_STEPS):
         if not len(left):
             break
@@ -212,15 +218,57 @@ def _fixed_point(recipe: Recipe, engine: Engine, settings: Settings, cycle: Cycl
             new = _burned(charge, cycle(charge, own).remaining, own)
             change = np.maximum(change, _change(new, old))
         moves = np.isfinite(change)
-        rows = left[moves]
+        rows, going = left[moves], moves & (change > FIXED_POINT_TOLERANCE)
         phi[rows] = ratio[moves]
-        for mine, its in zip(burned.fields(), new.fields(), strict=True):
-            mine[rows] = its[moves]
-        left = left[moves & (change > FIXED_POINT_TOLERANCE)]
+        burned.put(rows, new.rows(np.flatnonzero(moves)))
+        left = left[going]
+        if before is not None and len(left):
+            kept = np.flatnonzero(going)
+            burned.put(left, before.better(left, change[kept], old.rows(kept), new.rows(kept)))
     charge = compose(recipe.with_equivalence_ratio(phi), engine, burned)
     status = charge.status.copy()
     status[left] = np.where(status[left] == Status.OK, np.int8(Status.NOT_CONVERGED), status[left])
     return replace(charge, status=status)
+
+
+@dataclass(slots=True)
+class _Before:
+    """What the iteration knows of its last step, per row: its change, where it stood and where it led to."""
+
+    change: Array
+    at: BurnedGas
+    to: BurnedGas
+
+    def better(self, rows: Index, change: Array, at: BurnedGas, to: BurnedGas) -> BurnedGas:
+        """Where to go on from instead of ``to``: the least change that a mix with the step before promises."""
+        old_at, old_to = self.at.rows(rows), self.to.rows(rows)
+        step, last = _scaled(to, at), _scaled(old_to, old_at)
+        turn = step - last
+        with np.errstate(divide="ignore", invalid="ignore"):
+            share = total(step * turn) / total(turn * turn)
+        shrinks = (change < self.change[rows]) & np.isfinite(share)
+        share = np.where(shrinks, np.clip(share, -LARGEST_MIX, LARGEST_MIX), 0.0)
+        self.change[rows] = change
+        self.at.put(rows, at)
+        self.to.put(rows, to)
+        mixed = BurnedGas(
+            *(new - _along(share, new) * (new - old) for new, old in zip(to.fields(), old_to.fields(), strict=True))
+        )
+        np.maximum(mixed.amounts, 0.0, out=mixed.amounts)
+        return mixed
+
+
+def _scaled(to: BurnedGas, at: BurnedGas) -> Array:
+    """Difference of two burned gases as rows of comparable numbers."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        moved = (to.amounts - at.amounts) / total(to.amounts)[:, None]
+        rest = [(to.h - at.h) / (np.abs(to.h) + 1e5), to.v / at.v - 1.0, to.fraction - at.fraction]
+    return np.column_stack([moved, *rest])
+
+
+def _along(share: Array, values: Array) -> Array:
+    """``share`` (N,) in the shape of ``values`` (N,) or (N, S)."""
+    return share if values.ndim == 1 else share[:, None]
 
 
 def _first_guess(recipe: Recipe, settings: Settings) -> BurnedGas:

@@ -5,19 +5,21 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from importlib.metadata import version
 from typing import Any, Final
 
 import numpy as np
 from pydantic_core import PydanticCustomError
 
-from fuelair.case import Case, contradictions, keys
+from fuelair.case import Case, contradictions, fuels, keys
 from fuelair.case.fields import Within
 from fuelair.errors import InputError, Problem
 from fuelair.gas.engine import Status
-from fuelair.gas.species import data_versions
-from fuelair.prepare import prepare
+from fuelair.gas.engines import EngineName
+from fuelair.gas.species import build, data_versions
 from fuelair.quantities import QUANTITIES, STANDARD_ATMOSPHERE, UNITS, in_unit, parse, shown, stored_unit
 from fuelair.study import figures
+from fuelair.study.sampling import plain
 from fuelair.version import __version__
 
 FORMAT = 1
@@ -33,7 +35,6 @@ _DIMENSIONS: Final = {
     "K": "temperature",
     "W": "power",
 }
-_PLAIN = re.compile(r"\s*[-+]?[0-9.]+(?:[eE][-+]?[0-9]+)?\s*")
 _LIMIT = re.compile(r"([^<>=]+)(<=|>=)(.+)")
 
 
@@ -111,19 +112,15 @@ def _end(case: Case, key: str, kind: Within, value: object, usual: float) -> flo
 
 
 def read_varied(case: Case, text: str) -> Varied:
-    """``KEY`` or ``KEY=LOW:HIGH``; a LOW without a unit takes that of HIGH, two plain numbers are in stored units."""
+    """``KEY`` or ``KEY=LOW:HIGH``, each end a plain number in stored units or with its unit, as in `sampling`."""
     key, given, span = text.partition("=")
     if not given:
         return varied(case, key.strip())
-    ends = [end.strip() for end in span.split(":")]
-    if len(ends) != 2 or not all(ends):
-        hint = f"{key}=LOW:HIGH, e.g. charge.equivalence_ratio=0.3:1.2"
+    ends = [plain(end.strip()) for end in span.split(":")]
+    if len(ends) != 2:
+        hint = f"{key.strip()}=LOW:HIGH, e.g. charge.equivalence_ratio=0.3:1.2"
         raise InputError(Problem("not a range", key.strip(), span, "LOW:HIGH", hint))
-    plain = [bool(_PLAIN.fullmatch(end)) for end in ends]
-    if plain == [True, False]:
-        ends[0] += " " + re.sub(_PLAIN, "", ends[1], count=1)
-    low, high = (float(end) if all(plain) else end for end in ends)
-    return varied(case, key.strip(), low, high)
+    return varied(case, key.strip(), *ends)
 
 
 def read_target(case: Case, text: str) -> tuple[str, float]:
@@ -158,9 +155,8 @@ def value_of(case: Case, quantity: str, value: object) -> float:
     ------
     InputError : not a number with a unit of this quantity.
     """
-    plain = isinstance(value, str) and _PLAIN.fullmatch(value)
     try:
-        return parse(float(str(value)) if plain else value, dimension(quantity), ambient_pressure=_zero(case))
+        return parse(plain(value), dimension(quantity), ambient_pressure=_zero(case))
     except InputError as error:
         raise InputError(*(replace(problem, key=quantity) for problem in error.problems)) from None
 
@@ -204,18 +200,12 @@ def record(values: Mapping[str, float]) -> dict[str, float | None]:
     return {name: number(value) for name, value in values.items()}
 
 
-def versions(case: Case) -> dict[str, str]:
+def versions(case: Case, engine: EngineName) -> dict[str, str]:
     """Versions and data that a study's figures rest on."""
-    import scipy
-
-    digest = prepare(case).recipe.table.digest
-    return {
-        "fuelair": __version__,
-        "numpy": np.__version__,
-        "scipy": scipy.__version__,
-        **data_versions(),
-        "species_table": digest,
-    }
+    found = {"fuelair": __version__, "numpy": np.__version__, "scipy": version("scipy"), **data_versions()}
+    if engine == "compiled":
+        found["numba"] = version("numba")
+    return found | {"species_table": build(fuels.record(case.fuel).vapour).digest}
 
 
 def failures(status: Any) -> dict[str, int]:

@@ -224,7 +224,7 @@ def solve(
         holds=tuple(holds),
         model=study.model or "",
         engine=study.engine,
-        versions=asked.versions(case),
+        versions=asked.versions(case, study.engine),
         seed=seed,
         points=points,
         rows=search.rows + 1,

@@ -193,7 +193,7 @@ def solve(
         target=target,
         model=one.model or "",
         engine=one.engine,
-        versions=asked.versions(case),
+        versions=asked.versions(case, one.engine),
         points=points,
         rows=search.rows + len(search.roots),
         roots=_roots(every, varied, quantity, search),

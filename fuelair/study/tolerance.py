@@ -220,7 +220,7 @@ def band(
         case=case,
         model=study.model or "",
         engine=study.engine,
-        versions=asked.versions(case),
+        versions=asked.versions(case, study.engine),
         seed=seed,
         rows=rows,
         extra=sample.extra,

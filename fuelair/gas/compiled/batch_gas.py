@@ -13,7 +13,7 @@ from functools import lru_cache
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.compiled import fixed, nested
+from fuelair.gas.compiled import fixed, nested, rows
 from fuelair.gas.complete import complete_state, solid_carbon
 from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, GasState, Mask, Pair, Status
 from fuelair.gas.gibbs import equilibrate
@@ -76,7 +76,7 @@ def constants(table: SpeciesTable) -> Constants:
     carbon, hydrogen, oxygen, nitrogen, sulfur = (of(e) for e in "CHONS")
     oxygen = oxygen - 2.0 * sulfur
     beyond, excess = oxygen - carbon, oxygen - 2.0 * carbon - 0.5 * hydrogen
-    linear, base = np.zeros((n, nested.PARTS)), np.zeros((7, 18))
+    linear, base = np.zeros((n, rows.PARTS)), np.zeros((7, 18))
     places = [table.index(name) for name in names]
     linear[:, :5] = np.stack([carbon, hydrogen, nitrogen, beyond, excess], axis=1)
     base[:4] = coefficients[places[:4]]
@@ -149,20 +149,20 @@ def _fixed(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array, 
 def _equilibrium(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
     numbers, n = constants(table), len(x)
     found, T = np.empty_like(amounts), np.empty(n)
-    code, steps = np.full(n, nested.WIDE, np.int8), np.zeros(n, np.int32)
+    code, steps = np.full(n, rows.WIDE, np.int8), np.zeros(n, np.int32)
     if numbers.whole:
         nested.solve(
             PAIRS.index(pair), x, y, amounts, numbers.linear, numbers.base, numbers.reactions, numbers.atoms,
-            numbers.columns, numbers.stays, (R, table.reference_pressure), np.full(n, nested.START), found, T, code, steps,
+            numbers.columns, numbers.stays, (R, table.reference_pressure), np.full(n, rows.START), found, T, code, steps,
         )  # fmt: skip
     else:
-        code[solid_carbon(table, amounts)] = nested.SOOT
-    left = np.flatnonzero((code == nested.WIDE) | (code == nested.FAILED))
-    refused = code == nested.SOOT
-    lost = refused.copy()
+        code[solid_carbon(table, amounts)] = rows.SOOT
+    left = np.flatnonzero((code == rows.WIDE) | (code == rows.FAILED))
+    refused = code == rows.SOOT
+    lost = refused | (code == rows.UNFIT)
     if len(left):
         _generic(table, pair, x, y, amounts, left, found, T, lost, steps)
-    found[lost], T[lost] = amounts[lost], nested.START
+    found[lost], T[lost] = amounts[lost], rows.START
     state = _fixed(table, pair, np.where(lost, np.nan, x) if lost.any() else x, y, found, start=T)
     apart = (np.abs(T / state.T - 1.0) > AGREEMENT) & (state.status == Status.OK)
     if apart.any():
