@@ -299,3 +299,13 @@ def test_the_verb_with_a_target(case_file: Path, tmp_path: Path) -> None:
 def test_the_verb_refuses_what_does_not_go_together(case_file: Path, words: tuple[str, ...]) -> None:
     with pytest.raises(InputError):
         run("find", str(case_file), *words)
+
+
+def test_both_gas_engines_find_the_same_input() -> None:
+    span = {"low": 7.0, "high": 12.0, "points": 5}
+    two = [
+        fuelair.find(CASE, "engine.compression_ratio", "peak_pressure", "70 bar", engine=e, **span)
+        for e in ("reference", "compiled")
+    ]
+    assert [one.engine for one in two] == ["reference", "compiled"]
+    assert two[0].roots[0].value == pytest.approx(two[1].roots[0].value, rel=1e-7)

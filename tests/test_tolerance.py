@@ -22,6 +22,8 @@ from fuelair.report import studies
 from fuelair.report.study_schema import band_schema
 from fuelair.study import draws, statistics, tolerance
 from fuelair.study.batch import Rows
+from fuelair.study.mixtures import RANDOMISATIONS
+from fuelair.study.spread import Runner
 
 NONE = math.nan
 Z95 = 1.6448536269514722  # 95 % quantile of the normal distribution, from memory
@@ -60,8 +62,8 @@ def flat(key: str, low: float, high: float) -> Marginal:
 
 def sample(function, spreads, rows, seed, root=None):
     """A function on samples A and B and their mixtures, as the study runs a case; and the inputs of A and B."""
-    size, n = len(spreads), rows // (2 * tolerance.RANDOMISATIONS)
-    net = draws.nets(2 * size, n, seed, tolerance.RANDOMISATIONS)
+    size, n = len(spreads), rows // (2 * RANDOMISATIONS)
+    net = draws.nets(2 * size, n, seed, RANDOMISATIONS)
     a, b = net[:, :, :size], net[:, :, size:]
     parts = [a, b]
     for i in range(size):
@@ -350,3 +352,20 @@ def test_every_table_is_rectangular(found: tolerance.Tolerance) -> None:
     for table in (studies.bands(found, seen), studies.movers(found, seen), studies.influence(found, seen[0]), peak):
         assert all(len(row) == len(table.columns) for row in table.rows)
     assert "cutoff_ratio" not in seen
+
+
+def test_the_band_does_not_depend_on_where_rows_are_solved(found: tolerance.Tolerance) -> None:
+    alone = fuelair.band(CASE, runner=Runner("threads", 1))
+    assert alone.to_dict() == fuelair.band(CASE, runner=Runner("threads", 2)).to_dict() == found.to_dict()
+    seen: list[tuple[int, int]] = []
+    fuelair.band(CASE, quantities=["imep_gross"], progress=lambda done, rows: seen.append((done, rows)))
+    assert seen[0][0] == 0
+    assert seen[-1] == (513, 513)
+
+
+def test_schemas_are_printed_by_name() -> None:
+    for name, title in (("find", "fuelair find"), ("best", "fuelair find"), ("band", "fuelair band")):
+        out = CliRunner().invoke(app, ["check", "--study-schema", name])
+        assert json.loads(out.stdout)["title"] == title
+    with pytest.raises(InputError, match="no such schema"):
+        CliRunner().invoke(app, ["check", "--study-schema", "bond"], catch_exceptions=False)

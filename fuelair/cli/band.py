@@ -8,8 +8,18 @@ from typing import Annotated
 import typer
 from rich.markup import escape
 
-from fuelair.cli.console import bullets, show, study_head, terminal
-from fuelair.cli.options import CaseFile, EngineOption, JsonOption, ModelOption, deliver, engine_of_study
+from fuelair.cli.console import bullets, progress, show, study_head, terminal
+from fuelair.cli.options import (
+    CaseFile,
+    EngineOption,
+    JsonOption,
+    ModelOption,
+    RunnerOption,
+    WorkersOption,
+    deliver,
+    engine_of_study,
+    runner_named,
+)
 from fuelair.errors import InputError, Problem
 
 
@@ -27,6 +37,8 @@ def band(
     ] = None,
     model: ModelOption = None,
     engine: EngineOption = None,
+    workers: WorkersOption = None,
+    runner: RunnerOption = None,
     json_file: JsonOption = None,
     out: Annotated[
         Path | None, typer.Option("--out", metavar="FOLDER", help="Write JSON, CSV tables and the resolved case there.")
@@ -41,7 +53,12 @@ def band(
         raise InputError(Problem("names no folder of its own", "--out", str(out), "a folder", "--out results"))
     names = None if quantities is None else [name.strip() for name in quantities.split(",") if name.strip()]
     read = Case.read(case)
-    found = tolerance.band(read, rows=rows, seed=seed, quantities=names, model=model, engine=engine_of_study(engine))
+    chosen = engine_of_study(engine)
+    where = runner_named(chosen, runner, workers, None, (None, None, None))
+    with progress("band") as shown:
+        found = tolerance.band(
+            read, rows=rows, seed=seed, quantities=names, model=model, engine=chosen, runner=where, progress=shown
+        )
     written = files.write_texts(studies.band_files(found), out, keep=case) if out is not None else []
     if deliver(found.to_dict(), json_file, case):
         return

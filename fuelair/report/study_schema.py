@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from fuelair.cycle.result import FREEZE_MODEL, MODELS
+from fuelair.errors import InputError, Problem
 from fuelair.gas.engine import Status
 from fuelair.gas.engines import ENGINES
 from fuelair.report.schema import DIALECT, NUMBER, as_list, as_record
@@ -25,6 +26,14 @@ _HEAD: dict[str, Any] = {
     "case": {"type": "object"},
 }
 _VARIED = as_record({"key": _TEXT, "unit": _TEXT, "low": _REAL, "high": _REAL})
+
+
+def named(name: str) -> dict[str, Any]:
+    """The schema of ``find`` (with a target), ``best`` (find with --most or --least) or ``band``; InputError for others."""
+    known = {"find": find_schema, "best": optimum_schema, "band": band_schema}
+    if name not in known:
+        raise InputError(Problem("no such schema", "--study-schema", name, ", ".join(known)))
+    return known[name]()
 
 
 def find_schema() -> dict[str, Any]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any, Final
+from typing import Any
 
 import numpy as np
 
@@ -12,15 +12,16 @@ from fuelair.case import Case
 from fuelair.case.spreads import Marginal, cholesky, correlation_matrix, marginal
 from fuelair.case.tolerance import ROWS, ToleranceSection
 from fuelair.errors import InputError, Problem, UnsolvedError
-from fuelair.gas.engine import Array, Status
+from fuelair.gas.engine import Status
 from fuelair.gas.engines import EngineName
-from fuelair.study import asked, draws, figures, statistics
+from fuelair.study import asked, figures, statistics
 from fuelair.study.asked import FORMAT, number
 from fuelair.study.batch import Study
+from fuelair.study.mixtures import RANDOMISATIONS, Mixtures
+from fuelair.study.spread import Runner
 from fuelair.study.statistics import Band
+from fuelair.study.sweep import Progress
 
-RANDOMISATIONS: Final = 8
-"""Independently scrambled nets whose scatter gives every confidence interval."""
 NOTED_CUT = 1e-4
 """Share of a normal spread cut off at the range of its key from which it is said."""
 NOTED_FAILURES = 0.02
@@ -121,9 +122,9 @@ class Tolerance:
             out.append(
                 "So many failures bend the band: the quantiles lean to the side where rows are solved. Narrow the spreads."
             )
-        for spread in self.spreads:
-            if spread.cut > NOTED_CUT:
-                out.append(f"{spread.key}: {spread.cut:.2%} of its normal spread is cut off at its ends.")
+        for one in self.spreads:
+            if one.cut > NOTED_CUT:
+                out.append(f"{one.key}: {one.cut:.2%} of its normal spread is cut off at its ends.")
         if self.correlated:
             out.append(
                 "Some inputs are correlated: a share of the variance belongs to none of them alone, so no Sobol indices are "
@@ -179,6 +180,8 @@ def band(
     quantities: Sequence[str] | None = None,
     model: str | None = None,
     engine: EngineName | None = None,
+    runner: Runner | None = None,
+    progress: Progress | None = None,
 ) -> Tolerance:
     """The band of every quantity under the spreads of the case's [tolerance], and what moves each most.
 
@@ -190,6 +193,8 @@ def band(
     quantities : names, e.g. ``["peak_pressure", "imep_gross"]``; default every figure of the model.
     model : model id; default the headline model.
     engine : ``reference`` or ``compiled``; default compiled where numba is installed.
+    runner : where rows are solved, default threads; the result does not depend on it.
+    progress : called with rows done and rows in all.
 
     Raises
     ------
@@ -209,8 +214,9 @@ def band(
     asked_for = figures.MODEL_FIGURES if quantities is None else [figures.resolve(name) for name in quantities]
     names = list(dict.fromkeys([*asked_for, *([PEAK] if section.peak_pressure_spread is not None else [])]))
     study = Study(case, [one.key for one in spreads], model=model, engine=engine, quantities=names)
-    sample = _Sample(study, case, spreads, root, rows, seed)
-    if not np.isfinite(sample.base(names[0])).any() and not any(np.isfinite(sample.base(name)).any() for name in names):
+    sample = Mixtures(study, spreads, root, rows, seed)
+    sample.solve(runner, progress or (lambda done, rows: None))
+    if not any(np.isfinite(sample.base(name)).any() for name in names):
         worst = Status(int(np.bincount(sample.base_status.ravel()).argmax()))
         raise UnsolvedError(worst.label, f"no row of the band could be solved; {worst.reason}", study.model or "")
     bands = {name: statistics.band(sample.base(name)) for name in names}
@@ -228,7 +234,7 @@ def band(
         correlated=root is not None,
         nominal=nominal,
         bands=bands,
-        influences={name: () if one.unmoved else sample.influences(name) for name, one in bands.items()},
+        influences={name: () if one.unmoved else _influences(sample, name) for name, one in bands.items()},
         failed=asked.failures(sample.base_status),
         design_peak=_design_peak(section, nominal, bands),
     )
@@ -252,51 +258,13 @@ def _design_peak(section: ToleranceSection, nominal: dict[str, float], bands: di
     return DesignPeak(scatter.relative, scatter.coverage, mean, mean * up, high, high * up)
 
 
-class _Sample:
-    """Rows of a study: the case itself, two independent samples, and their mixtures for the indices.
-
-    Every net has two halves of coordinates: one gives sample A, the other sample B. Mixture i is A with key i from B.
-    """
-
-    def __init__(
-        self, study: Study, case: Case, spreads: Sequence[Marginal], root: list[list[float]] | None, rows: int, seed: int
-    ) -> None:
-        self.keys = [one.key for one in spreads]
-        size, n = len(spreads), rows // (2 * RANDOMISATIONS)
-        net = draws.nets(2 * size, n, seed, RANDOMISATIONS)
-        parts = [net[:, :, :size], net[:, :, size:]]
-        if root is None:
-            for i in range(size):
-                mixed = parts[0].copy()
-                mixed[:, :, i] = parts[1][:, :, i]
-                parts.append(mixed)
-        self.shape = (len(parts), RANDOMISATIONS, n)
-        self.extra = (len(parts) - 2) * RANDOMISATIONS * n
-        own = np.array([[case.values()(key) for key in self.keys]])
-        x = np.concatenate([own, draws.values(spreads, np.concatenate(parts).reshape(-1, size), root)])
-        self.x = x[1 : 1 + rows].reshape(2, RANDOMISATIONS, n, size)
-        self.solved = study.run({key: x[:, i] for i, key in enumerate(self.keys)})
-        self.base_status = self.solved.status[1 : 1 + rows]
-
-    def nominal(self, name: str) -> float:
-        """Figure at the case's own values."""
-        return float(self.solved.figures[name][0])
-
-    def parts(self, name: str) -> Array:
-        """Figure on A, B and the mixtures (2 + D, R, N)."""
-        return self.solved.figures[name][1:].reshape(self.shape)
-
-    def base(self, name: str) -> Array:
-        """Figure on A and B together (R, 2 N)."""
-        return np.concatenate(list(self.parts(name)[:2]), axis=1)
-
-    def influences(self, name: str) -> tuple[Influence, ...]:
-        """Every key, the one that moves the figure most first."""
-        y = self.parts(name)
-        nothing = np.full(len(self.keys), np.nan)
-        shares = (nothing, nothing, nothing, nothing)
-        if self.extra:
-            shares = statistics.indices(y[0], y[1], np.moveaxis(y[2:], 0, 1))
-        ranks = statistics.rank_correlations(np.concatenate(list(self.x), axis=1), self.base(name))
-        found = [Influence(key, *(float(one[i]) for one in (*shares, *ranks))) for i, key in enumerate(self.keys)]
-        return tuple(sorted(found, key=lambda one: -(one.total if self.extra else abs(one.rank))))
+def _influences(sample: Mixtures, name: str) -> tuple[Influence, ...]:
+    """Every key, the one that moves the figure most first."""
+    nothing = np.full(len(sample.keys), np.nan)
+    shares = (nothing, nothing, nothing, nothing)
+    if sample.extra:
+        y = sample.parts(name)
+        shares = statistics.indices(y[0], y[1], np.moveaxis(y[2:], 0, 1))
+    ranks = statistics.rank_correlations(sample.inputs(), sample.base(name))
+    found = [Influence(key, *(float(one[i]) for one in (*shares, *ranks))) for i, key in enumerate(sample.keys)]
+    return tuple(sorted(found, key=lambda one: -(one.total if sample.extra else abs(one.rank))))
