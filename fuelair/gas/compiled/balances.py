@@ -34,6 +34,7 @@ from fuelair.gas.compiled.rows import (
     REACTIONS,
     SHARE,
     SIGMA,
+    SPECIES,
     SUM_Q,
     T_,
     TINY,
@@ -68,8 +69,8 @@ def evaluate(w: Array, tab: Array) -> None:
                 w[T_ * LANES + lane], w[LOG_T * LANES + lane],
             )  # fmt: skip
             w[row + lane] = exp(s - h)
-            w[row + REACTIONS * LANES + lane] = h
-            w[row + 2 * REACTIONS * LANES + lane] = cp
+            w[row + SPECIES * LANES + lane] = h
+            w[row + 2 * SPECIES * LANES + lane] = cp
 
 
 @vectorised
@@ -175,20 +176,20 @@ def balances(w: Array) -> None:
         up = 1.0 / all_plus
         down = -1.0 / all_minus
         # heats of reaction times amounts
-        t_co2 = w[K + REACTIONS * LANES + lane]
-        t_h2o = w[K + (REACTIONS + 1) * LANES + lane]
-        t_oh = w[K + (REACTIONS + 2) * LANES + lane]
-        t_h = w[K + (REACTIONS + 3) * LANES + lane]
-        t_o = w[K + (REACTIONS + 4) * LANES + lane]
-        t_no = w[K + (REACTIONS + 5) * LANES + lane]
-        t_n = w[K + (REACTIONS + 6) * LANES + lane]
-        t_no2 = w[K + (REACTIONS + 7) * LANES + lane]
-        t_ho2 = w[K + (REACTIONS + 8) * LANES + lane]
-        t_n2o = w[K + (REACTIONS + 9) * LANES + lane]
-        t_h2o2 = w[K + (REACTIONS + 10) * LANES + lane]
-        t_ch4 = w[K + (REACTIONS + 11) * LANES + lane]
-        t_nh3 = w[K + (REACTIONS + 12) * LANES + lane]
-        t_hcn = w[K + (REACTIONS + 13) * LANES + lane]
+        t_co2 = w[K + SPECIES * LANES + lane]
+        t_h2o = w[K + (SPECIES + 1) * LANES + lane]
+        t_oh = w[K + (SPECIES + 2) * LANES + lane]
+        t_h = w[K + (SPECIES + 3) * LANES + lane]
+        t_o = w[K + (SPECIES + 4) * LANES + lane]
+        t_no = w[K + (SPECIES + 5) * LANES + lane]
+        t_n = w[K + (SPECIES + 6) * LANES + lane]
+        t_no2 = w[K + (SPECIES + 7) * LANES + lane]
+        t_ho2 = w[K + (SPECIES + 8) * LANES + lane]
+        t_n2o = w[K + (SPECIES + 9) * LANES + lane]
+        t_h2o2 = w[K + (SPECIES + 10) * LANES + lane]
+        t_ch4 = w[K + (SPECIES + 11) * LANES + lane]
+        t_nh3 = w[K + (SPECIES + 12) * LANES + lane]
+        t_hcn = w[K + (SPECIES + 13) * LANES + lane]
         q_co2, q_h2o, q_oh, q_h, q_o, q_no, q_n = (
             n_co2 * t_co2, n_h2o * t_h2o, n_oh * t_oh, n_h * t_h, n_o * t_o, n_no * t_no, n_n * t_n,
         )  # fmt: skip
@@ -238,7 +239,7 @@ def balances(w: Array) -> None:
         w[W_S * LANES + lane] = count + sum_c * c_s + sum_h * h_s + sum_n * n_s
         w[W_T * LANES + lane] = sum_q + sum_c * c_t + sum_h * h_t + sum_n * n_t
         # heat
-        D = DCP * LANES + lane
+        D = (DCP + 4) * LANES + lane
         heat = (
             n_co2 * w[D] + n_h2o * w[D + LANES] + n_oh * w[D + 2 * LANES] + n_h * w[D + 3 * LANES] + n_o * w[D + 4 * LANES]
             + n_no * w[D + 5 * LANES] + n_n * w[D + 6 * LANES] + n_no2 * w[D + 7 * LANES] + n_ho2 * w[D + 8 * LANES]

@@ -41,17 +41,28 @@ def inlined(function: Function) -> Function:
     return _decorated(function, CONTRACT, inside=True)
 
 
+def bare(function: Function) -> Function:
+    """As `inlined`, for what makes and returns no array: no reference counts are kept, which cost as much as the work."""
+    return _decorated(function, CONTRACT, inside=True, counted=False)
+
+
+def summing(function: Function) -> Function:
+    """As `bare`, with sums in the order that is fastest: another than that written, but the same in every call."""
+    return _decorated(function, CONTRACT | {"reassoc"}, inside=True, counted=False)
+
+
 def vectorised(function: Function) -> Function:
     """As `inlined`, for loops over lanes: no value there may be NaN or infinite."""
     return _decorated(function, LANES_ONLY, inside=True)
 
 
-def _decorated(function: Function, fastmath: frozenset[str], *, inside: bool) -> Function:
+def _decorated(function: Function, fastmath: frozenset[str], *, inside: bool, counted: bool = True) -> Function:
     config: Any = numba.config
     folder, before = cache_folder(), config.CACHE_DIR
     config.CACHE_DIR = "" if folder is None else str(folder)  # read by numba while it decorates
     try:
         options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": set(fastmath), "forceinline": inside}
+        options["_nrt"] = counted
         made = numba.njit(cache=folder is not None and not inside, **options)(function)
     finally:
         config.CACHE_DIR = before

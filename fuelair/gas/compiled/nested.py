@@ -26,49 +26,39 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from fuelair.gas.compiled.finish import close, properties
 from fuelair.gas.compiled.guess import load
-from fuelair.gas.compiled.jit import compiled, vectorised
+from fuelair.gas.compiled.jit import compiled, inlined
 from fuelair.gas.compiled.rows import (
+    ANSWER,
     BLOCK,
+    BOUNDED,
     C_,
-    CO,
-    CO2,
     COUNT,
     DONE,
-    DS,
     DT,
-    DZ,
-    E_,
     ETA,
     FAILED,
     FIXED,
-    H2,
-    H2O,
     H_,
-    K_ROW,
     LAG,
     LAGGED,
     LOADED,
     MAJOR,
     MAX_STEPS,
     MISS,
-    N2,
     N_,
     NU,
-    O2,
-    REACTIONS,
     ROWS,
     SHARE,
     SPECIES,
     START,
     STAYS,
     T_,
-    THETA,
-    TINY,
     TOLERANCE,
     WIDE,
     WIDEST,
-)
+)  # fmt: skip
 from fuelair.gas.compiled.steps import step
 from fuelair.gas.compiled.vector_math import LANES
 from fuelair.gas.engine import Array, Codes
@@ -76,58 +66,35 @@ from fuelair.gas.engine import Array, Codes
 Indices = npt.NDArray[np.int64]
 
 
-@vectorised
-def _finish(w: Array, lane: int, atoms: Array, n: Array, own: Array) -> None:
-    """Amounts ``n`` of a lane, corrected by its last step, the elements closed on those that it came with.
-
-    ``atoms`` (5, SPECIES): C, H, N, O beyond C, and oxygen excess of the basis and the products.
-    """
-    d_z, d_s, d_t = w[DZ * LANES + lane], w[DS * LANES + lane], w[DT * LANES + lane]
-    for j in range(4):
-        n[j] = w[(MAJOR + j) * LANES + lane]
-        own[j] = 0.0
-    for j in range(REACTIONS):
-        n[4 + j] = w[(K_ROW + j) * LANES + lane]
-        own[4 + j] = w[(THETA + j) * LANES + lane]
-    pull_c = pull_h = pull_n = weight_c = weight_h = weight_n = TINY
-    for j in range(SPECIES):
-        own[j] = d_s + atoms[3, j] * d_z + own[j] * d_t
-        a_c, a_h, a_n = atoms[0, j] * n[j], atoms[1, j] * n[j], atoms[2, j] * n[j]
-        pull_c += a_c * own[j]
-        pull_h += a_h * own[j]
-        pull_n += a_n * own[j]
-        weight_c += a_c
-        weight_h += a_h * atoms[1, j]
-        weight_n += a_n * atoms[2, j]
-    d_c, d_h, d_n = -pull_c / weight_c, -pull_h / weight_h, -pull_n / weight_n
-    have_c = have_h = have_n = 0.0
-    for j in range(SPECIES):
-        n[j] *= 1.0 + (own[j] + atoms[0, j] * d_c + atoms[1, j] * d_h + atoms[2, j] * d_n)
-        have_c += atoms[0, j] * n[j]
-        have_h += atoms[1, j] * n[j]
-        have_n += atoms[2, j] * n[j]
-    n[CO2 if n[CO2] > n[CO] else CO] += w[C_ * LANES + lane] - have_c
-    n[H2O if n[H2O] > n[H2] else H2] += 0.5 * (w[H_ * LANES + lane] - have_h)
-    n[N2] += 0.5 * (w[N_ * LANES + lane] - have_n)
-    have_e = 0.0
-    for j in range(SPECIES):
-        have_e += n[j] * atoms[4, j]
-    left = w[E_ * LANES + lane] - have_e
-    if n[O2] > n[CO] and n[O2] > n[H2]:
-        n[O2] += 0.5 * left
-    elif n[CO] > n[H2]:
-        n[CO] -= left
-        n[CO2] += left
-    else:
-        n[H2] -= left
-        n[H2O] += left
+@inlined
+def _hand_over(
+    f: Array, owner: Indices, filled: int, pair: int, atoms: Array, columns: Indices, stays: Indices, gas_constant: float,
+    p0: float, out: Array, found: Array, code: Codes,
+) -> None:  # fmt: skip
+    """Finish the states that stand in ``f`` and write them out."""
+    close(f, atoms)
+    properties(f, pair, gas_constant, p0)
+    for lane in range(filled):
+        i = owner[lane]
+        if not abs(f[MISS * LANES + lane]) <= BOUNDED:
+            code[i] = FAILED
+            continue
+        code[i] = DONE
+        for k in range(found.shape[1]):
+            found[i, k] = 0.0
+        for j in range(SPECIES):
+            found[i, columns[j]] = f[(MAJOR + j) * LANES + lane]
+        for j in range(stays.shape[0]):
+            found[i, stays[j]] = f[(STAYS + j) * LANES + lane]
+        for k in range(8):
+            out[k, i] = f[(ANSWER + k) * LANES + lane]
 
 
 @compiled
 def solve(
     pair: int, x: Array, y: Array, amounts: Array, linear: Array, base: Array, tab: Array,
     atoms: Array, columns: Indices, stays: Indices, constants: tuple[float, float],
-    start: Array, out: Array, T: Array, code: Codes, steps: npt.NDArray[np.int32],
+    start: Array, out: Array, found: Array, code: Codes, steps: npt.NDArray[np.int32],
 ) -> None:  # fmt: skip
     """Equilibrium of a batch.
 
@@ -137,19 +104,22 @@ def solve(
     linear, base, tab, atoms, columns, stays : see `batch_gas.Constants`. constants : molar gas constant [J/(kmol K)]
         and reference pressure [Pa].
     start : (N,) temperature to start from [K].
-    out, T, code, steps : results, written in place.
+    out, found, code, steps : results, written in place where a state is solved: (8, N) T p v u h s cp and speed of sound,
+        (N, S) amounts; always how it ended, and the steps it took.
     """
     n = x.shape[0]
     gas_constant, p0 = constants
-    w, q = np.zeros(ROWS * LANES), np.zeros(LOADED * BLOCK)
+    w, q, f = np.zeros(ROWS * LANES), np.zeros(LOADED * BLOCK), np.zeros(ROWS * LANES)
     codes = np.zeros(BLOCK, np.int8)
-    found, own = np.zeros(SPECIES), np.zeros(SPECIES)
-    state = np.full(LANES, -1)
+    state, owner = np.full(LANES, -1), np.zeros(LANES, np.int64)
     q[T_ * BLOCK : (T_ + 1) * BLOCK] = START
-    following, loaded, busy = 0, 0, 0
+    following, loaded, busy, filled = 0, 0, 0, 0
     for lane in range(LANES):  # an idle lane computes something harmless
         for row in (T_, C_, H_, N_, FIXED, ETA, NU):
             w[row * LANES + lane] = START if row == T_ else 1.0
+            f[row * LANES + lane] = w[row * LANES + lane]
+        for row in range(MAJOR, MAJOR + SPECIES):
+            f[row * LANES + lane] = 1.0
     while following < n or busy > 0:
         for lane in range(LANES):
             while state[lane] < 0 and following < n:
@@ -176,22 +146,25 @@ def solve(
                 continue
             w[COUNT * LANES + lane] += 1.0
             miss, share = w[MISS * LANES + lane], w[SHARE * LANES + lane]
-            ended = -1
-            if miss < TOLERANCE and share > WIDEST:
-                ended = WIDE
-            elif miss < TOLERANCE and w[LAGGED * LANES + lane] < LAG:
-                ended = DONE
-                _finish(w, lane, atoms, found, own)
-                out[i, :] = 0.0
-                for j in range(SPECIES):
-                    out[i, columns[j]] = max(found[j], 0.0)
-                for j in range(stays.shape[0]):
-                    out[i, stays[j]] = w[(STAYS + j) * LANES + lane]
-                T[i] = w[T_ * LANES + lane]
-            elif w[COUNT * LANES + lane] >= MAX_STEPS or not miss < 1e300:
-                ended = WIDE if share > WIDEST else FAILED
-            if ended >= 0:
-                code[i] = ended
-                steps[i] = int(w[COUNT * LANES + lane])
-                state[lane] = -1
-                busy -= 1
+            settled = miss < TOLERANCE and (share > WIDEST or w[LAGGED * LANES + lane] < LAG)
+            if not settled and w[COUNT * LANES + lane] < MAX_STEPS and miss < 1e300:
+                continue
+            steps[i] = int(w[COUNT * LANES + lane])
+            state[lane] = -1
+            busy -= 1
+            if share > WIDEST:
+                code[i] = WIDE
+            elif not settled:
+                code[i] = FAILED
+            else:
+                for row in range(DT + 1):
+                    f[row * LANES + filled] = w[row * LANES + lane]
+                for row in range(MAJOR, ROWS):
+                    f[row * LANES + filled] = w[row * LANES + lane]
+                owner[filled] = i
+                filled += 1
+                if filled == LANES:
+                    _hand_over(f, owner, filled, pair, atoms, columns, stays, gas_constant, p0, out, found, code)
+                    filled = 0
+    if filled > 0:
+        _hand_over(f, owner, filled, pair, atoms, columns, stays, gas_constant, p0, out, found, code)

@@ -43,8 +43,12 @@ LOADED = BASE + 18
     Z_E, Z_S, Z_T, W_Z, W_S, W_T, WHOLE, B_Z, B_S, B_T, SUM_Q, P_Z, P_S, P_T, S_T, LEVEL,
     ETA_Z, ETA_S, ETA_T, NU_Z, NU_S, NU_T,
 ) = range(LOADED, LOADED + 31)  # fmt: skip
-K_ROW = LOADED + 31  # REACTIONS rows: equilibrium constant, then amount of each product
-THETA = K_ROW + REACTIONS  # enthalpy of reaction over R T
-DCP = THETA + REACTIONS
-MAJOR = DCP + REACTIONS  # 4 rows: amounts of CO H2 O2 N2
-ROWS = MAJOR + 4
+MAJOR = LOADED + 31  # SPECIES rows of amounts: CO H2 O2 N2, then the products
+K_ROW = MAJOR + 4  # the products' rows; before their amounts they hold the equilibrium constants
+THETA = MAJOR + SPECIES  # enthalpy of reaction over R T, zero for the basis
+DCP = THETA + SPECIES
+ROWS = DCP + SPECIES
+ANSWER = Z_E
+"""Where a finished state has its 8 rows of properties: T p v u h s cp and speed of sound."""
+BOUNDED = 1e-8
+"""Largest relative step of temperature that a finished state may still ask for."""
