@@ -19,6 +19,8 @@ from fuelair.study.columns import Values, heading
 
 SUFFIXES: Final = (".csv", ".parquet")
 STATUS: Final = "status"
+LINES: Final = 2048
+"""Lines of text made at once; more are slower."""
 _LABELS: Final = [status.label for status in Status]
 
 
@@ -50,7 +52,10 @@ def save(path: Path, kind: str, blocks: Iterable[Block], about: Mapping[str, Any
     if kind == ".csv":
         with path.open("wb") as file:
             for number, block in enumerate(blocks):
-                file.write(_csv(block, head=number == 0))
+                if number == 0:
+                    file.write(f"{','.join([*map(heading, block.keys), *block.figures, STATUS])}\n".encode())
+                for start in range(0, len(block.status), LINES):
+                    file.write(_lines(block, slice(start, start + LINES)).encode())
         return
     pa, parquet = _arrow("pyarrow"), _arrow("pyarrow.parquet")
     writer = None
@@ -93,13 +98,11 @@ def _table(pa: Any, block: Block) -> Any:
     return pa.table(columns)
 
 
-def _csv(block: Block, *, head: bool) -> bytes:
-    """Text of a block; numbers as short as they read back exactly, nothing where there is no figure."""
-    columns = [_cells(values) for values in (*block.keys.values(), *block.figures.values())]
-    columns.append(_labels(block.status))
-    lines = map(",".join, zip(*columns, strict=True))
-    names = [*map(heading, block.keys), *block.figures, STATUS]
-    return "".join(f"{line}\n" for line in ([",".join(names), *lines] if head else lines)).encode()
+def _lines(block: Block, rows: slice) -> str:
+    """Text of some rows; numbers as short as they read back exactly, nothing where there is no figure."""
+    columns = [_cells(values[rows]) for values in (*block.keys.values(), *block.figures.values())]
+    columns.append(_labels(block.status[rows]))
+    return "\n".join(map(",".join, zip(*columns, strict=True))) + "\n"
 
 
 def _cells(values: Values) -> Sequence[str]:

@@ -281,7 +281,7 @@ def plain(item: Any) -> Any:
 
 def _ends(case: Case, key: str, parts: Sequence[str]) -> tuple[float, float]:
     column = _checked(case, key, [plain(part) for part in parts[:2]])
-    if column.numbers is None:
+    if column.numbers is None or column.labels is not None:
         raise InputError(Problem("is not a number that a range may run over", key, ":".join(parts), hint=f"a list: {key}=a,b,c"))
     return float(column.numbers[0]), float(column.numbers[1])
 
