@@ -75,7 +75,6 @@ def dry_air(year: int = DEFAULT_YEAR) -> DryAir:
 # saturation pressure; coefficients from memory, checked in tests against IAPWS-95 and IAPWS-IF97 in CoolProp.
 _TC, _PC = 647.096, 22.064e6
 _A = (-7.85951783, 1.84408259, -11.7866497, 22.6807411, -15.9618719, 1.80122502)
-_EXPONENT = (1.0, 1.5, 3.0, 3.5, 4.0, 7.5)
 
 
 def water_saturation_pressure(T: Array | float) -> Array:
@@ -93,7 +92,9 @@ def water_saturation_pressure(T: Array | float) -> Array:
     """
     T = np.asarray(T, float)
     theta = np.clip(1.0 - T / _TC, 0.0, 1.0)
-    series = sum(a * theta**e for a, e in zip(_A, _EXPONENT, strict=True))
+    root, cube = np.sqrt(theta), theta * theta * theta
+    a, b, c, d, e, f = _A  # of theta to the power 1, 1.5, 3, 3.5, 4 and 7.5
+    series = theta * (a + b * root) + cube * (c + d * root + e * theta + f * cube * theta * root)
     with np.errstate(over="ignore"):
         value = _PC * np.exp(_TC / T * series)
     return np.asarray(np.where(T >= _TC, np.inf, value))

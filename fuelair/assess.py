@@ -12,8 +12,9 @@ from fuelair.assessment import Assessment
 from fuelair.case import Case
 from fuelair.charge import COLDEST, Charge, enters_as_liquid, supply_enthalpy
 from fuelair.cycle import air_standard, exergy, fuel_air, ladder
-from fuelair.cycle.breathing import Exhaust, solve_charge
+from fuelair.cycle.breathing import Settings, solve_charge
 from fuelair.cycle.result import FREEZE_MODEL, MODELS, REAL_MODEL, CycleResult
+from fuelair.cycle.stages import Passage
 from fuelair.errors import InputError, Problem, UnsolvedError
 from fuelair.gas import virial_data
 from fuelair.gas.engine import Array, Engine, Status
@@ -71,12 +72,11 @@ def of_model(engines: Engines, model: str) -> Engine:
 def trap(prepared: Prepared, engine: Engine) -> Charge:
     """The trapped charge, gas exchange solved once with the headline model."""
 
-    def run(charge: Charge) -> tuple[CycleResult, Exhaust]:
-        solved = fuel_air.run(engine, charge, prepared.settings, prepared.headline, points=False)
-        return solved.result, solved.exhaust
+    def cycle(charge: Charge, settings: Settings) -> Passage:
+        return fuel_air.passage(engine, charge, settings, prepared.headline)
 
     return solve_charge(
-        prepared.recipe, engine, prepared.settings, run, fuel_mass=prepared.fuel_mass, cutoff_ratio=prepared.cutoff_ratio
+        prepared.recipe, engine, prepared.settings, cycle, fuel_mass=prepared.fuel_mass, cutoff_ratio=prepared.cutoff_ratio
     )
 
 
@@ -86,8 +86,8 @@ def models(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> dict
     return {model: result_of(model, prepared, engines, headline) for model in MODELS + leads}
 
 
-def result_of(model: str, prepared: Prepared, engines: Engines, headline: fuel_air.Run, *, points: bool = True) -> CycleResult:
-    """One model on the headline's charge; ``points`` as in `fuelair.cycle.fuel_air.run`."""
+def result_of(model: str, prepared: Prepared, engines: Engines, headline: fuel_air.Run, *, in_full: bool = True) -> CycleResult:
+    """One model on the headline's charge; ``in_full`` as in `fuelair.cycle.fuel_air.run`."""
     charge, settings = headline.charge, prepared.settings
     if model == prepared.headline:
         return headline.result
@@ -97,7 +97,7 @@ def result_of(model: str, prepared: Prepared, engines: Engines, headline: fuel_a
         return air_standard.run(model, air_standard.variable_air(engines.ideal, charge.recipe.air), charge, settings)
     engine = of_model(engines, model)
     own = charge if engine is of_model(engines, prepared.headline) else fuel_air.seen_by(engine, charge)
-    return fuel_air.run(engine, own, settings, model, headline=False, points=points).result
+    return fuel_air.run(engine, own, settings, model, headline=False, in_full=in_full).result
 
 
 def at_rest(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> CycleResult | None:
@@ -110,7 +110,7 @@ def at_rest(prepared: Prepared, engines: Engines, headline: fuel_air.Run) -> Cyc
     one = np.ones(len(recipe))
     plain = replace(recipe, fuel_temperature=one * T_STANDARD, fuel_pressure=one * pressure)
     resting = replace(fuel_air.seen_by(engines.ideal, charge), recipe=plain, fuel_enthalpy=supply_enthalpy(plain))
-    return fuel_air.run(engines.ideal, resting, prepared.settings, ladder.SUPPLY_MODEL, headline=False, points=False).result
+    return fuel_air.run(engines.ideal, resting, prepared.settings, ladder.SUPPLY_MODEL, headline=False, in_full=False).result
 
 
 def companions(prepared: Prepared, engine: Engine, headline: fuel_air.Run) -> dict[str, dict[str, CycleResult]]:

@@ -9,7 +9,6 @@ from fuelair.charge import Charge
 from fuelair.charge.recipe import pure
 from fuelair.cycle.breathing import short_circuit
 from fuelair.cycle.fuel_air import Run
-from fuelair.cycle.stages import choose
 from fuelair.gas.complete import oxygen_excess
 from fuelair.gas.engine import Array, Engine, GasState, Status, weighted
 from fuelair.gas.species import FUEL
@@ -85,7 +84,7 @@ def mixed_exhaust(prepared: Prepared, run: Run, engine: Engine) -> GasState:
     table, recipe = charge.recipe.table, charge.recipe
     fresh = _fresh(charge)
     h = engine.state(table, "TP", recipe.temperature, recipe.pressure, fresh).h
-    mixed = short_circuit(
+    return short_circuit(
         engine,
         table,
         run.exhaust,
@@ -94,7 +93,6 @@ def mixed_exhaust(prepared: Prepared, run: Run, engine: Engine) -> GasState:
         extra_amounts=fresh,
         pressure=prepared.settings.exhaust_pressure,
     )
-    return choose(bypass != 0.0, mixed, run.exhaust.leaving)
 
 
 def _bypass(prepared: Prepared, charge: Charge) -> Array:

@@ -83,11 +83,7 @@ def make(
 def trap(gas, recipe, settings, model="fuel-air-equilibrium", **basis):
     """The charge, its gas exchange solved with ``model``."""
 
-    def cycle(charge):
-        solved = fuel_air.run(gas, charge, settings, model, points=False)
-        return solved.result, solved.exhaust
-
-    return solve_charge(recipe, gas, settings, cycle, **basis)
+    return solve_charge(recipe, gas, settings, lambda charge, own: fuel_air.passage(gas, charge, own, model), **basis)
 
 
 def solve(gas, recipe, settings, model="fuel-air-equilibrium", **basis):

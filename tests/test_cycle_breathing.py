@@ -255,7 +255,7 @@ def test_without_anything_that_comes_back_no_cycle_is_run(fake, make):
     engine = fake()
     recipe, settings = make(fake.fuel, "direct")
 
-    def never(charge):
+    def never(charge, settings):
         raise AssertionError("the cycle was run")
 
     charge = breathing.solve_charge(replace(recipe, table=engine.table), engine, settings, never)

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 
-from fuelair.air import water_dew_point, water_saturation_pressure
+from fuelair.air import water_saturation_pressure
 from fuelair.charge.recipe import Recipe, enters_as_liquid, supply_enthalpy, water_enthalpy
-from fuelair.charge.trapped import BurnedGas, Charge
+from fuelair.charge.trapped import BurnedGas, Charge, water_saturation_ratio
 from fuelair.gas.engine import Array, Engine, GasState, Status, total
 from fuelair.gas.species import FUEL, SpeciesTable
 
@@ -21,7 +21,7 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     """
     table, n = recipe.table, len(recipe)
     before = recipe.admission != "direct"
-    fresh, egr, fuel, drained, dew = _streams(recipe, engine, burned)
+    fresh, egr, fuel, drained, vapour = _streams(recipe, engine, burned)
     water = fuel * (0.0 if recipe.water_ratio is None else recipe.water_ratio)
     at_combustion = np.where(recipe.water_at_combustion, water, 0.0)
     early = water - at_combustion
@@ -36,7 +36,8 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     share = (1.0 - x) / intake_mass  # kg of fresh dry air per kg trapped
     amounts = intake * share[:, None] + burned.amounts * x[:, None]
     enthalpy_in, wall = _intake_enthalpy(recipe, engine, fresh, egr, fuel, share)
-    enthalpy_in = enthalpy_in + early * share * water_enthalpy(recipe)
+    if recipe.water_ratio is not None:
+        enthalpy_in = enthalpy_in + early * share * water_enthalpy(recipe)
     if recipe.from_intake:
         returned = burned.h + burned.v * (recipe.pressure - recipe.exhaust_pressure)
         h1 = enthalpy_in + np.where(x > 0.0, x * returned, 0.0)
@@ -44,9 +45,10 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
     else:
         trapped = engine.state(table, "TP", recipe.temperature, recipe.pressure, amounts)
     ratio = _saturation_ratio(recipe, trapped, before)
-    wet = trapped.mole_fractions()[:, table.index("H2O")] * trapped.p / water_saturation_pressure(trapped.T)
     status = trapped.status.copy()
-    cold = (ratio > 1.0) | ((wet > 1.0) & (early > 0.0))
+    cold = ratio > 1.0
+    if (early > 0.0).any():
+        cold |= (water_saturation_ratio(table, trapped) > 1.0) & (early > 0.0)
     evaporates = (enters_as_liquid(recipe) & before) | (early > 0.0)
     frigid = evaporates & recipe.from_intake & (trapped.status != Status.OK) & ~(trapped.T > COLDEST) & (x < 1.0)
     status[((status == Status.OK) | (status == Status.OUTSIDE_DATA)) & cold | frigid] = Status.VAPOUR_ABOVE_SATURATION
@@ -66,17 +68,16 @@ def compose(recipe: Recipe, engine: Engine, burned: BurnedGas) -> Charge:
         residual_fraction=x,
         residual_amounts=burned.amounts,
         drained_water=drained,
-        receiver_dew_point=dew,
+        receiver_vapour_pressure=vapour,
         intake_enthalpy=enthalpy_in,
         wall_heat=wall,
         saturation_ratio=ratio,
-        water_saturation_ratio=wet,
         status=status,
     )
 
 
 def _streams(recipe: Recipe, engine: Engine, burned: BurnedGas) -> tuple[Array, Array, Array, Array, Array]:
-    """Fresh air with vapour (N, S), recirculated gas (N, S), fuel [kg], drained water [kg], dew point; per kg dry air."""
+    """Fresh air with vapour and recirculated gas (N, S), fuel and drained water [kg], per kg dry air; vapour pressure [Pa]."""
     table, n = recipe.table, len(recipe)
     water = table.index("H2O")
     dry = table.amounts({k: v for k, v in recipe.air.composition().items() if v > 0.0})
@@ -93,9 +94,9 @@ def _streams(recipe: Recipe, engine: Engine, burned: BurnedGas) -> tuple[Array, 
         keep = np.where(wet > 0.0, whole[:, water] / wet, 1.0)
     fresh[:, water] *= keep
     egr[:, water] *= keep
-    dew = water_dew_point(whole[:, water] / total(whole) * recipe.pressure)
+    vapour = whole[:, water] / total(whole) * recipe.pressure
     fuel = recipe.equivalence_ratio / recipe.stoichiometric_air_fuel_ratio
-    return fresh, egr, fuel, (drained + condensed), dew
+    return fresh, egr, fuel, (drained + condensed), vapour
 
 
 def _mixing_temperature(recipe: Recipe, engine: Engine, fresh: Array, egr: Array, cooled: Array) -> Array:
@@ -112,6 +113,8 @@ def _mixing_temperature(recipe: Recipe, engine: Engine, fresh: Array, egr: Array
 def drain(table: SpeciesTable, amounts: Array, T: Array, pressure: Array) -> Array:
     """Take water above saturation out of ``amounts`` (in place); returns the mass taken, same basis [kg]."""
     water = table.index("H2O")
+    if not amounts[:, water].any():
+        return np.zeros(len(amounts))
     others = total(amounts) - amounts[:, water]
     saturation = water_saturation_pressure(T)
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -126,10 +129,12 @@ def _intake_enthalpy(recipe: Recipe, engine: Engine, fresh: Array, egr: Array, f
     """Enthalpy brought in [J/kg trapped] and the part of it given by walls as latent heat."""
     table = recipe.table
     cooled = np.where(np.isfinite(recipe.egr_temperature), recipe.egr_temperature, recipe.temperature)
-    enthalpy = _stream_enthalpy(engine, table, fresh, recipe.temperature, recipe.pressure) * share
+    enthalpy = np.full(len(recipe), np.nan)  # asked for only where it makes the trapped state
+    if recipe.from_intake:
+        enthalpy = _stream_enthalpy(engine, table, fresh, recipe.temperature, recipe.pressure) * share
     if recipe.admission == "premixed":
         enthalpy = enthalpy + supply_enthalpy(recipe) * fuel * share
-    if np.any(recipe.egr_fraction > 0.0):
+    if recipe.from_intake and np.any(recipe.egr_fraction > 0.0):
         enthalpy = enthalpy + _stream_enthalpy(engine, table, egr, cooled, recipe.pressure) * share
     wall = np.zeros(len(recipe))
     if recipe.admission in ("port-liquid", "early-direct"):
@@ -151,11 +156,7 @@ def _saturation_ratio(recipe: Recipe, trapped: GasState, before: bool) -> Array:
     if not before:
         return np.zeros(len(recipe))
     x = trapped.mole_fractions()[:, recipe.table.index(FUEL)]
-    out = np.zeros(len(recipe))
-    for i, T in enumerate(trapped.T):
-        limit = recipe.fuel.saturation_pressure(float(T)) if np.isfinite(T) else None
-        out[i] = 0.0 if limit is None else float(x[i] * trapped.p[i] / limit)
-    return out
+    return np.nan_to_num(x * trapped.p / recipe.fuel.vapour_limit(trapped.T))
 
 
 def _mass(table: SpeciesTable, amounts: Array) -> Array:

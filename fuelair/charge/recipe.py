@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 
 from fuelair.air import DryAir
 from fuelair.fuel import Fuel
 from fuelair.gas.complete import oxygen_excess
-from fuelair.gas.engine import Array, Mask
+from fuelair.gas.engine import Array, Index, Mask
 from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL, T_STANDARD, SpeciesTable
 
@@ -66,6 +66,11 @@ class Recipe:
     def __len__(self) -> int:
         return len(self.pressure)
 
+    def rows(self, index: Index) -> Recipe:
+        """The recipe of some rows only."""
+        own: dict[str, Any] = {k: v[index] for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
+        return replace(self, **own)
+
     def with_equivalence_ratio(self, value: Array) -> Recipe:
         """The same recipe with another amount of fuel."""
         return replace(self, equivalence_ratio=value)
@@ -89,8 +94,7 @@ def enters_as_liquid(recipe: Recipe) -> Mask:
     """Where the fuel enters as liquid: every admission but ``premixed``, if its supply state is liquid."""
     if recipe.admission == "premixed":
         return np.zeros(len(recipe), np.bool_)
-    phases = [recipe.fuel.phase(float(t), float(p)) for t, p in zip(recipe.fuel_temperature, recipe.fuel_pressure, strict=True)]
-    return np.array([phase == "liquid" for phase in phases], np.bool_)
+    return recipe.fuel.is_liquid(recipe.fuel_temperature, recipe.fuel_pressure)
 
 
 def heating_value(recipe: Recipe) -> Array:
@@ -103,9 +107,9 @@ def heating_value(recipe: Recipe) -> Array:
 def supply_enthalpy(recipe: Recipe) -> Array:
     """Enthalpy of the fuel as supplied [J/kg fuel] on the table's datum, shape (N,)."""
     table, fuel = recipe.table, recipe.fuel
-    vapour = pure(table, FUEL, len(recipe))
-    _, standard, _ = mix(table, vapour).thermal(np.full(len(recipe), T_STANDARD))
-    _, warm, _ = mix(table, vapour).thermal(recipe.fuel_temperature)
+    vapour = mix(table, pure(table, FUEL, 1))
+    _, standard, _ = vapour.thermal(np.array([T_STANDARD]))
+    _, warm, _ = vapour.thermal(recipe.fuel_temperature)
     liquid = enters_as_liquid(recipe)
     if not liquid.any():
         return warm
@@ -119,7 +123,7 @@ def water_enthalpy(recipe: Recipe) -> Array:
     IAPWS-95 up to 353 K). Latent heat and specific heat: CRC Handbook, as in package chemicals 1.5.2.
     """
     table = recipe.table
-    _, vapour, _ = mix(table, pure(table, "H2O", len(recipe))).thermal(np.full(len(recipe), T_STANDARD))
+    _, vapour, _ = mix(table, pure(table, "H2O", 1)).thermal(np.array([T_STANDARD]))
     return np.asarray(vapour - WATER_LATENT_HEAT + WATER_CP * (recipe.liquid_water_temperature - T_STANDARD))
 
 

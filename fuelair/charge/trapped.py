@@ -6,10 +6,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from fuelair.air import water_dew_point, water_saturation_pressure
 from fuelair.charge.recipe import Recipe, heating_value, pure
 from fuelair.gas.complete import oxygen_excess
-from fuelair.gas.engine import Array, Codes, GasState
-from fuelair.gas.species import FUEL, UNBURNED
+from fuelair.gas.engine import Array, Codes, GasState, Index
+from fuelair.gas.species import FUEL, UNBURNED, SpeciesTable
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,6 +29,24 @@ class BurnedGas:
     h: Array
     v: Array
 
+    @classmethod
+    def none(cls, n: int, species: int) -> BurnedGas:
+        """No burned gas, for ``n`` charges."""
+        return cls(np.zeros((n, species)), np.zeros(n), np.zeros(n), np.ones(n))
+
+    def fields(self) -> tuple[Array, Array, Array, Array]:
+        """Amounts, fraction, enthalpy and volume."""
+        return self.amounts, self.fraction, self.h, self.v
+
+    def put(self, index: Index, some: BurnedGas) -> None:
+        """Write the burned gas of some rows, in place."""
+        for mine, its in zip(self.fields(), some.fields(), strict=True):
+            mine[index] = its
+
+    def rows(self, index: Index) -> BurnedGas:
+        """The burned gas of some rows only."""
+        return BurnedGas(*(values[index] for values in self.fields()))
+
 
 @dataclass(frozen=True, slots=True)
 class Charge:
@@ -45,11 +64,11 @@ class Charge:
     water_added : liquid water added in intake or cylinder [kg/kg].
     residual_amounts : composition of the residual gas (N, S) [kmol/kg].
     drained_water : condensed and drained in the receiver and the exhaust cooler [kg/kg dry air].
-    receiver_dew_point : of the fresh gas [K], NaN if dry.
-    intake_enthalpy : (1 - x_r) h_i [J/kg trapped], fuel included when it comes with the air.
+    receiver_vapour_pressure : partial pressure of water in the fresh gas [Pa].
+    intake_enthalpy : (1 - x_r) h_i [J/kg trapped], fuel included when it comes with the air; NaN unless the
+        receiver's state is given.
     wall_heat : latent heat that walls, not the gas, gave [J/kg trapped].
     saturation_ratio : partial pressure of fuel vapour over its saturation pressure [-].
-    water_saturation_ratio : the same of water vapour [-].
     status : why the charge cannot be, if so.
     """
 
@@ -67,12 +86,21 @@ class Charge:
     residual_fraction: Array
     residual_amounts: Array
     drained_water: Array
-    receiver_dew_point: Array
+    receiver_vapour_pressure: Array
     intake_enthalpy: Array
     wall_heat: Array
     saturation_ratio: Array
-    water_saturation_ratio: Array
     status: Codes
+
+    @property
+    def receiver_dew_point(self) -> Array:
+        """Dew point of the fresh gas in the receiver [K], NaN if dry."""
+        return water_dew_point(self.receiver_vapour_pressure)
+
+    @property
+    def water_saturation_ratio(self) -> Array:
+        """Partial pressure of water vapour over its saturation pressure [-]."""
+        return water_saturation_ratio(self.recipe.table, self.trapped)
 
     @property
     def lower_heating_value(self) -> Array:
@@ -113,7 +141,7 @@ class Charge:
     def oxygen_excess_ratio(self) -> Array:
         """Free oxygen trapped, that of recirculated and residual gas included, over what all fresh fuel takes [-]."""
         table = self.recipe.table
-        demand = -oxygen_excess(table, pure(table, FUEL, len(self.recipe))) * self.fuel_mass
+        demand = -oxygen_excess(table, pure(table, FUEL, 1)) * self.fuel_mass
         return np.asarray(1.0 + self.oxygen_left() / demand - (1.0 - self.recipe.combustion_efficiency))
 
     def oxygen_left(self) -> Array:
@@ -123,3 +151,9 @@ class Charge:
     def trapped_oxygen(self) -> Array:
         """Mole fraction of molecular oxygen in the trapped gas [-]."""
         return np.asarray(self.trapped.mole_fractions()[:, self.recipe.table.index("O2")])
+
+
+def water_saturation_ratio(table: SpeciesTable, state: GasState) -> Array:
+    """Partial pressure of water vapour over its saturation pressure [-], shape (N,)."""
+    x = state.mole_fractions()[:, table.index("H2O")]
+    return np.asarray(x * state.p / water_saturation_pressure(state.T))

@@ -9,30 +9,28 @@ balances for constant specific heats, from memory):
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from typing import Any
 
 import numpy as np
 
 from fuelair.charge import BurnedGas, Charge, Recipe, compose
 from fuelair.cycle.geometry import Volumes
-from fuelair.cycle.stages import HeatAddition, choose, freeze_composition
+from fuelair.cycle.stages import HeatAddition, Passage, freeze_composition, replaced
 from fuelair.gas.complete import composition
-from fuelair.gas.engine import Array, Engine, GasState, Mask, Status, total
+from fuelair.gas.engine import Array, Engine, GasState, Index, Mask, Status, total
 from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL, SpeciesTable
 from fuelair.roots import bracketed
-
-if TYPE_CHECKING:
-    from collections.abc import Callable
-
-    from fuelair.cycle.result import CycleResult
 
 DEFAULT_FREEZE = 1740.0
 """Temperature at which the composition of exhaust leaves equilibrium [K], common practice: the constant
 water-gas ratio 3.5 used for exhaust analysis belongs to it."""
 FIXED_POINT_TOLERANCE = 1e-12
 FIXED_POINT_STEPS = 1500
+LARGEST_MIX = 1.0
+"""Largest part of the last step that acceleration takes back or adds."""
 FIRST_RESIDUAL, FIRST_RESIDUAL_TEMPERATURE = 0.03, 1000.0
 """Where the fixed point starts: residual fraction [-] and its temperature [K]."""
 LEANEST, RICHEST = 1e-4, 1.0
@@ -67,6 +65,11 @@ class Settings:
     four_stroke: bool = True
     compression_exponent: Array | None = None
 
+    def rows(self, index: Index) -> Settings:
+        """The settings of some rows only."""
+        own: dict[str, Any] = {k: v[index] for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
+        return replace(self, volumes=self.volumes.rows(index), **own)
+
 
 @dataclass(frozen=True, slots=True)
 class Exhaust:
@@ -89,37 +92,52 @@ class Exhaust:
     blowdown_work: Array
 
 
-def exhaust(
-    engine: Engine,
-    table: SpeciesTable,
-    burned: GasState,
-    release: GasState,
-    *,
-    mass: Array,
-    trapped_volume: Array,
-    settings: Settings,
-    shifting: bool,
-) -> Exhaust:
-    """Blow down from ``release`` and mix what leaves.
+def blow_down(
+    engine: Engine, table: SpeciesTable, burned: GasState, release: GasState, *, settings: Settings, shifting: bool
+) -> GasState:
+    """The gas that stays, expanded from ``release`` to exhaust pressure.
 
     Parameters
     ----------
     burned, release : end of combustion and release, per kg present.
-    mass : gas present per kg trapped; trapped_volume : specific volume at intake closing [m3/kg].
     shifting : whether the expansion shifted, so that composition has still to freeze. It then freezes
         as at ``settings.freeze_temperature``: gas released hotter shifts down to it, gas released
         colder takes the composition it had there, at the internal energy and volume of release.
     """
-    p_e = settings.exhaust_pressure
-    if shifting:
-        frozen = freeze_composition(engine, table, burned, release, settings.freeze_temperature)
-        start = engine.state(table, "UV", release.u, release.v, frozen)
-        remaining = engine.state(table, "SP", start.s, p_e, frozen)
-        hot = (settings.freeze_temperature < release.T) & np.isfinite(release.T)
-        if hot.any():
-            remaining = choose(hot, _shift_then_freeze(engine, table, release, hot, settings), remaining)
-    else:
-        remaining = engine.state(table, "SP", release.s, p_e, release.amounts)
+    p_e, T = settings.exhaust_pressure, settings.freeze_temperature
+    if not shifting:
+        return engine.state(table, "SP", release.s, p_e, release.amounts)
+    frozen = freeze_composition(engine, table, burned, release, T)
+    start = engine.state(table, "UV", release.u, release.v, frozen)
+    remaining = engine.state(table, "SP", start.s, p_e, frozen)
+
+    def shifted(rows: Index) -> GasState:
+        """Isentropic blowdown that shifts down to the freeze temperature, then stays frozen."""
+        s, p, amounts = release.s[rows], p_e[rows], release.amounts[rows]
+        at = engine.state(table, "ST", s, T[rows], amounts, "equilibrium")
+        cold = engine.state(table, "SP", s, p, at.amounts)
+        return replaced(cold, at.p < p, lambda i: engine.state(table, "SP", s[i], p[i], amounts[i], "equilibrium"))
+
+    return replaced(remaining, release.T > T, shifted)
+
+
+def exhaust(
+    engine: Engine,
+    table: SpeciesTable,
+    passage: Passage,
+    *,
+    mass: Array,
+    trapped_volume: Array,
+    settings: Settings,
+) -> Exhaust:
+    """Mix what leaves when the gas that stays has expanded to exhaust pressure.
+
+    Parameters
+    ----------
+    passage : release and the gas that stays, per kg present.
+    mass : gas present per kg trapped; trapped_volume : specific volume at intake closing [m3/kg].
+    """
+    p_e, release, remaining = settings.exhaust_pressure, passage.release, passage.remaining
     scale = trapped_volume / settings.volumes.intake_closing  # m3 per kg trapped and unit of swept volume
     v4 = settings.volumes.exhaust_opening * scale
     if settings.residual is None:
@@ -136,24 +154,15 @@ def exhaust(
     return Exhaust(remaining, leaving, stays, leaves, back, np.asarray(np.where(back, 0.0, available)))
 
 
-def _shift_then_freeze(engine: Engine, table: SpeciesTable, release: GasState, hot: Mask, settings: Settings) -> GasState:
-    """Isentropic blowdown that shifts down to the freeze temperature, then stays frozen."""
-    entropy = np.where(hot, release.s, np.nan)
-    p_e = settings.exhaust_pressure
-    at = engine.state(table, "ST", entropy, settings.freeze_temperature, release.amounts, "equilibrium")
-    frozen = engine.state(table, "SP", entropy, p_e, at.amounts)
-    still_hot = at.p < p_e
-    if not still_hot.any():
-        return frozen
-    shifting = engine.state(table, "SP", np.where(still_hot, entropy, np.nan), p_e, release.amounts, "equilibrium")
-    return choose(still_hot, shifting, frozen)
+Cycle = Callable[[Charge, Settings], Passage]
+"""The headline cycle of some rows: their charge and settings -> one passage."""
 
 
 def solve_charge(
     recipe: Recipe,
     engine: Engine,
     settings: Settings,
-    run: Callable[[Charge], tuple[CycleResult, Exhaust]],
+    cycle: Cycle,
     *,
     fuel_mass: Array | None = None,
     cutoff_ratio: Array | None = None,
@@ -162,59 +171,104 @@ def solve_charge(
 
     Parameters
     ----------
-    run : the headline cycle, charge -> (result, exhaust).
+    cycle : the headline cycle.
     fuel_mass : fuel per cylinder and cycle [kg] instead of the recipe's equivalence ratio.
     cutoff_ratio : V3 / V2 [-] instead of the recipe's equivalence ratio, up to a stoichiometric mixture.
 
     Elements are iterated independently; one that finds no fixed point gets ``NOT_CONVERGED``.
     """
     if cutoff_ratio is None:
-        return _fixed_point(recipe, engine, settings, run, fuel_mass)
+        return _fixed_point(recipe, engine, settings, cycle, fuel_mass)
 
     def miss(phi: Array) -> Array:
-        charge = _fixed_point(recipe.with_equivalence_ratio(phi), engine, settings, run, None)
-        return np.asarray(run(charge)[0].figures["cutoff_ratio"] - cutoff_ratio)
+        charge = _fixed_point(recipe.with_equivalence_ratio(phi), engine, settings, cycle, None)
+        return np.asarray(cycle(charge, settings).burn.volume_ratio - cutoff_ratio)
 
     n = len(recipe)
     phi, found = bracketed(miss, np.full(n, LEANEST), np.full(n, RICHEST), width=CUTOFF_WIDTH)
-    charge = _fixed_point(recipe.with_equivalence_ratio(phi), engine, settings, run, None)
-    solvable = run(charge)[0].status == Status.OK  # else the cycle's own status says why
+    charge = _fixed_point(recipe.with_equivalence_ratio(phi), engine, settings, cycle, None)
+    solvable = cycle(charge, settings).status == Status.OK  # else the cycle's own status says why
     status = charge.status.copy()
     status[(status == Status.OK) & ~found & solvable] = Status.CUTOFF_NOT_REACHED
     return replace(charge, status=status)
 
 
-def _fixed_point(
-    recipe: Recipe,
-    engine: Engine,
-    settings: Settings,
-    run: Callable[[Charge], tuple[CycleResult, Exhaust]],
-    fuel_mass: Array | None,
-) -> Charge:
-    burned = _first_guess(recipe, settings)
-    if fuel_mass is not None:
-        recipe = recipe.with_equivalence_ratio(np.full(len(recipe), 0.5))
+def _fixed_point(recipe: Recipe, engine: Engine, settings: Settings, cycle: Cycle, fuel_mass: Array | None) -> Charge:
+    """Iterate the burned gas that comes back; each row leaves when it has settled, or where its cycle fails: its status says why.
+
+    Picard's iteration, with Anderson's acceleration of depth one (Anderson 1965, from memory) while the change shrinks.
+    """
+    n = len(recipe)
     returns = settings.residual is None or bool(np.any(settings.residual > 0.0)) or bool(np.any(recipe.egr_fraction > 0.0))
-    charge = compose(recipe, engine, burned)
-    if not returns and fuel_mass is None:
-        return charge
-    active = np.ones(len(recipe), np.bool_)
+    burned = _first_guess(recipe, settings) if returns else BurnedGas.none(n, len(recipe.table))
+    if fuel_mass is not None:
+        recipe = recipe.with_equivalence_ratio(np.full(n, 0.5))
+    phi = recipe.equivalence_ratio.copy()
+    left = np.arange(n) if returns or fuel_mass is not None else np.arange(0)
+    before = _Before(np.zeros(n), burned.rows(left), burned.rows(left)) if returns else None
     for _ in range(FIXED_POINT_STEPS):
-        phi = recipe.equivalence_ratio
-        if fuel_mass is not None:
-            phi = np.where(active, _ratio_from_mass(charge, settings, fuel_mass), phi)
-        new = _burned(charge, run(charge)[1], settings) if returns else burned
-        change = np.maximum(_change(new, burned), np.abs(phi - recipe.equivalence_ratio))
-        moves = active & np.isfinite(change)  # an element whose cycle fails stays where it failed: its status says why
-        burned = _hold(moves, new, burned)
-        recipe = recipe.with_equivalence_ratio(np.where(moves, phi, recipe.equivalence_ratio))
-        charge = compose(recipe, engine, burned)
-        active = moves & (change > FIXED_POINT_TOLERANCE)
-        if not active.any():
+        if not len(left):
             break
+        some, own, old = recipe.rows(left).with_equivalence_ratio(phi[left]), settings.rows(left), burned.rows(left)
+        charge = compose(some, engine, old)
+        ratio = phi[left] if fuel_mass is None else _ratio_from_mass(charge, own, fuel_mass[left])
+        change = np.abs(ratio - phi[left])
+        new = old
+        if returns:
+            new = _burned(charge, cycle(charge, own).remaining, own)
+            change = np.maximum(change, _change(new, old))
+        moves = np.isfinite(change)
+        rows, going = left[moves], moves & (change > FIXED_POINT_TOLERANCE)
+        phi[rows] = ratio[moves]
+        burned.put(rows, new.rows(np.flatnonzero(moves)))
+        left = left[going]
+        if before is not None and len(left):
+            kept = np.flatnonzero(going)
+            burned.put(left, before.better(left, change[kept], old.rows(kept), new.rows(kept)))
+    charge = compose(recipe.with_equivalence_ratio(phi), engine, burned)
     status = charge.status.copy()
-    status[(status == Status.OK) & active] = Status.NOT_CONVERGED
+    status[left] = np.where(status[left] == Status.OK, np.int8(Status.NOT_CONVERGED), status[left])
     return replace(charge, status=status)
+
+
+@dataclass(slots=True)
+class _Before:
+    """What the iteration knows of its last step, per row: its change, where it stood and where it led to."""
+
+    change: Array
+    at: BurnedGas
+    to: BurnedGas
+
+    def better(self, rows: Index, change: Array, at: BurnedGas, to: BurnedGas) -> BurnedGas:
+        """Where to go on from instead of ``to``: the least change that a mix with the step before promises."""
+        old_at, old_to = self.at.rows(rows), self.to.rows(rows)
+        step, last = _scaled(to, at), _scaled(old_to, old_at)
+        turn = step - last
+        with np.errstate(divide="ignore", invalid="ignore"):
+            share = total(step * turn) / total(turn * turn)
+        shrinks = (change < self.change[rows]) & np.isfinite(share)
+        share = np.where(shrinks, np.clip(share, -LARGEST_MIX, LARGEST_MIX), 0.0)
+        self.change[rows] = change
+        self.at.put(rows, at)
+        self.to.put(rows, to)
+        mixed = BurnedGas(
+            *(new - _along(share, new) * (new - old) for new, old in zip(to.fields(), old_to.fields(), strict=True))
+        )
+        np.maximum(mixed.amounts, 0.0, out=mixed.amounts)
+        return mixed
+
+
+def _scaled(to: BurnedGas, at: BurnedGas) -> Array:
+    """Difference of two burned gases as rows of comparable numbers."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        moved = (to.amounts - at.amounts) / total(to.amounts)[:, None]
+        rest = [(to.h - at.h) / (np.abs(to.h) + 1e5), to.v / at.v - 1.0, to.fraction - at.fraction]
+    return np.column_stack([moved, *rest])
+
+
+def _along(share: Array, values: Array) -> Array:
+    """``share`` (N,) in the shape of ``values`` (N,) or (N, S)."""
+    return share if values.ndim == 1 else share[:, None]
 
 
 def _first_guess(recipe: Recipe, settings: Settings) -> BurnedGas:
@@ -235,13 +289,13 @@ def _first_guess(recipe: Recipe, settings: Settings) -> BurnedGas:
     return BurnedGas(amounts, fraction, h, properties.gas_constant() * hot / settings.exhaust_pressure)
 
 
-def _burned(charge: Charge, out: Exhaust, settings: Settings) -> BurnedGas:
+def _burned(charge: Charge, remaining: GasState, settings: Settings) -> BurnedGas:
     if settings.residual is None:
         volumes = settings.volumes
-        fraction = volumes.exhaust_closing / volumes.intake_closing * charge.trapped.v / out.remaining.v
+        fraction = volumes.exhaust_closing / volumes.intake_closing * charge.trapped.v / remaining.v
     else:
         fraction = charge.residual_fraction
-    return BurnedGas(out.remaining.amounts, fraction, out.remaining.h, out.remaining.v)
+    return BurnedGas(remaining.amounts, fraction, remaining.h, remaining.v)
 
 
 def _ratio_from_mass(charge: Charge, settings: Settings, fuel_mass: Array) -> Array:
@@ -257,15 +311,6 @@ def _change(new: BurnedGas, old: BurnedGas) -> Array:
         h = np.abs(new.h - old.h) / (np.abs(new.h) + 1e5)
         v = np.abs(new.v / old.v - 1.0)
         return np.asarray(np.maximum.reduce([moved, h, v, np.abs(new.fraction - old.fraction)]))
-
-
-def _hold(active: Mask, new: BurnedGas, old: BurnedGas) -> BurnedGas:
-    return BurnedGas(
-        np.where(active[:, None], new.amounts, old.amounts),
-        np.where(active, new.fraction, old.fraction),
-        np.where(active, new.h, old.h),
-        np.where(active, new.v, old.v),
-    )
 
 
 def short_circuit(

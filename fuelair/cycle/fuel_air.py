@@ -7,10 +7,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from fuelair.charge import Charge
-from fuelair.cycle.breathing import Exhaust, Settings, exhaust
+from fuelair.cycle.breathing import Exhaust, Settings, blow_down, exhaust
 from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, performance, state_figures
-from fuelair.cycle.stages import Burn, Compression, Expansion, burn, compress, end_of_constant_volume, expand
-from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, total, weighted, worst
+from fuelair.cycle.stages import Burn, Compression, Expansion, Passage, burn, compress, end_of_constant_volume, expand
+from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, weighted, worst
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,7 +50,36 @@ class Run:
     result: CycleResult
 
 
-def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headline: bool = True, points: bool = True) -> Run:
+def passage(engine: Engine, charge: Charge, settings: Settings, model: str) -> Passage:
+    """The charge once through the cycle of one fuel-air model, up to the gas that stays after blowdown.
+
+    Parameters
+    ----------
+    model : a key of `KINDS`.
+    """
+    kind, table, volumes = KINDS[model], charge.recipe.table, settings.volumes
+    compression = compress(engine, table, charge.trapped, volumes.effective_compression, settings.compression_exponent)
+    burned = burn(
+        engine,
+        table,
+        compression.state,
+        reactants=charge.reactants(),
+        injected=charge.injected,
+        fuel_enthalpy=charge.injected_enthalpy,
+        heat_addition=settings.heat_addition,
+        pressure_limit=settings.pressure_limit,
+        chemistry=kind.chemistry,
+    )
+    volume = charge.trapped.v * volumes.exhaust_opening / volumes.intake_closing / (1.0 + charge.injected)
+    freeze = settings.freeze_temperature if kind.freezes else None
+    release = expand(engine, table, burned.state, volume, kind.expansion, freeze)
+    shifting = kind.expansion == "equilibrium"
+    remaining = blow_down(engine, table, burned.state, release, settings=settings, shifting=shifting)
+    status = worst(charge.status, compression.state.status, burned.status, release.status, remaining.status)
+    return Passage(compression, burned, release, remaining, status)
+
+
+def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headline: bool = True, in_full: bool = True) -> Run:
     """Run one fuel-air model on a charge.
 
     Parameters
@@ -58,46 +87,22 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
     model : a key of `KINDS`.
     headline : whether the charge was made with this model. The others take its residual mass as
         given, and their gas exchange is not balanced against the intake.
-    points : whether to find the state at the end of the constant-volume part (costs a search).
+    in_full : whether to find the state at the end of the constant-volume part (a search) and to evaluate
+        every state of the ledger afresh; else the ledger takes the energies that the engine gave.
     """
-    kind, recipe = KINDS[model], charge.recipe
+    kind, table = KINDS[model], charge.recipe.table
     if not headline:
         settings = replace(settings, residual=charge.residual_fraction)
-    table, volumes = recipe.table, settings.volumes
-    compression = compress(engine, table, charge.trapped, volumes.effective_compression, settings.compression_exponent)
-    reactants = charge.reactants()
-    burned = burn(
-        engine,
-        table,
-        compression.state,
-        reactants=reactants,
-        injected=charge.injected,
-        fuel_enthalpy=charge.injected_enthalpy,
-        heat_addition=settings.heat_addition,
-        pressure_limit=settings.pressure_limit,
-        chemistry=kind.chemistry,
-    )
+    once = passage(engine, charge, settings, model)
+    compression, burned, release = once.compression, once.burn, once.release
     mass = 1.0 + charge.injected
-    v1 = charge.trapped.v
-    release_volume = v1 * volumes.exhaust_opening / volumes.intake_closing / mass
-    freeze = settings.freeze_temperature if kind.freezes else None
-    release = expand(engine, table, burned.state, release_volume, kind.expansion, freeze)
-    out = exhaust(
-        engine,
-        table,
-        burned.state,
-        release,
-        mass=mass,
-        trapped_volume=v1,
-        settings=settings,
-        shifting=kind.expansion == "equilibrium",
-    )
+    out = exhaust(engine, table, once, mass=mass, trapped_volume=charge.trapped.v, settings=settings)
     work = WorkParts(compression.work, burned.expansion_work * mass, mass * (burned.state.u - release.u))
     limited = burned.limited & (settings.heat_addition == "pressure-limited")
-    named = _points(engine, charge, settings, compression, burned, release, out, kind, limited if points else None)
+    named = _points(engine, charge, settings, once, out, kind, limited if in_full else None)
     figures = performance(
         trapped=charge.trapped,
-        volumes=volumes,
+        volumes=settings.volumes,
         work=work,
         fuel_mass=charge.fuel_mass,
         fuel_energy=charge.fuel_mass * charge.lower_heating_value,
@@ -106,13 +111,9 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
         four_stroke=settings.four_stroke,
     ) | state_figures(named, cutoff_ratio=burned.volume_ratio, heat_added=charge.heat_added, blowdown=out.blowdown_work)
     figures["compression_heat_J_per_kg"] = compression.heat
-    ledger = _ledger(engine, charge, compression, burned, release, out, settings, headline)
-    status = worst(
-        charge.status, compression.state.status, burned.status, release.status, out.remaining.status, out.leaving.status
-    )
-    result = CycleResult(
-        model, table, named, figures, ledger, {"limited": limited, "back-flow": out.back_flow}, closed(status, ledger)
-    )
+    ledger = _ledger(engine if in_full else None, charge, once, out, settings, headline)
+    flags = {"limited": limited, "back-flow": out.back_flow}
+    result = CycleResult(model, table, named, figures, ledger, flags, closed(worst(once.status, out.leaving.status), ledger))
     return Run(charge, compression, burned, release, out, result)
 
 
@@ -120,13 +121,12 @@ def _points(
     engine: Engine,
     charge: Charge,
     settings: Settings,
-    compression: Compression,
-    burned: Burn,
-    release: GasState,
+    once: Passage,
     out: Exhaust,
     kind: Kind,
     limited: Mask | None,
 ) -> tuple[Point, ...]:
+    compression = once.compression
     table, one = charge.recipe.table, np.ones(len(charge.recipe))
     mass = one + charge.injected
     named = [
@@ -147,8 +147,8 @@ def _points(
         )
         named.append(Point("limit", at, one + charge.injected * share))
     named += [
-        Point("burned", burned.state, mass),
-        Point("release", release, mass),
+        Point("burned", once.burn.state, mass),
+        Point("release", once.release, mass),
         Point("blown-down", out.remaining, out.remaining_mass),
         Point("exhaust", out.leaving, out.leaving_mass),
     ]
@@ -156,32 +156,27 @@ def _points(
 
 
 def _ledger(
-    engine: Engine,
-    charge: Charge,
-    compression: Compression,
-    burned: Burn,
-    release: GasState,
-    out: Exhaust,
-    settings: Settings,
-    headline: bool,
+    engine: Engine | None, charge: Charge, once: Passage, out: Exhaust, settings: Settings, headline: bool
 ) -> dict[str, Array]:
-    """Relative residuals of mass, elements, energy and entropy, each from states evaluated afresh.
+    """Relative residuals of mass, elements, energy and entropy; energies are relative to the fuel's.
 
-    Energy of a state is taken from its composition, temperature and volume, not from the value that the
-    solver was asked to meet. Energies are relative to the fuel's.
+    With an engine each state is evaluated afresh: its energy is taken from its composition, temperature and
+    volume, not from the value that the solver was asked to meet.
     """
+    compression, burned, release = once.compression, once.burn, once.release
     table, mass = charge.recipe.table, 1.0 + charge.injected
     atoms, target = table.atoms, charge.reactants()
     scale = np.maximum(charge.fuel_mass * charge.lower_heating_value, 1e3)
-    whole = weighted(target, atoms)
-    biggest = np.max(np.abs(whole), axis=1)
-    elements = np.zeros(len(mass))
-    kilograms = np.zeros(len(mass))
-    for state in (burned.state, release, out.remaining, out.leaving):
-        elements = np.maximum(elements, np.max(np.abs(weighted(state.amounts, atoms) - whole), axis=1) / biggest)
-        kilograms = np.maximum(kilograms, np.abs(total(state.amounts * table.molar_mass) - 1.0))
+    balances = np.column_stack([atoms, table.molar_mass])
+    whole = weighted(target, balances)
+    elements, kilograms = np.zeros(len(mass)), np.zeros(len(mass))
+    biggest = np.max(whole[:, :-1], axis=1)
+    for amounts in _distinct(burned.state.amounts, release.amounts, out.remaining.amounts, out.leaving.amounts):
+        there = weighted(amounts, balances)
+        elements = np.maximum(elements, np.max(np.abs(there - whole)[:, :-1], axis=1) / biggest)
+        kilograms = np.maximum(kilograms, np.abs(there[:, -1] - 1.0))
     first, second, third, fourth, stays, leaves = (
-        engine.state(table, "TV", s.T, s.v, s.amounts)
+        s if engine is None else engine.state(table, "TV", s.T, s.v, s.amounts)
         for s in (charge.trapped, compression.state, burned.state, release, out.remaining, out.leaving)
     )
     supplied = charge.injected * charge.injected_enthalpy
@@ -209,3 +204,8 @@ def _ledger(
         out_ledger["energy_intake"] = mixed / scale
         out_ledger["residual"] = out.remaining_mass - x
     return out_ledger
+
+
+def _distinct(*arrays: Array) -> list[Array]:
+    """The arrays without those that are the same object as one before."""
+    return list({id(array): array for array in arrays}.values())

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fuelair.gas.engine import Array
+from fuelair.gas.engine import Array, Index
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,6 +30,10 @@ class Volumes:
         clearance = 1.0 / (np.asarray(compression_ratio, float) - 1.0)
         whole = clearance + 1.0
         return cls(clearance, whole, whole, clearance)
+
+    def rows(self, index: Index) -> Volumes:
+        """The volumes of some rows only."""
+        return Volumes(*(getattr(self, name)[index] for name in self.__slots__))
 
     @property
     def largest(self) -> Array:

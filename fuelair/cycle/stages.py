@@ -7,12 +7,14 @@ H3 = U2 + m_f h_f + p3 V2, constant volume up to the limit, then constant pressu
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, fields
 from typing import Literal
 
 import numpy as np
 
-from fuelair.gas.engine import Array, Chemistry, Codes, Engine, GasState, Mask, Status, worst
+from fuelair.gas.complete import oxygen_excess
+from fuelair.gas.engine import Array, Chemistry, Codes, Engine, GasState, Index, Mask, Status, worst
 from fuelair.gas.graphite import carbon_activity
 from fuelair.gas.species import FUEL, UNBURNED, SpeciesTable
 from fuelair.roots import bracketed
@@ -23,7 +25,7 @@ Expansion = Literal["equilibrium", "frozen"]
 SPLIT_TOLERANCE = 1e-10
 """Width at which the share of fuel burned at constant volume is found."""
 LIMIT_SLACK = 1e-12
-"""A constant-volume peak this close above the limit counts as below it."""
+"""A volume this close above that at constant volume counts as equal: the limit is then just reached."""
 POLYTROPIC_WIDTH = 1e-11
 """Width at which the end temperature of polytropic compression is found [K]."""
 CARBON_WIDTH = 1e-3
@@ -56,6 +58,17 @@ class Burn:
     expansion_work: Array
     volume_ratio: Array
     limited: Mask
+    status: Codes
+
+
+@dataclass(frozen=True, slots=True)
+class Passage:
+    """The gas once through the cycle: end of compression, combustion, release, and what stays after blowdown."""
+
+    compression: Compression
+    burn: Burn
+    release: GasState
+    remaining: GasState
     status: Codes
 
 
@@ -117,14 +130,17 @@ def burn(
         state = engine.state(table, "HP", h2, compressed.p, reactants, chemistry)
         limited = np.ones(n, np.bool_)
     else:
-        state = engine.state(table, "UV", u2, v2, reactants, chemistry)
+
+        def at_volume(rows: Index) -> GasState:
+            return engine.state(table, "UV", u2[rows], v2[rows], reactants[rows], chemistry)
+
         limited = np.zeros(n, np.bool_)
-        if heat_addition == "pressure-limited":
-            limited = state.p > pressure_limit * (1.0 + LIMIT_SLACK)
-            held = engine.state(
-                table, "HP", np.where(limited, u2 + pressure_limit * v2, np.nan), pressure_limit, reactants, chemistry
-            )
-            state = choose(limited, held, state)
+        if heat_addition == "constant-volume":
+            state = at_volume(np.arange(n))
+        else:  # held at the limit the gas takes more room than it has at constant volume, or the limit is not reached
+            held = engine.state(table, "HP", u2 + pressure_limit * v2, pressure_limit, reactants, chemistry)
+            limited = held.v > v2 * (1.0 + LIMIT_SLACK)
+            state = replaced(held, ~limited, at_volume)
             status[compressed.p > pressure_limit] = Status.LIMIT_BELOW_COMPRESSION
     work = np.where(limited, state.p * (state.v - v2), 0.0)
     return Burn(state, work, np.where(limited, state.v / v2, 1.0), limited, worst(status, compressed.status, state.status))
@@ -186,10 +202,10 @@ def expand(
         return engine.state(table, "SV", burned.s, volume, burned.amounts)
     shifting = engine.state(table, "SV", burned.s, volume, burned.amounts, "equilibrium")
     if freeze_temperature is not None:
-        frozen = engine.state(
-            table, "SV", burned.s, volume, freeze_composition(engine, table, burned, shifting, freeze_temperature)
+        amounts = freeze_composition(engine, table, burned, shifting, freeze_temperature)
+        shifting = replaced(
+            shifting, freeze_temperature > shifting.T, lambda i: engine.state(table, "SV", burned.s[i], volume[i], amounts[i])
         )
-        shifting = choose(freeze_temperature > shifting.T, frozen, shifting)
     return carbon_frozen(engine, table, burned, shifting, volume)
 
 
@@ -202,11 +218,11 @@ def freeze_composition(engine: Engine, table: SpeciesTable, burned: GasState, re
     out = released.amounts.copy()
     cold = burned.T <= T
     out[cold] = burned.amounts[cold]
-    crosses = ~cold & (released.T < T)
-    if crosses.any():
-        at = engine.state(table, "ST", np.where(crosses, burned.s, np.nan), T, burned.amounts, "equilibrium")
-        good = crosses & (at.status != Status.NO_SOLUTION)
-        out[good] = at.amounts[good]
+    crosses = np.flatnonzero(~cold & (released.T < T))
+    if len(crosses):
+        at = engine.state(table, "ST", burned.s[crosses], T[crosses], burned.amounts[crosses], "equilibrium")
+        good = at.status != Status.NO_SOLUTION
+        out[crosses[good]] = at.amounts[good]
     return out
 
 
@@ -216,25 +232,37 @@ def carbon_frozen(engine: Engine, table: SpeciesTable, burned: GasState, release
     The temperature at which its activity reaches 1 on the isentrope; gas that would form it already
     when burned keeps its burned composition. Gas-phase data cannot say more; the caller warns.
     """
-    sooting = carbon_activity(table, released) > 1.0
+    sooting = oxygen_excess(table, released.amounts) < 0.0
     if not sooting.any():
         return released
-    entropy = np.where(sooting, burned.s, np.nan)
+    sooting[sooting] = carbon_activity(table, rows_of(released, np.flatnonzero(sooting))) > 1.0
 
-    def at(T: Array) -> GasState:
-        return engine.state(table, "ST", entropy, T, burned.amounts, "equilibrium")
+    def frozen(rows: Index) -> GasState:
+        entropy, whole = burned.s[rows], burned.amounts[rows]
 
-    T, found = bracketed(lambda x: carbon_activity(table, at(x)) - 1.0, released.T, burned.T, width=CARBON_WIDTH)
-    amounts = np.where((sooting & found)[:, None], at(T).amounts, burned.amounts)
-    frozen = engine.state(table, "SV", np.where(sooting, burned.s, np.nan), volume, amounts)
-    return choose(sooting, frozen, released)
+        def at(T: Array) -> GasState:
+            return engine.state(table, "ST", entropy, T, whole, "equilibrium")
+
+        T, found = bracketed(lambda x: carbon_activity(table, at(x)) - 1.0, released.T[rows], burned.T[rows], width=CARBON_WIDTH)
+        return engine.state(table, "SV", entropy, volume[rows], np.where(found[:, None], at(T).amounts, whole))
+
+    return replaced(released, sooting, frozen)
 
 
-def choose(where: Mask, one: GasState, other: GasState) -> GasState:
-    """Element-wise choice between two batches of states."""
-    fields = {}
-    for name in ("T", "p", "v", "u", "h", "s", "cp", "sound", "status", "iterations"):
-        fields[name] = np.where(where, getattr(one, name), getattr(other, name))
-    fields["status"] = fields["status"].astype(np.int8)
-    amounts = np.where(np.asarray(where)[:, None], one.amounts, other.amounts)
-    return GasState(amounts=amounts, **fields)
+def rows_of(state: GasState, rows: Index) -> GasState:
+    """The states of some rows."""
+    return GasState(**{field.name: getattr(state, field.name)[rows] for field in fields(GasState)})
+
+
+def replaced(state: GasState, where: Mask, compute: Callable[[Index], GasState]) -> GasState:
+    """``state`` with the rows ``where`` computed anew; ``compute`` takes their numbers and is not called for none."""
+    rows = np.flatnonzero(where)
+    if not len(rows):
+        return state
+    new = compute(rows)
+    if len(rows) == len(where):
+        return new
+    both = {field.name: getattr(state, field.name).copy() for field in fields(GasState)}
+    for name, values in both.items():
+        values[rows] = getattr(new, name)
+    return GasState(**both)

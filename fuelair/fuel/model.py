@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -183,11 +184,24 @@ class Fuel:
         None if no correlation is recorded or the temperature is at or above the critical one. Outside the
         correlation's range (``saturation.valid``) it extrapolates.
         """
+        limit = float(self.vapour_limit(temperature))
+        return None if math.isinf(limit) else limit
+
+    def vapour_limit(self, temperature: ArrayLike) -> NDArray[np.float64]:
+        """Vapour pressure [Pa] at ``temperature`` [K], of its shape; infinite where there is none, NaN for NaN."""
+        T = np.asarray(temperature, dtype=float)
         if self.saturation is None:
-            return None
-        if self.critical_temperature is not None and temperature >= self.critical_temperature:
-            return None
-        return self.saturation.pressure(temperature)
+            return np.where(np.isnan(T), np.nan, np.inf)
+        with np.errstate(over="ignore", divide="ignore", invalid="ignore"):
+            value = self.saturation.pressure(T)
+        return value if self.critical_temperature is None else np.where(self.critical_temperature <= T, np.inf, value)
+
+    def is_liquid(self, temperature: ArrayLike, pressure: ArrayLike) -> NDArray[np.bool_]:
+        """Where it is liquid at ``temperature`` [K] and ``pressure`` [Pa]; shapes broadcast. See :meth:`phase`."""
+        T, p = np.broadcast_arrays(np.asarray(temperature, dtype=float), np.asarray(pressure, dtype=float))
+        if self.latent_heat is None or self.always_liquid:
+            return np.full(T.shape, self.always_liquid and self.latent_heat is not None)
+        return np.asarray(p >= self.vapour_limit(T))
 
     def phase(self, temperature: float, pressure: float) -> str:
         """Return ``"liquid"`` or ``"gas"`` at ``temperature`` [K] and ``pressure`` [Pa].
@@ -195,12 +209,7 @@ class Fuel:
         Liquid if the pressure is at or above the vapour pressure below the critical temperature. Commercial
         liquids count as liquid; a fuel without liquid data and anything above the critical temperature as gas.
         """
-        if self.latent_heat is None:
-            return "gas"
-        if self.always_liquid:
-            return "liquid"
-        limit = self.saturation_pressure(temperature)
-        return "liquid" if limit is not None and pressure >= limit else "gas"
+        return "liquid" if bool(self.is_liquid(temperature, pressure)) else "gas"
 
     @property
     def liquid_reference_pressure(self) -> float:

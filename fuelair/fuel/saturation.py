@@ -5,6 +5,9 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
 GAS_CONSTANT = 8314.462618
 FORMS = {"dippr101": 5, "clausius-clapeyron": 3}
 
@@ -32,16 +35,17 @@ class Saturation:
     standing: str = ""
     note: str = ""
 
-    def pressure(self, temperature: float) -> float:
-        """Return the vapour pressure [Pa] at ``temperature`` [K]; extrapolates outside ``valid``."""
+    def pressure(self, temperature: ArrayLike) -> NDArray[np.float64]:
+        """Return the vapour pressure [Pa] at ``temperature`` [K], of its shape; extrapolates outside ``valid``."""
+        T = np.asarray(temperature, dtype=float)
         if self.form == "ideal-solution":
-            return sum(x * part.pressure(temperature) for x, part in self.parts)
+            return np.asarray(sum(x * part.pressure(T) for x, part in self.parts))
         if self.form == "dippr101":
             c1, c2, c3, c4, c5 = self.coefficients
-            return math.exp(c1 + c2 / temperature + c3 * math.log(temperature) + c4 * temperature**c5)
+            return np.asarray(np.exp(c1 + c2 / T + c3 * np.log(T) + c4 * T**c5))
         if self.form == "clausius-clapeyron":
             p1, t1, latent = self.coefficients
-            return p1 * math.exp(-latent / GAS_CONSTANT * (1.0 / temperature - 1.0 / t1))
+            return np.asarray(p1 * np.exp(-latent / GAS_CONSTANT * (1.0 / T - 1.0 / t1)))
         raise ValueError(f"unknown form {self.form!r}")
 
 

@@ -44,9 +44,8 @@ def solid_carbon(table: SpeciesTable, amounts: Array) -> Mask:
 
 def water_gas_constant(table: SpeciesTable, T: Array) -> Array:
     """K of CO2 + H2 = CO + H2O at ``T`` (N,) [-]."""
-    g = gibbs(table, T)
-    i = [table.index(n) for n in ("CO2", "H2", "CO", "H2O")]
-    return np.asarray(np.exp(g[:, i[0]] + g[:, i[1]] - g[:, i[2]] - g[:, i[3]]))
+    g = gibbs(table, T, [table.index(n) for n in ("CO2", "H2", "CO", "H2O")])
+    return np.asarray(np.exp(g[:, 0] + g[:, 1] - g[:, 2] - g[:, 3]))
 
 
 def composition(table: SpeciesTable, amounts: Array, T: Array) -> tuple[Array, npt.NDArray[np.bool_]]:

@@ -19,6 +19,7 @@ from fuelair.gas.species import SpeciesTable
 Array = npt.NDArray[np.float64]
 Codes = npt.NDArray[np.int8]
 Mask = npt.NDArray[np.bool_]
+Index = npt.NDArray[np.intp]
 Pair = Literal["TP", "TV", "HP", "UV", "SP", "SV", "ST"]
 Chemistry = Literal["frozen", "complete", "equilibrium"]
 
@@ -135,8 +136,11 @@ class Engine(Protocol):
 
 
 def total(amounts: Array) -> Array:
-    """Sum over species, shape (N,), added one after the other: no bit depends on the size of the batch."""
-    return np.asarray(np.cumsum(amounts, axis=1)[:, -1])
+    """Sum over species, shape (N,).
+
+    Each row lies in one piece, so that the order of its sum depends on the number of species alone, on no other row.
+    """
+    return np.asarray(np.add.reduce(np.ascontiguousarray(amounts), axis=1))
 
 
 def weighted(amounts: Array, weights: Array) -> Array:

@@ -51,10 +51,10 @@ def temperature(
     """
     n = len(mixture.moles)
     done = np.zeros(n, np.int32)
-    if pair[0] == "T":
-        return x.copy(), done, ~np.isfinite(x)
-    if pair == "ST":
-        return y.copy(), done, ~np.isfinite(y)
+    if pair[0] == "T" or pair == "ST":
+        known, good = x if pair[0] == "T" else y, np.isfinite(x) & np.isfinite(y) & (y > 0.0)
+        good &= known > 0.0
+        return np.where(good, known, START), done, ~good
     gas_constant = mixture.gas_constant()
     low, high = mixture.t_min * SLACK_BELOW, mixture.t_max * SLACK_ABOVE
     T = np.full(n, START) if start is None else start.copy()

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from fuelair.gas.engine import Array, GasState
+from fuelair.gas.engine import Array, GasState, total
 from fuelair.gas.mixture import gibbs, gibbs_graphite
 from fuelair.gas.species import SpeciesTable
 
@@ -14,10 +14,11 @@ def carbon_activity(table: SpeciesTable, state: GasState) -> Array:
 
     From 2 CO = CO2 + C with the free energy of graphite; zero where the gas holds no carbon monoxide.
     """
-    x = state.mole_fractions()
-    co, co2 = (x[:, table.index(k)] for k in ("CO", "CO2"))
-    g = gibbs(table, state.T)
+    pair = [table.index(name) for name in ("CO", "CO2")]
+    x = state.amounts[:, pair] / total(state.amounts)[:, None]
+    co, co2 = x[:, 0], x[:, 1]
+    g = gibbs(table, state.T, pair)
     with np.errstate(divide="ignore", invalid="ignore"):
         log_ratio = np.log(co * co / co2 * state.p / table.reference_pressure)
-    value = 2.0 * g[:, table.index("CO")] - g[:, table.index("CO2")] - gibbs_graphite(table, state.T) + log_ratio
+    value = 2.0 * g[:, 0] - g[:, 1] - gibbs_graphite(table, state.T) + log_ratio
     return np.asarray(np.where((co > 0.0) & (co2 > 0.0), np.exp(np.minimum(value, 50.0)), 0.0))

@@ -66,15 +66,16 @@ def mix(table: SpeciesTable, amounts: Array) -> Mixture:
     )
 
 
-def gibbs(table: SpeciesTable, T: Array) -> Array:
-    """Standard molar Gibbs energy over R T of every species at ``T`` (N,) -> (N, S)."""
-    _, h, s = species_thermal(table, T)
+def gibbs(table: SpeciesTable, T: Array, columns: list[int] | None = None) -> Array:
+    """Standard molar Gibbs energy over R T of every species at ``T`` (N,) -> (N, S), or of some columns of the table."""
+    _, h, s = species_thermal(table, T, columns)
     return h - s
 
 
-def species_thermal(table: SpeciesTable, T: Array) -> tuple[Array, Array, Array]:
-    """cp/R, h/(R T) and standard s/R of every species at ``T`` (N,), each (N, S)."""
-    return _thermal(np.where((T < T_BREAK)[:, None, None], table.low, table.high), T[:, None])
+def species_thermal(table: SpeciesTable, T: Array, columns: list[int] | None = None) -> tuple[Array, Array, Array]:
+    """cp/R, h/(R T) and standard s/R of every species, or of some columns of the table, at ``T`` (N,), each (N, S)."""
+    low, high = (table.low, table.high) if columns is None else (table.low[columns], table.high[columns])
+    return _thermal(np.where((T < T_BREAK)[:, None, None], low, high), T[:, None])
 
 
 def gibbs_graphite(table: SpeciesTable, T: Array) -> Array:

@@ -13,10 +13,10 @@ from fuelair import fuel as fuels
 from fuelair.air import DryAir, dry_air
 from fuelair.charge import Admission, Charge, Recipe
 from fuelair.cycle import air_standard, exergy, fuel_air
-from fuelair.cycle.breathing import DEFAULT_FREEZE, Exhaust, Settings, solve_charge
+from fuelair.cycle.breathing import DEFAULT_FREEZE, Settings, solve_charge
 from fuelair.cycle.geometry import Volumes
 from fuelair.cycle.result import REFERENCE_MODEL, CycleResult
-from fuelair.cycle.stages import HeatAddition
+from fuelair.cycle.stages import HeatAddition, Passage
 from fuelair.errors import UnsolvedError
 from fuelair.gas.cantera_gas import CanteraGas
 from fuelair.gas.engine import Status, weighted
@@ -84,16 +84,15 @@ def _charge(s: Set) -> Charge:
         evaporated_by_gas=one(1.0),
     )
 
-    def headline(charge: Charge) -> tuple[CycleResult, Exhaust]:
-        run = fuel_air.run(CanteraGas(), charge, _settings(s), REFERENCE_MODEL, points=False)
-        return run.result, run.exhaust
+    def headline(charge: Charge, settings: Settings) -> Passage:
+        return fuel_air.passage(CanteraGas(), charge, settings, REFERENCE_MODEL)
 
     return solve_charge(recipe, CanteraGas(), _settings(s), headline)
 
 
 @lru_cache(maxsize=64)
 def _fuel_air(s: Set, model: str) -> fuel_air.Run:
-    return fuel_air.run(CanteraGas(), _charge(s), _settings(s), model, points=False)
+    return fuel_air.run(CanteraGas(), _charge(s), _settings(s), model, in_full=False)
 
 
 @lru_cache(maxsize=256)

@@ -169,8 +169,8 @@ class Study:
         engine = of_model(engines, prepared.headline)
         with np.errstate(divide="ignore", invalid="ignore"):
             charge = trap(prepared, engine)
-            headline = fuel_air.run(engine, charge, prepared.settings, prepared.headline, points=False)
-            result = result_of(self.model or prepared.headline, prepared, engines, headline, points=False)
+            headline = fuel_air.run(engine, charge, prepared.settings, prepared.headline, in_full=False)
+            result = result_of(self.model or prepared.headline, prepared, engines, headline, in_full=False)
             found = dict(result.figures)
             if self._need.engine:
                 found |= outputs.engine_figures(prepared, headline, engine)

@@ -7,15 +7,15 @@ must be that of the equilibrium itself.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
 import numpy.typing as npt
 
-from fuelair.gas.compiled import fixed, nested
+from fuelair.gas.compiled import fixed, nested, rows
 from fuelair.gas.complete import complete_state, solid_carbon
-from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, GasState, Mask, Pair, Status
+from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, Codes, GasState, Pair, Status
 from fuelair.gas.gibbs import equilibrate
 from fuelair.gas.polynomials import R
 from fuelair.gas.species import SpeciesTable
@@ -24,6 +24,9 @@ PAIRS: tuple[Pair, ...] = ("TP", "TV", "HP", "UV", "SP", "SV", "ST")
 BASIS = ("CO", "H2", "O2", "N2")
 PRODUCTS = ("CO2", "H2O", "OH", "H", "O", "NO", "N", "NO2", "HO2", "N2O", "H2O2", "CH4", "NH3", "HCN")
 FIXED = ("Ar", "SO2")
+ENDS = np.zeros(5, np.int8)
+"""Status of each way in which the kernel ends a state."""
+ENDS[[rows.FAILED, rows.WIDE, rows.UNFIT]], ENDS[rows.SOOT] = Status.NO_SOLUTION, Status.CARBON_OVER_OXYGEN
 AGREEMENT = 1e-8
 """Relative distance of the equilibrium's own temperature from that which its composition has at the pair."""
 
@@ -76,7 +79,7 @@ def constants(table: SpeciesTable) -> Constants:
     carbon, hydrogen, oxygen, nitrogen, sulfur = (of(e) for e in "CHONS")
     oxygen = oxygen - 2.0 * sulfur
     beyond, excess = oxygen - carbon, oxygen - 2.0 * carbon - 0.5 * hydrogen
-    linear, base = np.zeros((n, nested.PARTS)), np.zeros((7, 18))
+    linear, base = np.zeros((n, rows.PARTS)), np.zeros((7, 18))
     places = [table.index(name) for name in names]
     linear[:, :5] = np.stack([carbon, hydrogen, nitrogen, beyond, excess], axis=1)
     base[:4] = coefficients[places[:4]]
@@ -148,45 +151,66 @@ def _fixed(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array, 
 
 def _equilibrium(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
     numbers, n = constants(table), len(x)
-    found, T = np.empty_like(amounts), np.empty(n)
-    code, steps = np.full(n, nested.WIDE, np.int8), np.zeros(n, np.int32)
+    out, found = np.full((8, n), np.nan), amounts.copy()
+    code, steps = np.full(n, rows.WIDE, np.int8), np.zeros(n, np.int32)
     if numbers.whole:
         nested.solve(
             PAIRS.index(pair), x, y, amounts, numbers.linear, numbers.base, numbers.reactions, numbers.atoms,
-            numbers.columns, numbers.stays, (R, table.reference_pressure), np.full(n, nested.START), found, T, code, steps,
+            numbers.columns, numbers.stays, (R, table.reference_pressure), np.full(n, rows.START), out, found, code, steps,
         )  # fmt: skip
+        _as_given(pair, x, y, out, code)
     else:
-        code[solid_carbon(table, amounts)] = nested.SOOT
-    left = np.flatnonzero((code == nested.WIDE) | (code == nested.FAILED))
-    refused = code == nested.SOOT
-    lost = refused.copy()
+        code[solid_carbon(table, amounts)] = rows.SOOT
+    status = ENDS[code]
+    T, p, v, u, h, s, cp, sound = out
+    state = GasState(T=T, p=p, v=v, u=u, h=h, s=s, cp=cp, sound=sound, amounts=found, status=status, iterations=steps)
+    low, high = _limits(numbers, found)
+    with np.errstate(invalid="ignore"):
+        outside = (low > T) | (high < T) | (p > PRESSURE_LIMIT_OF_DATA)
+    status[outside & (status == Status.OK)] = Status.OUTSIDE_DATA
+    left = np.flatnonzero((code == rows.WIDE) | (code == rows.FAILED))
     if len(left):
-        _generic(table, pair, x, y, amounts, left, found, T, lost, steps)
-    found[lost], T[lost] = amounts[lost], nested.START
-    state = _fixed(table, pair, np.where(lost, np.nan, x) if lost.any() else x, y, found, start=T)
-    apart = (np.abs(T / state.T - 1.0) > AGREEMENT) & (state.status == Status.OK)
-    if apart.any():
-        state.status[apart] = Status.NO_SOLUTION
-        for values in (state.T, state.p, state.v, state.u, state.h, state.s, state.cp, state.sound):
-            values[apart] = np.nan
-    state.status[refused] = Status.CARBON_OVER_OXYGEN
-    return replace(state, iterations=steps)
+        _generic(table, pair, x, y, amounts, left, state)
+    return state
+
+
+def _as_given(pair: Pair, x: Array, y: Array, out: Array, code: Codes) -> None:
+    """What the pair gives stands as given, to the last bit."""
+    solved = code == rows.DONE
+    for letter, value in ((pair[0], x), (pair[1], y)):
+        if letter in "TPV":
+            np.copyto(out["TPV".index(letter)], value, where=solved)
+
+
+def _limits(numbers: Constants, found: Array) -> tuple[Array | float, Array | float]:
+    """Temperatures between which the data of every species present hold [K]: burned gas, and what stays where it is there."""
+    low: Array | float = float(numbers.limits[0, numbers.columns].max()) if numbers.whole else 0.0
+    high: Array | float = float(numbers.limits[1, numbers.columns].min()) if numbers.whole else np.inf
+    for j in numbers.stays:
+        if numbers.limits[0, j] > np.min(low) or numbers.limits[1, j] < np.max(high):
+            there = found[:, j] > 0.0
+            low = np.where(there, np.maximum(low, numbers.limits[0, j]), low)
+            high = np.where(there, np.minimum(high, numbers.limits[1, j]), high)
+    return low, high
 
 
 def _generic(
-    table: SpeciesTable,
-    pair: Pair,
-    x: Array,
-    y: Array,
-    amounts: Array,
-    left: npt.NDArray[np.intp],
-    found: Array,
-    T: Array,
-    lost: Mask,
-    steps: npt.NDArray[np.int32],
+    table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array, left: npt.NDArray[np.intp], state: GasState
 ) -> None:
-    """Solve the states ``left`` by the generic Newton, in place."""
+    """Solve the states ``left`` by the generic Newton, into ``state``.
+
+    Each ends in a state of fixed composition that meets the pair, whose temperature must be that of the equilibrium.
+    """
     allowed = np.tile(table.forms, (len(left), 1))
     made = equilibrate(table, pair, x[left], y[left], amounts[left], allowed)
-    found[left], T[left], lost[left] = made.amounts, made.T, made.failed
-    steps[left] += made.iterations
+    start = np.where(made.failed, fixed.START, made.T)
+    fit = _fixed(table, pair, np.where(made.failed, np.nan, x[left]), y[left], made.amounts, start)
+    with np.errstate(invalid="ignore"):
+        apart = (np.abs(made.T / fit.T - 1.0) > AGREEMENT) & (fit.status == Status.OK)
+    fit.status[apart] = Status.NO_SOLUTION
+    for name in ("T", "p", "v", "u", "h", "s", "cp", "sound"):
+        getattr(state, name)[left] = np.where(apart, np.nan, getattr(fit, name))
+    solved = ~made.failed
+    state.amounts[left[solved]] = made.amounts[solved]
+    state.status[left] = fit.status
+    state.iterations[left] += made.iterations

@@ -65,9 +65,10 @@ def _thermal(w: Array) -> None:
     for lane in range(LANES):
         t = w[T_ * LANES + lane]
         cp, h, s = ranged(
-            w[lane], w[LANES + lane], w[2 * LANES + lane], w[3 * LANES + lane], w[4 * LANES + lane], w[5 * LANES + lane], w[6 * LANES + lane],
-            w[7 * LANES + lane], w[8 * LANES + lane], w[9 * LANES + lane], w[10 * LANES + lane], w[11 * LANES + lane], w[12 * LANES + lane],
-            w[13 * LANES + lane], w[14 * LANES + lane], w[15 * LANES + lane], w[16 * LANES + lane], w[17 * LANES + lane],
+            w[lane], w[LANES + lane], w[2 * LANES + lane], w[3 * LANES + lane], w[4 * LANES + lane],
+            w[5 * LANES + lane], w[6 * LANES + lane], w[7 * LANES + lane], w[8 * LANES + lane], w[9 * LANES + lane],
+            w[10 * LANES + lane], w[11 * LANES + lane], w[12 * LANES + lane], w[13 * LANES + lane], w[14 * LANES + lane],
+            w[15 * LANES + lane], w[16 * LANES + lane], w[17 * LANES + lane],
             t, log(t),
         )  # fmt: skip
         w[CP_ * LANES + lane] = cp

@@ -82,7 +82,7 @@ def exp(x: float) -> float:
 @vectorised
 def log(x: float) -> float:
     """Natural logarithm of a positive normal ``x``."""
-    bits = _bits(x)
+    bits: int = _bits(x)
     m = _float((bits & MANTISSA) | ONE)
     e = _float((bits >> 52) | ROUND_BITS) - WHOLE - BIAS
     big = m > SQRT2
