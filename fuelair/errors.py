@@ -7,6 +7,8 @@
     +-- DataError       (LookupError)      a data file of the package is missing or damaged: exit code 4
     +-- UnsolvedError   (ArithmeticError)  the headline model found no solution: exit code 3
     +-- MissingExtraError (ImportError)    an optional dependency is not installed: exit code 2
+    +-- WorkersError    (RuntimeError)     workers of a study keep dying or cannot be reached: exit code 4
+    +-- StoppedError                       a study was interrupted and keeps what is done: exit code 130
 
 Every error pickles, carries its data as attributes and says what, where, the value, the allowed
 range with its unit and what to do.
@@ -119,3 +121,15 @@ class MissingExtraError(FuelairError, ImportError):
 
     def __str__(self) -> str:
         return f"{self.purpose} needs an optional part: python -m pip install 'fuelair[{self.extra}]'"
+
+
+class WorkersError(FuelairError, RuntimeError):
+    """Workers of a study keep dying, cannot be reached, or run another release."""
+
+    exit_code = 4
+
+
+class StoppedError(FuelairError):
+    """A study was interrupted; what is done is kept, and the message says how to go on."""
+
+    exit_code = 130

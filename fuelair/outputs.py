@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from fuelair.air import water_dew_point
@@ -84,7 +86,7 @@ def mixed_exhaust(prepared: Prepared, run: Run, engine: Engine) -> GasState:
     table, recipe = charge.recipe.table, charge.recipe
     fresh = _fresh(charge)
     h = engine.state(table, "TP", recipe.temperature, recipe.pressure, fresh).h
-    return short_circuit(
+    mixed = short_circuit(
         engine,
         table,
         run.exhaust,
@@ -93,6 +95,8 @@ def mixed_exhaust(prepared: Prepared, run: Run, engine: Engine) -> GasState:
         extra_amounts=fresh,
         pressure=prepared.settings.exhaust_pressure,
     )
+    alone, leaving = bypass == 0.0, run.exhaust.leaving  # not a bit may depend on the rows beside it
+    return replace(mixed, T=np.where(alone, leaving.T, mixed.T), amounts=np.where(alone[:, None], leaving.amounts, mixed.amounts))
 
 
 def _bypass(prepared: Prepared, charge: Charge) -> Array:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -20,6 +20,9 @@ from fuelair.fuel import Fuel
 from fuelair.gas.engine import Array, Mask
 from fuelair.gas.species import build
 
+_TIMES = ("engine.intake_closing", "engine.exhaust_opening", "engine.exhaust_closing")
+_CRANK = ("engine.stroke", "engine.rod_length", "engine.pin_offset", *_TIMES)
+_SWEPT = ("engine.bore", "engine.stroke", "engine.rod_length", "engine.pin_offset")
 START_PHI = 0.5
 """Equivalence ratio that a recipe starts from when the case gives a fuel mass or a cut-off ratio."""
 
@@ -60,13 +63,21 @@ class _Values:
     """Values of a case as arrays (N,), columns in place of what the case says."""
 
     def __init__(self, case: Case, columns: Mapping[str, Array]) -> None:
-        self.of = case.values(columns)
+        self.case, self.columns, self.of = case, columns, case.values(columns)
         self.n = len(next(iter(columns.values()))) if columns else 1
 
     def array(self, key: str) -> Array:
         """Value of a key for every row, NaN where there is none."""
         value = self.of(key)
         return np.array(np.broadcast_to(np.nan if value is None else np.asarray(value, float), (self.n,)))
+
+    def full(self, value: Array) -> Array:
+        """A value of one row or all as (N,)."""
+        return np.array(np.broadcast_to(value, (self.n,)))
+
+    def only(self, keys: Sequence[str]) -> _Values:
+        """Of one row if none of these keys is a column: what depends on them alone is computed once."""
+        return self if any(key in self.columns for key in keys) else _Values(self.case, {})
 
     def given(self, key: str) -> Array | None:
         """Value of a key for every row, None if there is none."""
@@ -179,7 +190,7 @@ def _settings(case: Case, values: _Values, recipe: Recipe) -> Settings:
         residual=None if solved else np.nan_to_num(values.array("charge.residual_fraction")),
         exhaust_pressure=values.array("charge.exhaust_pressure"),
         intake_pressure=recipe.pressure,
-        swept_volume=_swept_volume(values),
+        swept_volume=values.full(_swept_volume(values.only(_SWEPT))),
         four_stroke=case.engine.strokes_per_cycle == 4,
         compression_exponent=values.given("gas.compression_exponent"),
     )
@@ -222,26 +233,26 @@ def ambient(case: Case) -> Ambient:
 def _volumes(values: _Values) -> Volumes:
     """Cylinder volumes at the events; an event left at its dead centre is exactly there."""
     inner = 1.0 / (values.array("engine.compression_ratio") - 1.0)
-    two_stroke, last = values.of("engine.strokes_per_cycle") == 2, values.given("engine.exhaust_closing")
-    closing = values.array("engine.intake_closing")
+    crank = values.only(_CRANK)
+    two_stroke, last = crank.of("engine.strokes_per_cycle") == 2, crank.given("engine.exhaust_closing")
+    closing = crank.array("engine.intake_closing")
     if two_stroke and last is not None:
         closing = np.maximum(closing, last)
     return Volumes(
         inner,
-        _volume_at(values, closing, inner),
-        _volume_at(values, values.array("engine.exhaust_opening"), inner),
-        inner if two_stroke or last is None else _volume_at(values, last, inner),
+        inner + _travel(crank, closing),
+        inner + _travel(crank, crank.array("engine.exhaust_opening")),
+        inner if two_stroke or last is None else inner + _travel(crank, last),
     )
 
 
-def _volume_at(values: _Values, angle: Array, inner: Array) -> Array:
-    stroke, rod = values.given("engine.stroke"), values.given("engine.rod_length")
-    at = inner
+def _travel(crank: _Values, angle: Array) -> Array:
+    """Volume swept since the dead centre over the swept volume at an angle, of one row or all."""
+    stroke, rod = crank.given("engine.stroke"), crank.given("engine.rod_length")
+    share = np.zeros(crank.n)
     if stroke is not None and rod is not None:
-        r, offset = values.array("engine.compression_ratio"), values.array("engine.pin_offset")
-        at = kinematics.relative_volume(angle, stroke=stroke, rod_length=rod, compression_ratio=r, pin_offset=offset)
-    at = np.where(angle % 360.0 == 0.0, inner, at)
-    return np.where(np.abs(angle) == 180.0, inner + 1.0, at)
+        share = kinematics.travel(angle, stroke=stroke, rod_length=rod, pin_offset=crank.array("engine.pin_offset"))
+    return np.where(np.abs(angle) == 180.0, 1.0, np.where(angle % 360.0 == 0.0, 0.0, share))
 
 
 def _swept_volume(values: _Values) -> Array:

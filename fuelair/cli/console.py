@@ -5,7 +5,8 @@ from __future__ import annotations
 import io
 import os
 import sys
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Iterator
+from contextlib import contextmanager
 from typing import IO, TYPE_CHECKING, Literal, cast
 
 from rich import box
@@ -15,6 +16,7 @@ from rich.padding import Padding
 from rich.table import Table as RichTable
 
 if TYPE_CHECKING:
+    from fuelair.case import Case
     from fuelair.report.tables import Table
 
 NARROWEST, PIPED = 110, 120
@@ -67,6 +69,16 @@ def _is_number(text: str) -> bool:
     return bool(text) and (text[0].isdigit() or text[0] in "+-")
 
 
+def study_head(console: Console, case: Case, model: str, engine: str, scan: str, verdict: str) -> None:
+    """Print what a study was asked and what came of it, before its tables."""
+    console.print()
+    console.print(f"[bold]{escape(case.title or 'Untitled case')}[/bold]")
+    console.print(escape(f"{model}, {engine} engine; {scan}"), style="dim")
+    console.print()
+    console.print(Padding(f"[bold]{escape(verdict)}[/bold]", (0, 2)))
+    console.print()
+
+
 def bullets(console: Console, title: str, items: Iterable[str]) -> None:
     """Print items under a title, nothing if there are none."""
     items = list(items)
@@ -112,3 +124,32 @@ def terminal(*, stderr: bool = False) -> Console:
 def complain(text: str) -> None:
     """Say on standard error what is wrong."""
     print(f"fuelair: {text}", file=sys.stderr)
+
+
+def remark(text: str) -> None:
+    """Say something by the way on standard error."""
+    terminal(stderr=True).print(escape(text), style="dim", soft_wrap=True)
+
+
+@contextmanager
+def progress(what: str) -> Iterator[Callable[[int, int], None]]:
+    """A bar on standard error for work of so many rows; none where that is no terminal.
+
+    Yields a function that takes rows done and rows in all.
+    """
+    if not sys.stderr.isatty():
+        yield lambda done, rows: None
+        return
+    from rich import progress as bars
+
+    console = terminal(stderr=True)
+    columns = (
+        bars.TextColumn("{task.description}"),
+        bars.BarColumn(),
+        bars.MofNCompleteColumn(),
+        bars.TaskProgressColumn(),
+        bars.TimeRemainingColumn(),
+    )
+    with bars.Progress(*columns, console=console, transient=True) as shown:
+        task = shown.add_task(escape(what), total=None)
+        yield lambda done, rows: shown.update(task, completed=done, total=rows)

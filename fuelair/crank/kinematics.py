@@ -38,6 +38,13 @@ def relative_volume(
     Returns
     -------
     V / V_d, from 1/(r-1) to 1/(r-1) + 1.
+    """
+    swept = travel(angle, stroke=stroke, rod_length=rod_length, pin_offset=pin_offset)
+    return np.asarray(1.0 / (compression_ratio - 1.0) + swept)
+
+
+def travel(angle: Array | float, *, stroke: Array | float, rod_length: Array | float, pin_offset: Array | float = 0.0) -> Array:
+    """Volume swept since the firing dead centre over the swept volume, 0 to 1; parameters as in `relative_volume`.
 
     Source: exact geometry; piston distance from the crank centre a cos(t) + sqrt(l^2 - (a sin(t) + e)^2).
     """
@@ -46,7 +53,7 @@ def relative_volume(
     true_centre = np.arcsin(-e / (rod_length + a))
     t = np.deg2rad(np.asarray(angle, float)) + true_centre
     distance = a * np.cos(t) + np.sqrt(rod_length**2 - (a * np.sin(t) + e) ** 2)
-    return np.asarray(1.0 / (compression_ratio - 1.0) + (high - distance) / (high - low))
+    return np.asarray((high - distance) / (high - low))
 
 
 def _reach(stroke: Array | float, rod_length: Array | float, pin_offset: Array | float) -> tuple[Array, Array]:

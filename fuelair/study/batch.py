@@ -143,6 +143,14 @@ class Study:
         prepare(case)
         return case
 
+    def why(self, row: Mapping[str, Any]) -> str:
+        """Why a row cannot be asked for, in words; empty if it can."""
+        try:
+            self.case_of(row)
+        except InputError as error:
+            return "; ".join(f"{p.key}: {p.message}" if p.key else p.message for p in error.problems)
+        return ""
+
     def _solve(self, labels: Labels, numbers: dict[str, Array], rows: Index, out: Rows) -> None:
         """Solve rows of one group into ``out``."""
         keep = np.flatnonzero(~self._refused(labels, numbers, len(rows)))
@@ -192,7 +200,7 @@ class Study:
 
     def _case(self, labels: Labels, numbers: Mapping[str, Any]) -> Case | None:
         """The validated case of a group; None if names or words contradict each other."""
-        group = tuple(labels.values())
+        group = tuple(labels.items())
         if group not in self._cases:
             try:
                 self._cases[group] = self.case.replace(labels | {key: float(value) for key, value in numbers.items()})

@@ -15,7 +15,7 @@ from fuelair.case import keys
 from fuelair.case.fields import Kind, Whole, Within
 from fuelair.errors import InputError, Problem
 from fuelair.gas.engine import Array
-from fuelair.quantities import STANDARD_ATMOSPHERE, is_gauge
+from fuelair.quantities import STANDARD_ATMOSPHERE, is_gauge, stored_unit
 
 Values = Sequence[float] | Sequence[str] | Array
 Labels = npt.NDArray[Any]
@@ -48,6 +48,12 @@ class Column:
         if self.numbers is None:
             return self.labels.tolist() if self.labels.dtype.kind in "UO" else self.labels.astype(float)
         return [label or repr(number) for label, number in zip(self.labels.tolist(), self.numbers.tolist(), strict=True)]
+
+
+def heading(key: str) -> str:
+    """Name of a key's column: the key, with the stored unit where it has one, e.g. ``charge.pressure [Pa]``."""
+    kind = keys.kind(key)
+    return f"{key} [{stored_unit(kind.dimension)}]" if isinstance(kind, Within) and kind.dimension != "ratio" else key
 
 
 def read(key: str, values: Values, *, ambient_pressure: float | None = STANDARD_ATMOSPHERE) -> Column:
