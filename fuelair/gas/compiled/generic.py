@@ -3,10 +3,10 @@
 A state is solved in up to three ways, and never fails in silence:
 
 1. Newton (`newton.search`) from a start near the answer (`start.place`);
-2. the same from the plain start of `gibbs.py`: complete combustion at 2500 K and seeds of everything else;
-3. where T (of the pair ST: V) is unknown and both fail, a bracket: energy or entropy of the equilibrium at given T and
-   p, or T and V, rises with T (with V), so a scan finds the ends and `roots.bracketed` the root. T and V are given in
-   every inner problem, and each starts afresh.
+2. the same from the plain start of `gibbs.py`: complete combustion and seeds of everything else;
+3. where T (of the pair ST: V) is unknown and both fail, or end far beyond the data, a bracket: energy or entropy of
+   the equilibrium at given T and p, or T and V, rises with T (with V), so a scan finds the ends and `roots.bracketed`
+   the root. T and V are given in every inner problem, and each starts afresh.
 
 Amounts: their elements are restored exactly at the end, in proportion to each amount. Because the balance of oxygen is
 that of its excess, traces keep their digits where `gibbs.py` and Cantera lose them: at exact stoichiometry below
@@ -91,11 +91,13 @@ def equilibrate(
     if pair in ("TP", "TV"):
         return tried
     sound = np.isfinite(x) & np.isfinite(y) & (y > 0.0)
-    again = np.flatnonzero(tried.failed & sound)
+    astray = (SCAN_T[0] > tried.T) | (SCAN_T[-1] < tried.T)  # the polynomials offer further roots beyond their data
+    again = np.flatnonzero((tried.failed | astray) & sound)
     if len(again):
         found = between(table, pair, x[again], y[again], amounts[again], departure=departure)
+        good = again[~found.failed]
         for name in ("amounts", "T", "failed", "iterations"):
-            getattr(tried, name)[again] = getattr(found, name)
+            getattr(tried, name)[good] = getattr(found, name)[~found.failed]
     return tried
 
 

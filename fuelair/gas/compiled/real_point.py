@@ -13,14 +13,7 @@ import numpy as np
 from fuelair.gas.compiled import virial
 from fuelair.gas.compiled.equations import thermal
 from fuelair.gas.compiled.jit import bare
-from fuelair.gas.compiled.layout import (
-    HP,
-    SP,
-    ST,
-    TP,
-    TV,
-    UV,
-)
+from fuelair.gas.compiled.layout import HP, SP, ST, TP, TV, UV
 from fuelair.gas.engine import Array
 from fuelair.gas.frozen import SLACK_ABOVE, SLACK_BELOW
 from fuelair.gas.polynomials import T_BREAK, R
