@@ -3,10 +3,10 @@
 A state is solved in up to three ways, and never fails in silence:
 
 1. Newton (`newton.search`) from a start near the answer (`start.place`);
-2. the same from the plain start of `gibbs.py`: complete combustion at 2500 K and seeds of everything else;
-3. where T (of the pair ST: V) is unknown and both fail, a bracket: energy or entropy of the equilibrium at given T and
-   p, or T and V, rises with T (with V), so a scan finds the ends and `roots.bracketed` the root. T and V are given in
-   every inner problem, and each starts afresh.
+2. the same from the plain start of `gibbs.py`: complete combustion and seeds of everything else;
+3. where T (of the pair ST: V) is unknown and both fail, or end far beyond the data, a bracket: energy or entropy of
+   the equilibrium at given T and p, or T and V, rises with T (with V), so a scan finds the ends and `roots.bracketed`
+   the root. T and V are given in every inner problem, and each starts afresh.
 
 Amounts: their elements are restored exactly at the end, in proportion to each amount. Because the balance of oxygen is
 that of its excess, traces keep their digits where `gibbs.py` and Cantera lose them: at exact stoichiometry below
@@ -58,6 +58,8 @@ SCAN_T = np.geomspace(150.0, 7200.0, 18)
 """Temperatures between which a root is looked for [K]; the data reach from 200 to 6000 K."""
 SCAN_P = np.geomspace(1e9, 1e2, 25)
 """Ideal pressures of the volumes between which a root of the pair ST is looked for [Pa]."""
+EDGE = 30
+"""Halvings by which the coldest gas of a pressure is looked for."""
 CLOSE = 0.5
 """Largest relative change of an amount that may be needed to restore the elements."""
 
@@ -89,11 +91,13 @@ def equilibrate(
     if pair in ("TP", "TV"):
         return tried
     sound = np.isfinite(x) & np.isfinite(y) & (y > 0.0)
-    again = np.flatnonzero(tried.failed & sound)
+    astray = (SCAN_T[0] > tried.T) | (SCAN_T[-1] < tried.T)  # the polynomials offer further roots beyond their data
+    again = np.flatnonzero((tried.failed | astray) & sound)
     if len(again):
         found = between(table, pair, x[again], y[again], amounts[again], departure=departure)
+        good = again[~found.failed]
         for name in ("amounts", "T", "failed", "iterations"):
-            getattr(tried, name)[again] = getattr(found, name)
+            getattr(tried, name)[good] = getattr(found, name)[~found.failed]
     return tried
 
 
@@ -106,9 +110,9 @@ def newton(
     *,
     departure: VirialTable | None = None,
     guess: Array | None = None,
-    most: int = MAX_ITERATIONS,
+    first: int = 0,
 ) -> Equilibrium:
-    """As `equilibrate`, without the bracket; ``most`` steps from each start."""
+    """As `equilibrate`, without the bracket; ``first`` 1 leaves out the start near the answer."""
     count = len(x)
     start = np.full(count, START_TEMPERATURE)
     if guess is not None:
@@ -117,7 +121,7 @@ def newton(
     failed, iterations = np.ones(count, np.bool_), np.zeros(count, np.int32)
     fluids = virial.no_fluids() if departure is None else virial.fluids_of(departure)
     x, y = np.ascontiguousarray(x, dtype=float), np.ascontiguousarray(y, dtype=float)
-    run(species_of(table), fluids, departure is not None, PAIRS.index(pair), x, y, start, most, out, T, failed, iterations)
+    run(species_of(table), fluids, departure is not None, PAIRS.index(pair), x, y, start, first, out, T, failed, iterations)
     return Equilibrium(out, T, failed, iterations)
 
 
@@ -159,27 +163,37 @@ def _scan(pair: Pair, y: Array, amounts: Array) -> Array:
 
 
 def _ends(miss: Callable[[Array], Array], scan: Array) -> tuple[Array, Array]:
-    """The last pair of neighbours in ``scan`` between which ``miss`` rises through zero; NaN for none."""
+    """The last pair of neighbours in ``scan`` between which ``miss`` rises through zero; NaN for none.
+
+    Where ``miss`` is no number at the lower one (no gas is that cold at its pressure), the edge is narrowed down first.
+    """
     low, high = np.full(len(scan), np.nan), np.full(len(scan), np.nan)
     before = miss(scan[:, 0])
     for k in range(1, scan.shape[1]):
         value = miss(scan[:, k])
-        rises = (before <= 0.0) & (value >= 0.0)  # False for NaN
+        rises = ~(before > 0.0) & (value >= 0.0)
         low, high = np.where(rises, scan[:, k - 1], low), np.where(rises, scan[:, k], high)
         before = value
+    edge = np.isnan(miss(low))
+    for _ in range(EDGE if edge.any() else 0):
+        middle = 0.5 * (low + high)
+        value = miss(middle)
+        low = np.where(edge & ~(value > 0.0), middle, low)
+        high = np.where(edge & (value > 0.0), middle, high)
+        edge &= np.isnan(value) | (value > 0.0)
     return low, high
 
 
 @compiled
 def run(
-    t: Species, f: virial.Fluids, real: bool, pair: int, x: Array, y: Array, start: Array, most: int,
+    t: Species, f: virial.Fluids, real: bool, pair: int, x: Array, y: Array, start: Array, first: int,
     amounts: Array, T: Array, failed: Mask, iterations: npt.NDArray[np.int32],
 ) -> None:  # fmt: skip
     """Solve a batch; amounts, T, failed and iterations are overwritten where a state is solved."""
     w, v = work_for(t), virial.blend_for(f)
     for i in range(len(x)):
         sound = np.isfinite(x[i]) and 0.0 < y[i] < np.inf and (x[i] > 0.0 or pair not in (TP, TV))
-        for attempt in range(2 if sound else 0):
+        for attempt in range(first, 2 if sound else 0):
             if not balances(t, amounts[i], w):
                 break
             hot = x[i] if pair in (TP, TV) else (y[i] if pair == ST else start[i])
@@ -187,7 +201,7 @@ def run(
             w.elements[STATE, 1] = np.log(burned(t, w) * R * hot / START_PRESSURE if pair == ST else y[i])
             if attempt == 1:
                 plain(t, w)
-            good, done = search(t, f, real, pair, x[i], y[i], PLACINGS if attempt == 0 else 0, most, w, v)
+            good, done = search(t, f, real, pair, x[i], y[i], PLACINGS if attempt == 0 else 0, MAX_ITERATIONS, w, v)
             iterations[i] += done
             if good and restore(t, w):
                 T[i], failed[i] = np.exp(w.elements[STATE, 0]), False

@@ -31,6 +31,7 @@ from fuelair.gas.compiled.layout import (
     OXYGEN,
     PAIRS,
     SO2,
+    ST,
     SULFUR,
     TP,
     TV,
@@ -50,6 +51,8 @@ from fuelair.gas.species import SpeciesTable
 
 FIELDS = ("T", "p", "v", "u", "h", "s", "cp", "sound")
 """Columns of the result."""
+MISSES = 4
+"""Rounds of the water-gas composition that may find no state: the composition of another temperature may have none."""
 OUTSIDE, NONE, SHORT = int(Status.OUTSIDE_DATA), int(Status.NO_SOLUTION), int(Status.OXYGEN_BELOW_CARBON_MONOXIDE)
 
 
@@ -120,7 +123,8 @@ def states(
     w, blend, a = work_for(t), virial.blend_for(f), np.zeros(18)
     n, point, found = w.species[AMOUNT], Point(0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0), False
     for i in range(len(x)):
-        T, previous, short, rounds, mixed = WATER_GAS_START, np.inf, False, 1, Mixed(0.0, 0.0, 0.0, 0.0, 0.0)
+        previous, short, rounds, mixed = np.inf, False, 1, Mixed(0.0, 0.0, 0.0, 0.0, 0.0)
+        T = x[i] if pair in (TP, TV) else (y[i] if pair == ST else WATER_GAS_START)
         good = np.isfinite(x[i]) and 0.0 < y[i] < np.inf and (x[i] > 0.0 or pair not in (TP, TV))
         good = good and (balances(t, amounts[i], w) if complete else something(amounts[i]))
         if complete and good and w.elements[BALANCE, t.columns[OXYGEN]] < 0.0:
@@ -134,9 +138,9 @@ def states(
             mixed = mix(coefficients, limits, t.reference_pressure[0], n, a)
             virial.contract(f, n, mixed.moles, blend)
             point, iterations[i], found = search(mixed, a, f, blend, pair, x[i], y[i], start[i] if k == 0 else T)
-            if not found or rounds == 1:
+            if rounds == 1 or (not found and k >= MISSES):
                 break
-            size, T = abs(point.T / T - 1.0), point.T
+            size, T = abs(point.T / T - 1.0) if found else np.inf, point.T
             settled = size <= WATER_GAS_TOLERANCE or (size <= STALL and size >= previous)
             if settled:
                 break

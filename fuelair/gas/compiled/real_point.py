@@ -13,14 +13,7 @@ import numpy as np
 from fuelair.gas.compiled import virial
 from fuelair.gas.compiled.equations import thermal
 from fuelair.gas.compiled.jit import bare
-from fuelair.gas.compiled.layout import (
-    HP,
-    SP,
-    ST,
-    TP,
-    TV,
-    UV,
-)
+from fuelair.gas.compiled.layout import HP, SP, ST, TP, TV, UV
 from fuelair.gas.engine import Array
 from fuelair.gas.frozen import SLACK_ABOVE, SLACK_BELOW
 from fuelair.gas.polynomials import T_BREAK, R
@@ -28,10 +21,12 @@ from fuelair.gas.real_engine import MAX_ITERATIONS, STALL, TOLERANCE
 
 START, START_PRESSURE = 1000.0, 5e6
 """What the ideal search starts from [K, Pa]."""
-COLDEST, HOTTEST = 50.0, 12000.0
-"""Temperatures to which searches are held [K]."""
-ENOUGH = 1e-3
-"""Step at which the ideal search is near enough."""
+LOG_COLDEST, LOG_HOTTEST = float(np.log(50.0)), float(np.log(12000.0))
+"""ln of the temperatures to which searches are held [K]."""
+ENOUGH, IDEAL_STEPS = 1e-3, 8
+"""Step at which the ideal search is near enough, and how many it may take."""
+BLIND = 0.05
+"""Step of ln T or ln v where the slope of a property misleads."""
 
 
 class Mixed(NamedTuple):
@@ -102,45 +97,68 @@ def at(mixed: Mixed, a: Array, f: virial.Fluids, blend: virial.Blend, real: bool
 
 
 @bare
-def step(point: Point, pair: int, x: float) -> float:
-    """Newton step of ln T, or of ln v for ST, towards the first property of the pair."""
-    if pair == ST:
-        size = (x - point.s) / point.ds_dv_v
-    elif pair in (HP, UV):
+def step(point: Point, pair: int, x: float) -> tuple[float, float]:
+    """What the first property of the pair misses, and the Newton step of ln T, or of ln v for ST, towards it."""
+    if pair in (HP, UV):
         value, slope = (point.h, point.cp) if pair == HP else (point.u, point.cv)
-        size = np.log1p(min(max((x - value) / (slope * point.T), -0.6), 1.5))
+        miss = x - value
+        move = np.log1p(min(max(miss / (slope * point.T), -0.6), 1.5))
     else:
-        size = (x - point.s) / (point.cp if pair == SP else point.cv)
-    return min(max(size, -1.0), 1.0)
+        miss = x - point.s
+        move = miss / (point.ds_dv_v if pair == ST else (point.cp if pair == SP else point.cv))
+    return miss, min(max(move, -1.0), 1.0)
+
+
+@bare
+def safe(move: float, miss: float, z: float, low: float, high: float) -> float:
+    """Where to go from ``z``: the Newton step if it keeps within the bracket, else its middle, else a short way."""
+    new = z + move
+    if move * miss >= 0.0 and low <= new <= high:
+        return new
+    if low > -np.inf and high < np.inf:
+        return 0.5 * (low + high)
+    return z + (BLIND if miss > 0.0 else -BLIND)
 
 
 @bare
 def search(
     mixed: Mixed, a: Array, f: virial.Fluids, blend: virial.Blend, pair: int, x: float, y: float, start: float
 ) -> tuple[Point, int, bool]:
-    """The point that meets a pair, steps taken on the real gas, and whether it was found; ``start`` [K], 0 for none."""
-    given, at_T = y if pair in (TP, HP, SP) else 0.0, pair in (TP, TV)
-    T = x if at_T else (y if pair == ST else (start if start > 0.0 else START))
+    """The point that meets a pair, steps taken on the real gas, and whether it was found; ``start`` [K], 0 for none.
+
+    First by plain Newton, as the reference; where that fails within a bracket, since energy and entropy of a gas rise
+    with T and with v. Too cold for any gas of the pressure counts as too low.
+    """
+    given = y if pair in (TP, HP, SP) else 0.0
+    T = x if pair in (TP, TV) else (y if pair == ST else (start if start > 0.0 else START))
     v = mixed.moles * R * T / START_PRESSURE if pair == ST else y
-    real, previous, done = start > 0.0 or at_T, np.inf, 0
-    point = at(mixed, a, f, blend, real, T, v, given)
-    for _ in range(2 * MAX_ITERATIONS):
-        move = 0.0 if at_T else step(point, pair, x)
-        size = abs(move)
-        if real and (size <= TOLERANCE or (size <= STALL and size >= previous)):
-            return point, done, np.isfinite(point.p)
-        if not size < np.inf:
-            break
-        if pair == ST:
-            v *= np.exp(move)
-        else:
-            T = min(max(T * np.exp(move), COLDEST), HOTTEST)
-        done += real
-        if not real and (size <= ENOUGH or size >= previous):
-            real, previous = True, np.inf
-            if not mixed.t_min * SLACK_BELOW < T < mixed.t_max * SLACK_ABOVE:
-                T = START
-        else:
+    point = at(mixed, a, f, blend, pair in (TP, TV), T, v, given)
+    if pair in (TP, TV):
+        return point, 0, np.isfinite(point.p)
+    first, done = np.log(v) if pair == ST else np.log(T), 0
+    for bracket in (False, True):
+        z, real, previous, low, high = first, start > 0.0, np.inf, -np.inf, np.inf
+        for count in range(MAX_ITERATIONS + IDEAL_STEPS):
+            if pair == ST:
+                v = np.exp(z)
+            else:
+                T = np.exp(z)
+            point = at(mixed, a, f, blend, real, T, v, given)
+            miss, move = step(point, pair, x)
+            if bracket and given > 0.0 and not np.isfinite(miss):
+                miss, move = 1.0, np.nan
+            size = abs(move)
+            if real and (size <= TOLERANCE or (size <= STALL and size >= previous)):
+                return point, done, np.isfinite(point.p)
+            if not bracket and real and not size < np.inf:
+                break
+            low, high = (z, high) if miss > 0.0 else (low, z)
+            z = safe(move, miss, z, low, high) if bracket and real else z + move
+            z = min(max(z, LOG_COLDEST), LOG_HOTTEST) if pair != ST else z
+            done += real
             previous = size
-        point = at(mixed, a, f, blend, real, T, v, given)
+            if not real and (count == IDEAL_STEPS or not ENOUGH < size < np.inf):
+                real, previous, low, high = True, np.inf, -np.inf, np.inf
+                if pair != ST and not mixed.t_min * SLACK_BELOW < np.exp(z) < mixed.t_max * SLACK_ABOVE:
+                    z = np.log(START)
     return point, done, False
