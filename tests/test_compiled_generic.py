@@ -16,7 +16,7 @@ import pytest
 
 from fuelair import fuel as fuels
 from fuelair.gas import gibbs as array_code
-from fuelair.gas.compiled import generic, newton, real_fixed
+from fuelair.gas.compiled import generic, jit, newton, real_fixed
 from fuelair.gas.compiled.generic import equilibrate
 from fuelair.gas.complete import oxygen_excess, solid_carbon
 from fuelair.gas.engine import total, weighted
@@ -264,6 +264,30 @@ def test_inner_functions_keep_no_reference_counts(counted):
     fresh(newton.Work(np.ones((12, 4)), np.ones((5, 6)), np.eye(6)), 0.0, 0.1, 0.1)
     (text,) = fresh.inspect_llvm().values()
     assert ("NRT_decref" in text) is counted
+
+
+def test_machine_code_is_kept_where_it_can_be_written(tmp_path, monkeypatch):
+    file = tmp_path / "file"
+    file.write_text("no folder can be made below this")
+    chosen = jit.cache_folder.__wrapped__
+    monkeypatch.setattr(jit, "_parents", lambda: [file, tmp_path / "own"])
+    assert chosen().parent == tmp_path / "own"
+    monkeypatch.setattr(jit, "_parents", lambda: [file])
+    assert chosen() is None
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="another variable there")
+def test_an_empty_variable_does_not_mean_the_current_folder(tmp_path, monkeypatch):
+    monkeypatch.setenv("HOME", str(tmp_path))
+    monkeypatch.setenv("XDG_CACHE_HOME", "")
+    monkeypatch.delenv("NUMBA_CACHE_DIR", raising=False)
+    assert jit._parents()[-1] == tmp_path / ".cache" / "fuelair"
+    assert all(parent.is_absolute() for parent in jit._parents())
+
+
+def test_without_a_folder_functions_still_compile(monkeypatch):
+    monkeypatch.setattr(jit, "cache_folder", lambda: None)
+    assert jit.compiled(lambda x: 2.0 * x)(3.0) == 6.0
 
 
 if __name__ == "__main__":
