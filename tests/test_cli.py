@@ -13,6 +13,7 @@ import pytest
 
 import fuelair
 from fuelair import resources
+from fuelair.errors import MissingExtraError
 
 DEMO = resources.demos() / "workboat.toml"
 
@@ -55,6 +56,34 @@ def test_the_verdict_comes_before_any_table(shown: str) -> None:
         "verify by test",
     ):
         assert part in shown
+
+
+def test_the_gas_engine_is_chosen_by_name() -> None:
+    out = run("assess", str(DEMO), "--json", "-", "--engine", "compiled")
+    assert out.returncode == 0, out.stderr
+    compiled, reference = json.loads(out.stdout), fuelair.assess(fuelair.Case.read(DEMO)).to_dict()
+    assert (compiled["engine"], reference["engine"]) == ("compiled", "reference")
+    for key, value in reference["models"]["fuel-air-equilibrium"].items():
+        if isinstance(value, float):
+            assert compiled["models"]["fuel-air-equilibrium"][key] == pytest.approx(value, rel=1e-8), key
+    out = run("assess", str(DEMO), "--engine", "fast")
+    assert (out.returncode, out.stdout) == (2, "") and "reference or compiled" in out.stderr
+
+
+def test_without_numba_studies_say_once_that_they_are_slow(capsys: pytest.CaptureFixture[str]) -> None:
+    from fuelair.cli import options, warmup
+    from fuelair.gas import engines
+
+    with pytest.MonkeyPatch.context() as patch:
+        for place in (options, engines):
+            patch.setattr(place, "can_compile", lambda: False)
+        assert options.engine_of_study(None) == "reference"
+        assert "fuelair[fast]" in capsys.readouterr().err
+        assert options.engine_of_study("reference") == "reference"
+        assert capsys.readouterr().err == ""
+        with pytest.raises(MissingExtraError, match=r"fuelair\[fast\]"):
+            warmup.warmup()
+    assert options.engine_of_study(None) == "compiled"
 
 
 def test_output_fits_its_width(shown: str) -> None:

@@ -17,7 +17,6 @@ CASE = fuelair.Case.read(resources.demos() / "workboat.toml")
 PHI, PRESSURE, RATIO = "charge.equivalence_ratio", "charge.pressure", "engine.compression_ratio"
 
 
-
 def axis(text, key=PHI):
     made = design(CASE, {key: text})
     return np.asarray(made.columns(0, made.rows)[key]).tolist()
@@ -155,7 +154,8 @@ def test_split():
 def test_samples_with_units_in_heads_and_cells(tmp_path):
     path = tmp_path / "rows ü.csv"
     path.write_text(
-        'charge.pressure [bar], engine.speed ,fuel.name,charge.temperature\n2.0, 1500 rpm,diesel,335\n"3 bar",25,methanol,60 degC\n',
+        "charge.pressure [bar], engine.speed ,fuel.name,charge.temperature\n"
+        '2.0, 1500 rpm,diesel,335\n"3 bar",25,methanol,60 degC\n',
         encoding="utf-8",
     )
     made = read_samples(path, CASE)
@@ -191,7 +191,7 @@ def test_other_samples_have_another_description(tmp_path):
         ("", "cannot be read"),
         ("charge.equivalence_ratio\n", "no rows"),
         ("charge.equivalence\n0.5\n", "charge.equivalence_ratio"),
-        ("charge.equivalence_ratio\n0.5\n\"\"\n", "value 2"),
+        ('charge.equivalence_ratio\n0.5\n""\n', "value 2"),
         ("charge.equivalence_ratio,fuel.name\n0.5,diesel\n0.6,\n", "value 2"),
         ("charge.equivalence_ratio\n0.5\n9\n", "0.01 to 5"),
         ("charge.pressure [psig]\n1\n", "no such unit"),

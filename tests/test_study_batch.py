@@ -150,8 +150,8 @@ def test_other_ways_to_give_the_fuel(amount):
 
 
 def test_cutoff_ratio_and_polytropic_exponent():
-    changes = {"combustion__heat_addition": "constant-pressure", "combustion__pressure_limit": None, "combustion__cutoff_ratio": 1.8}
-    case = demo(charge__equivalence_ratio=None, **changes)
+    changes = {"combustion__heat_addition": "constant-pressure", "combustion__pressure_limit": None}
+    case = demo(charge__equivalence_ratio=None, combustion__cutoff_ratio=1.8, **changes)
     columns = {"combustion.cutoff_ratio": np.array([1.6, 2.0]), "gas.compression_exponent": np.array([1.34, 1.36])}
     agree(study(case, *columns), columns, rel=1e-9)
 
@@ -319,7 +319,8 @@ def test_the_names_of_the_figures_are_those_that_are_computed():
 
 
 def test_heads_of_columns_carry_the_unit():
-    assert [heading(k) for k in ("charge.pressure", "engine.speed", "engine.compression_ratio", "fuel.name", "engine.cylinders")] == [
+    named = ("charge.pressure", "engine.speed", "engine.compression_ratio", "fuel.name", "engine.cylinders")
+    assert [heading(key) for key in named] == [
         "charge.pressure [Pa]",
         "engine.speed [rev/s]",
         "engine.compression_ratio",

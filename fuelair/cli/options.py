@@ -9,7 +9,7 @@ import typer
 
 from fuelair.cli.console import remark
 from fuelair.errors import InputError, Problem
-from fuelair.gas.engines import ENGINES, EngineName, can_compile, usual
+from fuelair.gas.engines import ENGINES, EngineName, can_compile, is_cold, usual
 
 if TYPE_CHECKING:
     from fuelair.study.spread import Runner
@@ -75,10 +75,13 @@ def engine_named(text: str | None) -> EngineName | None:
 
 
 def engine_of_study(text: str | None) -> EngineName:
-    """The gas engine of a study; says so where it is the slow one for want of numba."""
+    """The gas engine of a study; says so where it is the slow one for want of numba, or has to be compiled first."""
     if text is None and not can_compile():
         remark("numba is not installed, so the reference engine runs; python -m pip install 'fuelair[fast]' is far faster")
-    return engine_named(text) or usual()
+    name = engine_named(text) or usual()
+    if name == "compiled" and is_cold():
+        remark("The gas engine is compiled first, which takes a minute or so; `fuelair warmup` does it ahead")
+    return name
 
 
 def runner_named(

@@ -11,4 +11,4 @@ def warmup() -> None:
 
     if not engines.can_compile():
         raise MissingExtraError("fast", "The compiled engine")
-    engines.warm_up(print)  # type: ignore[attr-defined]
+    engines.warm_up(print)

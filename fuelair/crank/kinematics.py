@@ -43,9 +43,7 @@ def relative_volume(
     return np.asarray(1.0 / (compression_ratio - 1.0) + swept)
 
 
-def travel(
-    angle: Array | float, *, stroke: Array | float, rod_length: Array | float, pin_offset: Array | float = 0.0
-) -> Array:
+def travel(angle: Array | float, *, stroke: Array | float, rod_length: Array | float, pin_offset: Array | float = 0.0) -> Array:
     """Volume swept since the firing dead centre over the swept volume, 0 to 1; parameters as in `relative_volume`.
 
     Source: exact geometry; piston distance from the crank centre a cos(t) + sqrt(l^2 - (a sin(t) + e)^2).

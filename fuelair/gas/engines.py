@@ -2,9 +2,13 @@
 
 from __future__ import annotations
 
+import time
+from collections.abc import Callable
 from dataclasses import dataclass
 from importlib.util import find_spec
 from typing import Literal
+
+import numpy as np
 
 from fuelair.errors import MissingExtraError
 from fuelair.gas.engine import Engine
@@ -43,14 +47,52 @@ def pick(name: EngineName, fuel_fluid: str | None = None) -> Engines:
     ------
     MissingExtraError : ``compiled`` without numba.
     """
-    from fuelair.gas.real_engine import RealGas
-
     if name == "compiled":
         if not can_compile():
             raise MissingExtraError("fast", "The compiled engine")
         from fuelair.gas.compiled.batch_gas import BatchGas
+        from fuelair.gas.compiled.real_batch import RealBatchGas
 
-        return Engines(BatchGas(), RealGas(fuel_fluid))
+        return Engines(BatchGas(), RealBatchGas(fuel_fluid))
     from fuelair.gas.cantera_gas import CanteraGas
+    from fuelair.gas.real_engine import RealGas
 
     return Engines(CanteraGas(), RealGas(fuel_fluid))
+
+
+def is_cold() -> bool:
+    """Whether the compiled engine would have to be compiled first: no machine code of these sources is on disk."""
+    if not can_compile():
+        return False
+    from fuelair.gas.compiled.jit import cache_folder
+
+    folder = cache_folder()
+    return folder is None or not any(folder.rglob("nested.solve*.nbc"))
+
+
+def warm_up(report: Callable[[str], None]) -> None:
+    """Compile everything that the compiled engines need, and keep it on disk where that can be.
+
+    Parameters
+    ----------
+    report : takes one line of text a part, with the seconds that it took.
+    """
+    from fuelair.gas.compiled.jit import cache_folder
+    from fuelair.gas.species import build
+
+    table, both = build(), pick("compiled")
+    one, T, p = table.amounts({"N2": 0.7, "O2": 0.1, "CO2": 0.1, "H2O": 0.1})[None], np.array([2000.0]), np.array([5e6])
+    rich = table.amounts({"CH4": 1.0, "O2": 0.8})[None]
+    cold = np.array([800.0])
+    parts: tuple[tuple[str, Callable[[], object]], ...] = (
+        ("gas of fixed composition", lambda: both.ideal.state(table, "TP", T, p, one)),
+        ("equilibrium of burned gas", lambda: both.ideal.state(table, "TP", T, p, one, "equilibrium")),
+        ("equilibrium of any species", lambda: both.ideal.state(table, "TP", cold, p, rich, "equilibrium")),
+        ("real gas", lambda: both.real.state(table, "TP", T, p, one, "equilibrium")),
+    )
+    for name, work in parts:
+        start = time.perf_counter()
+        work()
+        report(f"{name}: {time.perf_counter() - start:.1f} s")
+    folder = cache_folder()
+    report("No folder can be written: every process compiles anew." if folder is None else f"Machine code kept in {folder}")

@@ -3,7 +3,11 @@
 from __future__ import annotations
 
 import logging
+import signal
+import threading
+from collections.abc import Iterator
 from concurrent.futures import CancelledError
+from contextlib import contextmanager
 from importlib import import_module
 from time import monotonic
 from typing import Any, Final
@@ -33,11 +37,15 @@ class Dask(Backend):
         self.cluster: Any = None
         self.client: Any = None
         self.asked, self.threads = 0.0, 0
+        self.log = logging.getLogger("distributed.client")
+        self.level = self.log.level
+        self.log.setLevel(SILENT)  # a scheduler that goes is an error with one line, not pages of tracebacks
         try:
             if runner.scheduler is None:
-                self.cluster = distributed.LocalCluster(
-                    n_workers=runner.size, threads_per_worker=1, host="127.0.0.1", dashboard_address=None, silence_logs=SILENT
-                )
+                with _deaf():
+                    self.cluster = distributed.LocalCluster(
+                        n_workers=runner.size, threads_per_worker=1, host="127.0.0.1", dashboard_address=None, silence_logs=SILENT
+                    )
             address = self.cluster or runner.scheduler
             self.client = distributed.Client(address, timeout=CONNECT_SECONDS, security=_security(runner), set_as_default=False)
             self.client.wait_for_workers(1, timeout=CONNECT_SECONDS)
@@ -73,9 +81,23 @@ class Dask(Backend):
 
     def close(self) -> None:
         """Leave the scheduler; end the cluster of this machine."""
+        self.log.setLevel(self.level)
         for one in (self.client, self.cluster):
             if one is not None:
                 one.close()
+
+
+@contextmanager
+def _deaf() -> Iterator[None]:
+    """Start processes that leave Ctrl-C to their parent."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, before)
 
 
 def _security(runner: Runner) -> Any:

@@ -9,13 +9,16 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from importlib import import_module
 from pathlib import Path
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from fuelair.errors import InputError, MissingExtraError, Problem
 from fuelair.gas.engine import Array, Codes, Status
 from fuelair.study.columns import Values, heading
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 SUFFIXES: Final = (".csv", ".parquet")
 STATUS: Final = "status"
@@ -72,7 +75,7 @@ def save(path: Path, kind: str, blocks: Iterable[Block], about: Mapping[str, Any
             writer.close()
 
 
-def frame(blocks: Iterable[Block]) -> Any:
+def frame(blocks: Iterable[Block]) -> pd.DataFrame:
     """Blocks as one pandas data frame."""
     import pandas as pd
 

@@ -65,7 +65,7 @@ class Parts:
         what = f"holds parts of another sweep, of another {', '.join(differs)}" if known else "holds something else"
         self._held.close()
         hint = "--fresh to throw these parts away, or another --out"
-        raise InputError(Problem(what, "--out", str(self.folder), hint=hint))
+        raise InputError(Problem(what, "--out", file=str(self.folder), hint=hint))
 
     def done(self) -> set[int]:
         """Numbers of the parts that are there."""
@@ -80,11 +80,11 @@ class Parts:
         """Figures and status of a part; InputError if the file is damaged."""
         path = self._part(number)
         try:
-            with np.load(path) as part:
+            with path.open("rb") as file, np.load(file) as part:
                 return part["figures"], part["status"]
         except (OSError, ValueError, KeyError, BadZipFile) as error:
             hint = "delete this part and run again"
-            raise InputError(Problem(f"part is damaged: {error}", "--out", str(path), hint=hint)) from None
+            raise InputError(Problem(f"part is damaged: {error}", "--out", file=str(path), hint=hint)) from None
 
     def _part(self, number: int) -> Path:
         return self.folder / f"part-{number:06d}.npz"
@@ -160,7 +160,7 @@ def told(path: Path) -> Iterator[None]:
         yield
     except OSError as error:
         hint = "run the same command again once there is room; what is done is kept" if path.is_dir() else ""
-        raise InputError(Problem(f"cannot write: {error.strerror or error}", "--out", str(path), hint=hint)) from None
+        raise InputError(Problem(f"cannot write: {error.strerror or error}", "--out", file=str(path), hint=hint)) from None
 
 
 def _hold(folder: Path) -> IO[bytes]:
@@ -174,5 +174,6 @@ def _hold(folder: Path) -> IO[bytes]:
         pass
     except BlockingIOError:
         file.close()
-        raise InputError(Problem("another sweep is writing these parts", "--out", str(folder), hint="another --out")) from None
+        problem = Problem("another sweep is writing these parts", "--out", file=str(folder), hint="another --out")
+        raise InputError(problem) from None
     return file

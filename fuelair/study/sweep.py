@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterator, Mapping
 from contextlib import closing
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
@@ -24,12 +24,15 @@ from fuelair.study.sampling import Design
 from fuelair.study.spread import Runner, spread
 from fuelair.version import __version__
 
+if TYPE_CHECKING:
+    import pandas as pd
+
 FORMAT: Final = 1
 """Version of the layout of parts and results."""
 ROW_GROUP: Final = 65536
 """Rows written at once to the result."""
-TASK_ROWS: Final[dict[EngineName, int]] = {"compiled": CHUNK, "reference": 32}
-PART_ROWS: Final[dict[EngineName, int]] = {"compiled": 65536, "reference": 1024}
+TASK_ROWS: Final[dict[EngineName, int]] = {"compiled": CHUNK, "reference": 8}
+PART_ROWS: Final[dict[EngineName, int]] = {"compiled": 65536, "reference": 64}
 """Rows of a task and of a part: a second or so of work, and what a killed run may lose."""
 Progress = Callable[[int, int], None]
 
@@ -101,7 +104,7 @@ def sweep(
             parts.remove()
 
 
-def table(study: Study, design: Design, *, runner: Runner | None = None) -> Any:
+def table(study: Study, design: Design, *, runner: Runner | None = None) -> pd.DataFrame:
     """Solve every row of a design in memory; returns a pandas data frame laid out as the file of `sweep`."""
     size = TASK_ROWS[study.engine]
     blocks = [(start, min(start + size, design.rows)) for start in range(0, design.rows, size)]
@@ -138,17 +141,17 @@ def about(study: Study, design: Design) -> dict[str, Any]:
 
 def _parts(study: Study, design: Design, out: Path, *, fresh: bool, replace: bool) -> Parts:
     if out.exists() and not out.is_file():
-        raise InputError(Problem("is no ordinary file", "--out", str(out), "a file name"))
+        raise InputError(Problem("is no ordinary file", "--out", file=str(out), hint="a name that is free"))
     if not out.parent.is_dir():
-        raise InputError(Problem("lies in a folder that does not exist", "--out", str(out), hint="make the folder first"))
+        raise InputError(Problem("lies in a folder that does not exist", "--out", file=str(out), hint="make the folder first"))
     leftover = out.with_name(out.name + ".parts").is_dir()
     if out.exists() and not replace and not leftover:
-        raise InputError(Problem("exists already", "--out", str(out), hint="--replace, or another --out"))
+        raise InputError(Problem("exists already", "--out", file=str(out), hint="--replace, or another --out"))
     manifest = about(study, design) | {"part_rows": PART_ROWS[study.engine], "kind": out.suffix.lower()}
     parts = Parts(out, manifest, fresh=fresh)
     if out.exists() and not replace and parts.merged() is None:
         parts.close()
-        raise InputError(Problem("exists already", "--out", str(out), hint="--replace, or another --out"))
+        raise InputError(Problem("exists already", "--out", file=str(out), hint="--replace, or another --out"))
     return parts
 
 

@@ -14,9 +14,9 @@ import numpy as np
 import numpy.typing as npt
 
 from fuelair.gas.compiled import fixed, nested, rows
+from fuelair.gas.compiled.generic import equilibrate
 from fuelair.gas.complete import complete_state, solid_carbon
 from fuelair.gas.engine import PRESSURE_LIMIT_OF_DATA, Array, Chemistry, Codes, GasState, Pair, Status
-from fuelair.gas.gibbs import equilibrate
 from fuelair.gas.polynomials import R
 from fuelair.gas.species import SpeciesTable
 
@@ -201,8 +201,7 @@ def _generic(
 
     Each ends in a state of fixed composition that meets the pair, whose temperature must be that of the equilibrium.
     """
-    allowed = np.tile(table.forms, (len(left), 1))
-    made = equilibrate(table, pair, x[left], y[left], amounts[left], allowed)
+    made = equilibrate(table, pair, x[left], y[left], amounts[left])
     start = np.where(made.failed, fixed.START, made.T)
     fit = _fixed(table, pair, np.where(made.failed, np.nan, x[left]), y[left], made.amounts, start)
     with np.errstate(invalid="ignore"):
