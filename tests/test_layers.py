@@ -77,6 +77,8 @@ def test_cantera_is_imported_only_in_the_gas_room_and_only_the_command_line_prin
     tree = ast.parse(path.read_text(encoding="utf-8"))
     if room(path) != "gas":
         assert not any(name.split(".")[0] == "cantera" for name in imports(tree))
+    if path.parent.name != "compiled":
+        assert not any(name.split(".")[0] in ("numba", "llvmlite") for name in imports(tree))
     if room(path) != "cli":
         calls = [n for n in ast.walk(tree) if isinstance(n, ast.Call) and isinstance(n.func, ast.Name)]
         assert not [c.lineno for c in calls if c.func.id == "print"]

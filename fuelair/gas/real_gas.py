@@ -139,6 +139,7 @@ def density(vt: VirialTable, T: Array, p: Array, x: Array) -> Array:
             rho = np.where(active, moved, rho)
             settled = (size <= TOLERANCE) | ((size <= STALL) & (size >= previous))
             previous = size
+            found &= ~active | (slope > 0.0)
             active &= ~settled & (slope > 0.0)
             if not active.any():
                 break

@@ -104,21 +104,24 @@ def search(
     f, c = problem.scaled(figures[solved])
     miss = np.maximum(-np.min(c, axis=1, initial=0.0), 0.0)
     order = solved[np.lexsort([f, miss])]
-    starts = _apart(u[order])
+    starts, kept = _apart(u[order]), int((miss <= 0.0).sum())
     ends = [*(_polished(problem, start) for start in starts), u[order[0]]]
-    values = np.array([problem.values(end) for end in ends])
-    misses = -np.min(values[:, 1:], axis=1, initial=0.0)
-    kept = int((miss <= 0.0).sum())
-    if (misses > KEPT).all():
-        nearest = _nearest(problem, ends[int(misses.argmin())])
-        if -np.min(problem.values(nearest)[1:], initial=0.0) > KEPT:
+    f, miss = _judged(problem, ends)
+    if (miss > KEPT).all():
+        nearest = _nearest(problem, ends[int(miss.argmin())])
+        ends = [_polished(problem, nearest), nearest]
+        f, miss = _judged(problem, ends)
+        if (miss > KEPT).all():
             return Search(_report(problem, nearest, len(starts), 0, kept), status, problem.rows)
-        ends, values = [_polished(problem, nearest), nearest], np.array([])
-        values = np.array([problem.values(end) for end in ends])
-        misses = -np.min(values[:, 1:], axis=1, initial=0.0)
-    good = np.where(misses <= KEPT, values[:, 0], np.inf)
+    good = np.where(miss <= KEPT, f, np.inf)
     agree = int((good[: len(starts)] <= good.min() + ALIKE).sum())
     return Search(_report(problem, ends[int(good.argmin())], len(starts), agree, kept), status, problem.rows)
+
+
+def _judged(problem: Scaled, points: Sequence[Array]) -> tuple[Array, Array]:
+    """Scaled objective and largest relative miss of a limit at some points (N,)."""
+    values = np.array([problem.values(point) for point in points])
+    return values[:, 0], np.maximum(-np.min(values[:, 1:], axis=1, initial=0.0), 0.0)
 
 
 def _apart(points: Array) -> list[Array]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping
 from contextlib import closing
 from dataclasses import dataclass
+from importlib.metadata import version
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
@@ -123,9 +124,7 @@ def about(study: Study, design: Design) -> dict[str, Any]:
     """What makes the rows what they are, as plain data: equal ones have equal rows."""
     versions = {"fuelair": __version__, "numpy": np.__version__, **data_versions()}
     if study.engine == "compiled":
-        import numba
-
-        versions["numba"] = numba.__version__
+        versions["numba"] = version("numba")
     return {
         "format": FORMAT,
         "versions": versions,

@@ -216,9 +216,7 @@ def band(
     study = Study(case, [one.key for one in spreads], model=model, engine=engine, quantities=names)
     sample = Mixtures(study, spreads, root, rows, seed)
     sample.solve(runner, progress or (lambda done, rows: None))
-    if not any(np.isfinite(sample.base(name)).any() for name in names):
-        worst = Status(int(np.bincount(sample.base_status.ravel()).argmax()))
-        raise UnsolvedError(worst.label, f"no row of the band could be solved; {worst.reason}", study.model or "")
+    _refuse_unsolved(study, sample)
     bands = {name: statistics.band(sample.base(name)) for name in names}
     bands = {name: one for name, one in bands.items() if np.isfinite(one.mean)}
     nominal = {name: sample.nominal(name) for name in bands}
@@ -238,6 +236,12 @@ def band(
         failed=asked.failures(sample.base_status),
         design_peak=_design_peak(section, nominal, bands),
     )
+
+
+def _refuse_unsolved(study: Study, sample: Mixtures) -> None:
+    if not any(np.isfinite(sample.base(name)).any() for name in study.quantities):
+        worst = Status(int(np.bincount(sample.base_status).argmax()))
+        raise UnsolvedError(worst.label, f"no row of the band could be solved; {worst.reason}", study.model or "")
 
 
 def _spreads(case: Case, section: ToleranceSection) -> tuple[tuple[Marginal, ...], list[list[float]] | None]:
