@@ -12,6 +12,9 @@ from fuelair.case import Case
 from fuelair.errors import DataError, FuelairError, InputError, MissingExtraError, Problem, UnsolvedError
 from fuelair.fuel import Fuel
 from fuelair.study.frames import sweep
+from fuelair.study.optimum import best
+from fuelair.study.target import find
+from fuelair.study.tolerance import band
 from fuelair.version import __version__
 
 __all__ = [
@@ -26,5 +29,8 @@ __all__ = [
     "UnsolvedError",
     "__version__",
     "assess",
+    "band",
+    "best",
+    "find",
     "sweep",
 ]

@@ -121,7 +121,7 @@ def stored_unit(dimension: str) -> str:
     return next(iter(UNITS[dimension]))
 
 
-def parse(value: object, dimension: str, *, ambient_pressure: float = STANDARD_ATMOSPHERE) -> float:
+def parse(value: object, dimension: str, *, ambient_pressure: float = STANDARD_ATMOSPHERE, difference: bool = False) -> float:
     """Read a plain number, or text with number and unit.
 
     Parameters
@@ -130,6 +130,7 @@ def parse(value: object, dimension: str, *, ambient_pressure: float = STANDARD_A
         ``"2.9 bar"``, ``"47 degC"``, ``"35 %"``; for the dimension ``ratio`` also ``"0.6"`` and ``"17:1"``.
     dimension : a key of :data:`UNITS`.
     ambient_pressure : [Pa] added to gauge units such as ``bar(g)``.
+    difference : the value is a width, so that ``"3 degC"`` is 3 K and ``"0.2 bar(g)"`` 0.2 bar.
 
     Returns
     -------
@@ -166,7 +167,8 @@ def parse(value: object, dimension: str, *, ambient_pressure: float = STANDARD_A
         _refuse_unit(value, number, name, dimension)
     if not math.isfinite(float(number)):
         _refuse("not a finite number", value, dimension, _example(dimension))
-    result = unit.to_si(Fraction(number), ambient_pressure=ambient_pressure)
+    exact = Fraction(number)
+    result = _rounded(exact * unit.factor) if difference else unit.to_si(exact, ambient_pressure=ambient_pressure)
     if not math.isfinite(result):
         _refuse("number too large", value, dimension, _example(dimension))
     return result

@@ -83,7 +83,7 @@ SINGLE = [
     ("= 1.0", '= 1.0\npressure_limit = "90 bar"', "charge.pressure_limit", "no such key", "", "[combustion]"),
     ("[fuel]", "[fuell]\n[fuel]", "fuell", "no such section", "[engine]", "[fuel]"),
     ("[fuel]", "[burn]\nduration = 3\n[fuel]", "burn", "this release has no [burn] section", "", "remove"),
-    ("[fuel]", "[tolerance]\n[fuel]", "tolerance", "this release has no [tolerance] section", "", "remove"),
+    ("[fuel]", "[walls]\n[fuel]", "walls", "this release has no [walls] section", "", "remove"),
     ("[fuel]", '[gas]\nmodel = "reel"\n[fuel]', "gas.model", "no such choice", '"ideal"', '"real"'),
     ("[fuel]", '[gas]\nmodel = "real"\nexpansion = "frozen"\n[fuel]', "gas.expansion", "ideal", "", "remove"),
     ("[fuel]", '[gas]\nmodel = "real"\nfreeze_temperature = 1800\n[fuel]', "gas.freeze_temperature", "ideal", "", "remove"),

@@ -16,7 +16,7 @@ import pytest
 from fuelair import fuel as fuels
 from fuelair.fuel import Vapour
 from fuelair.gas.cantera_gas import CanteraGas
-from fuelair.gas.compiled import balances, fixed, guess, nested, rows, steps, vector_math
+from fuelair.gas.compiled import balances, finish, fixed, guess, nested, rows, steps, vector_math
 from fuelair.gas.compiled.batch_gas import BatchGas, constants
 from fuelair.gas.complete import oxygen_excess
 from fuelair.gas.engine import Status, total, weighted
@@ -191,7 +191,11 @@ def test_newton_takes_few_steps(pair):
 
 VECTOR = {
     balances.evaluate: lambda: (_lanes(), np.zeros(18 * rows.REACTIONS)),
+    balances.amounts: lambda: (_lanes(),),
     balances.balances: lambda: (_lanes(),),
+    balances.heats: lambda: (_lanes(),),
+    finish.close: lambda: (_lanes(), np.ones((5, rows.SPECIES))),
+    finish.properties: lambda: (_lanes(), rows.SV, 8314.0, 1e5),
     steps.amount_of_gas: lambda: (_lanes(),),
     steps.heat_balance: lambda: (_lanes(), True, 0.0),
     steps.move: lambda: (_lanes(), True, True),

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 from numbers import Real
 from typing import Any, Final, NoReturn
 
-from pydantic import GetCoreSchemaHandler, GetJsonSchemaHandler
+from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler
 from pydantic.fields import FieldInfo
 from pydantic_core import PydanticCustomError
 from pydantic_core.core_schema import CoreSchema, ValidationInfo, with_info_plain_validator_function
@@ -234,3 +234,19 @@ class Text(Kind):
 def kind_of(field: FieldInfo) -> Kind | None:
     """Return the kind of a field, or None for a nested table or list."""
     return next((item for item in field.metadata if isinstance(item, Kind)), None)
+
+
+class Section(BaseModel):
+    """Base of all sections: frozen, unknown keys are errors."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+def optional(meaning: str, default: Any = None, *, example: object = None) -> Any:
+    """A key that may be left out; ``example`` is what a template shows if there is no default."""
+    return Field(default=default, description=meaning, examples=None if example is None else [example])
+
+
+def needed(meaning: str) -> Any:
+    """A key that must be there."""
+    return Field(description=meaning)

@@ -10,6 +10,8 @@ from fuelair.case.fields import Kind, Whole, Within, kind_of, nearest
 from fuelair.case.schema import SECTIONS, BlendPart, OwnFuel
 from fuelair.errors import InputError, Problem
 
+NO_EFFECT = ("limits.", "tolerance.")
+"""Sections that no figure depends on."""
 _BLEND = re.compile(r"blend\[(\d{1,3})\]")
 
 
@@ -50,3 +52,9 @@ def is_number(key: str) -> bool:
     found = kind(key)
     counts = isinstance(found, Whole) and not found.choices
     return (counts or isinstance(found, Within)) and not key.startswith(("fuel.own.", "fuel.blend["))
+
+
+def numbers() -> dict[str, Within]:
+    """Return every key of a section that is a physical number which figures may depend on, with its kind."""
+    kinds = {key: kind(key) for key in every() if not key.startswith(NO_EFFECT)}
+    return {key: found for key, found in kinds.items() if isinstance(found, Within)}

@@ -24,6 +24,7 @@ from fuelair.case.schema import (
     GasSection,
     LimitsSection,
 )
+from fuelair.case.tolerance import ToleranceSection
 from fuelair.errors import InputError, Problem
 from fuelair.quantities import STANDARD_ATMOSPHERE, is_gauge
 
@@ -51,6 +52,7 @@ class Case(BaseModel):
     combustion: CombustionSection
     gas: GasSection = Field(default_factory=GasSection)
     limits: LimitsSection = Field(default_factory=LimitsSection)
+    tolerance: ToleranceSection | None = None
 
     _written: frozenset[str] = PrivateAttr(default=frozenset())
     _raw: dict[str, object] = PrivateAttr(default_factory=dict)
@@ -226,9 +228,15 @@ def _leaves(data: Mapping[str, Any]) -> Iterator[tuple[str, Any]]:
 def _gauge_zero(data: Mapping[str, Any]) -> float:
     """Return the pressure [Pa] from which gauge units count: the ambient pressure of the case."""
     charge = data.get("charge")
-    if not isinstance(charge, Mapping) or not any(is_gauge(item) for _, item in _leaves(data)):
+    if not isinstance(charge, Mapping) or not _holds_gauge(data):
         return STANDARD_ATMOSPHERE
     keys = ("ambient_pressure", "altitude", "reference")
     found = problems.sound({f"charge.{key}": charge[key] for key in keys if key in charge}, STANDARD_ATMOSPHERE)
     outside = defaults.ambient(found.get("charge.altitude"), found.get("charge.reference"))
     return float(found.get("charge.ambient_pressure", outside[0]))
+
+
+def _holds_gauge(data: Any) -> bool:
+    if isinstance(data, Mapping):
+        return any(map(_holds_gauge, data.values()))
+    return any(map(_holds_gauge, data)) if isinstance(data, (list, tuple)) else is_gauge(data)

@@ -11,9 +11,25 @@ from pydantic import BaseModel, TypeAdapter, ValidationError
 from fuelair.case import toml_text
 from fuelair.case.fields import OWN_ERROR, kind_of, nearest
 from fuelair.case.schema import LATER_SECTIONS, LEAST, SECTIONS, BlendPart, OwnFuel
+from fuelair.case.tolerance import Correlation, PeakPressureSpread, Spread
 from fuelair.errors import Problem
 
 Path = tuple[str | int, ...]
+
+INNER: dict[Path, type[BaseModel]] = {
+    ("fuel", "own"): OwnFuel,
+    ("fuel", "blend"): BlendPart,
+    ("tolerance", "spread"): Spread,
+    ("tolerance", "correlation"): Correlation,
+    ("tolerance", "peak_pressure_spread"): PeakPressureSpread,
+}
+"""Tables and lists of tables inside a section."""
+LISTS: dict[Path, str] = {
+    ("fuel", "blend"): 'blend = [{ name = "diesel", mass_fraction = 0.9 }, { name = "fame", mass_fraction = 0.1 }]',
+    ("tolerance", "spread"): 'spread = [{ key = "charge.temperature", distribution = "normal", standard_deviation = "3 K" }]',
+    ("tolerance", "correlation"): 'correlation = [{ key = "charge.temperature", other = "charge.pressure", coefficient = 0.5 }]',
+}
+"""How each list of tables is written."""
 
 
 def translate(error: ValidationError, data: Mapping[str, Any], model: type[BaseModel]) -> list[Problem]:
@@ -57,8 +73,7 @@ def _one(item: Any, data: Mapping[str, Any], model: type[BaseModel]) -> Problem:
         hint = f"[{path[0]}] on a line of its own" if len(path) == 1 else ""
         return Problem("must be a table of keys", key, shown, ", ".join(_names(path, model)), hint)
     if kind in ("tuple_type", "list_type"):
-        hint = 'blend = [{ name = "diesel", mass_fraction = 0.9 }, { name = "fame", mass_fraction = 0.1 }]'
-        return Problem("must be a list of parts", key, shown, hint=hint)
+        return Problem("must be a list of parts", key, shown, hint=LISTS.get(path, ""))
     return Problem("not accepted", key, shown)
 
 
@@ -93,9 +108,7 @@ def _missing(path: Path, key: str, model: type[BaseModel]) -> Problem:
 def _model_at(path: Path, model: type[BaseModel]) -> type[BaseModel]:
     if not path:
         return model
-    if path[0] == "fuel" and len(path) > 1:
-        return OwnFuel if path[1] == "own" else BlendPart
-    return SECTIONS[str(path[0])]
+    return INNER.get(path[:2]) or SECTIONS[str(path[0])]
 
 
 def _names(path: Path, model: type[BaseModel]) -> list[str]:

@@ -10,7 +10,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import replace
 from typing import Any, Final
 
-from fuelair.case import contradictions
+from fuelair.case import contradictions, spreads
 from fuelair.case.fields import nearest
 from fuelair.errors import InputError, Problem
 
@@ -307,5 +307,5 @@ def _as_fuel_sees_it(build: Callable[[], object]) -> Iterator[Problem]:
 RULES: Final[tuple[Rule, ...]] = (
     _one_amount, _one_pair, _residual, _two_stroke, _heat_addition, _gas, _real_gas, _ambient, _evaporation, _recirculated,
     _water, _geometry, _timing,
-    _one_fuel, _fuel_name, _blend, _own,
+    _one_fuel, _fuel_name, _blend, _own, spreads.rule,
 )  # fmt: skip

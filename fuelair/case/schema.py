@@ -8,11 +8,12 @@ they hold what engines are built for and catch slips of the unit.
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Final, Literal, get_args
+from typing import Annotated, Final, Literal, get_args
 
-from pydantic import BaseModel, ConfigDict, Field
-
-from fuelair.case.fields import Choice, Text, Whole, Within
+from fuelair.case.fields import Choice, Section, Text, Whole, Within
+from fuelair.case.fields import needed as _needed
+from fuelair.case.fields import optional as _key
+from fuelair.case.tolerance import ToleranceSection
 
 Admission = Literal["premixed", "port-liquid", "early-direct", "direct"]
 HeatAddition = Literal["constant-volume", "constant-pressure", "pressure-limited"]
@@ -22,7 +23,7 @@ WaterAdmission = Literal["intake", "cylinder"]
 GasModel = Literal["ideal", "real"]
 FuelPhase = Literal["liquid", "vapour"]
 
-LATER_SECTIONS: Final = ("burn", "walls", "load", "tolerance")
+LATER_SECTIONS: Final = ("burn", "walls", "load")
 """Sections that the plan knows but this release does not have."""
 
 _BAR = 1e5
@@ -33,21 +34,6 @@ MASS_FRACTION = Within("ratio", 0.0, 1.0, "%")
 HIGH_PRESSURE = Within("pressure", 1 * _BAR, 600 * _BAR, "bar")
 LIMIT_TEMPERATURE = Within("temperature", 300.0, 4000.0, "K")
 BOTTOM_BEFORE, BOTTOM_AFTER, GAS_EXCHANGE_CENTRE = -180.0, 180.0, 360.0  # dead centres [deg]
-
-
-class Section(BaseModel):
-    """Base of all sections: frozen, unknown keys are errors."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True)
-
-
-def _key(meaning: str, default: Any = None, *, example: object = None) -> Any:
-    """A key that may be left out; ``example`` is what a template shows if there is no default."""
-    return Field(default=default, description=meaning, examples=None if example is None else [example])
-
-
-def _needed(meaning: str) -> Any:
-    return Field(description=meaning)
 
 
 class EngineSection(Section):
@@ -239,6 +225,7 @@ SECTIONS: Final[dict[str, type[Section]]] = {
     "combustion": CombustionSection,
     "gas": GasSection,
     "limits": LimitsSection,
+    "tolerance": ToleranceSection,
 }
 LEAST: Final[dict[str, str]] = {
     "engine": "compression_ratio",

@@ -12,11 +12,18 @@ from fuelair.case.schema import SECTIONS
 from fuelair.errors import InputError, Problem
 from fuelair.quantities import in_unit
 
-_HIDDEN = {"fuel": ("blend", "own")}  # tables, shown as lines of their own
-_FUEL_TABLES = (
-    '# blend = [{ name = "diesel", mass_fraction = "93 %" }, { name = "fame", mass_fraction = "7 %" }]  # instead of name',
-    '# own = { formula = "C12H26", lower_heating_value = "44 MJ/kg", density = "750 kg/m3" }  # instead of name',
-)
+_TABLES = {
+    "fuel": {
+        "blend": '[{ name = "diesel", mass_fraction = "93 %" }, { name = "fame", mass_fraction = "7 %" }]  # instead of name',
+        "own": '{ formula = "C12H26", lower_heating_value = "44 MJ/kg", density = "750 kg/m3" }  # instead of name',
+    },
+    "tolerance": {
+        "spread": '[{ key = "engine.compression_ratio", distribution = "uniform", half_width = 0.2 }]  # for `fuelair band`',
+        "correlation": '[{ key = "charge.pressure", other = "charge.temperature", coefficient = 0.5 }]  # both must spread',
+        "peak_pressure_spread": '{ cyclic = "2 %", cylinder_to_cylinder = "1 %", control = "1 %", coverage = 2.0 }',
+    },
+}
+"""Tables inside a section, shown as lines of their own."""
 
 
 def names() -> list[str]:
@@ -57,11 +64,9 @@ def _with_comments(text: str) -> str:
 
 def _comments(section: str, written: set[str]) -> list[str]:
     model = SECTIONS[section]
-    hidden = _HIDDEN.get(section, ())
-    lines = [_comment(model, key) for key in model.model_fields if key not in written and key not in hidden]
-    if section == "fuel":
-        lines.extend(_FUEL_TABLES)
-    return lines
+    tables = _TABLES.get(section, {})
+    lines = [_comment(model, key) for key in model.model_fields if key not in written and key not in tables]
+    return lines + [f"# {key} = {text}" for key, text in tables.items() if key not in written]
 
 
 def _comment(model: type[BaseModel], key: str) -> str:

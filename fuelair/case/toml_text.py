@@ -225,12 +225,14 @@ def dump(written: dict[str, Any], resolved: dict[str, Any], defaulted: frozenset
         if not isinstance(table, dict):
             continue
         kept = written.get(name, {})
-        flat = {key: value for key, value in kept.items() if not isinstance(value, dict)}
         deep = {key: value for key, value in kept.items() if isinstance(value, dict)}
+        lists = {key: value for key, value in kept.items() if isinstance(value, list)}
+        flat = {key: value for key, value in kept.items() if key not in deep and key not in lists}
         silent = {key: value for key, value in table.items() if f"{name}.{key}" in defaulted}
         comments = "".join(f"# {line}  (default)\n" for line in tomli_w.dumps(silent).splitlines())
         head = f"[{name}]\n" if name in written else f"# [{name}]\n"
         if flat or deep or silent or name in written:
-            block = head + tomli_w.dumps(flat) + comments
-            blocks.append(block + ("\n" + tomli_w.dumps({name: deep}) if deep else ""))
+            parts = "".join(f"\n[[{name}.{key}]]\n{tomli_w.dumps(item)}" for key, items in lists.items() for item in items)
+            inner = "\n" + tomli_w.dumps({name: deep}) if deep else ""
+            blocks.append(head + tomli_w.dumps(flat) + comments + parts + inner)
     return "\n".join(block for block in blocks if block)

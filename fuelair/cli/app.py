@@ -13,7 +13,7 @@ from typing import Annotated
 
 import typer
 
-from fuelair.cli import assess, cases, sweep, validate, warmup
+from fuelair.cli import assess, band, cases, find, sweep, validate, warmup
 from fuelair.cli.console import complain
 from fuelair.errors import FuelairError
 from fuelair.version import __version__
@@ -69,5 +69,8 @@ def _version(
         raise typer.Exit
 
 
-for _verb in (assess.assess, sweep.sweep, cases.check, cases.new, cases.fuels, validate.validate, warmup.warmup):
+_VERBS = (
+    assess.assess, sweep.sweep, find.find, band.band, cases.check, cases.new, cases.fuels, validate.validate, warmup.warmup,
+)  # fmt: skip
+for _verb in _VERBS:
     app.command()(_verb)  # in the order in which the help lists them

@@ -21,10 +21,19 @@ def check(
     result_schema: Annotated[
         bool, typer.Option("--result-schema", help="Print the JSON Schema of what assess --json writes and stop.")
     ] = False,
+    study_schema: Annotated[
+        str | None,
+        typer.Option("--study-schema", metavar="find|best|band", help="The same for find --target, find --most, band."),
+    ] = None,
 ) -> None:
     """Validate a case file without running it, and show every value it resolves to."""
     from fuelair import Case
 
+    if study_schema is not None:
+        from fuelair.report.study_schema import named
+
+        print(json.dumps(named(study_schema), indent=2))
+        return
     if schema:
         print(json.dumps(Case.json_schema(), indent=2))
         return

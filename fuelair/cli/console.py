@@ -16,6 +16,7 @@ from rich.padding import Padding
 from rich.table import Table as RichTable
 
 if TYPE_CHECKING:
+    from fuelair.case import Case
     from fuelair.report.tables import Table
 
 NARROWEST, PIPED = 110, 120
@@ -66,6 +67,16 @@ def grid(
 
 def _is_number(text: str) -> bool:
     return bool(text) and (text[0].isdigit() or text[0] in "+-")
+
+
+def study_head(console: Console, case: Case, model: str, engine: str, scan: str, verdict: str) -> None:
+    """Print what a study was asked and what came of it, before its tables."""
+    console.print()
+    console.print(f"[bold]{escape(case.title or 'Untitled case')}[/bold]")
+    console.print(escape(f"{model}, {engine} engine; {scan}"), style="dim")
+    console.print()
+    console.print(Padding(f"[bold]{escape(verdict)}[/bold]", (0, 2)))
+    console.print()
 
 
 def bullets(console: Console, title: str, items: Iterable[str]) -> None:

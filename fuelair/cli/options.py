@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
@@ -24,6 +24,28 @@ EngineOption = Annotated[
     ),
 ]
 ModelOption = Annotated[str | None, typer.Option("--model", metavar="ID", help="Model; default the headline of the case.")]
+JsonOption = Annotated[
+    Path | None,
+    typer.Option("--json", metavar="FILE", help="Write everything as JSON; - for standard output, where nothing else goes then."),
+]
+
+
+def deliver(data: dict[str, Any], json_file: Path | None, case: Path) -> bool:
+    """Write a result as JSON where ``--json`` says; True if that was standard output, where nothing else may go.
+
+    ``case`` is the file that must not be replaced.
+    """
+    from fuelair.report import files
+
+    if json_file is None:
+        return False
+    if str(json_file) == "-":
+        print(files.json_text(data), end="")
+        return True
+    files.write_text(json_file, files.json_text(data), keep=case)
+    return False
+
+
 WorkersOption = Annotated[int | None, typer.Option("--workers", metavar="N", help="Workers here; default the cores there are.")]
 RunnerOption = Annotated[
     str | None,

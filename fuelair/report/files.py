@@ -11,7 +11,7 @@ import json
 import os
 import shutil
 import tempfile
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -22,7 +22,12 @@ from fuelair.report.tables import CAUTION
 
 def as_json(a: Assessment) -> str:
     """The whole assessment as JSON text (strict: null, never NaN)."""
-    return json.dumps(a.to_dict(), indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+    return json_text(a.to_dict())
+
+
+def json_text(data: dict[str, Any]) -> str:
+    """A dictionary as strict JSON text; NaN is an error."""
+    return json.dumps(data, indent=2, allow_nan=False, ensure_ascii=False) + "\n"
 
 
 def contents(a: Assessment) -> dict[str, str]:
@@ -33,10 +38,10 @@ def contents(a: Assessment) -> dict[str, str]:
     over = [{"model": m, "quantity": k, **both} for m, quantities in a.overprediction.items() for k, both in quantities.items()]
     return {
         "assessment.json": as_json(a),
-        "models.csv": _csv(models),
-        "states.csv": _csv(states),
-        "ladder.csv": _csv(steps),
-        "overprediction.csv": _csv(over),
+        "models.csv": csv_text(models),
+        "states.csv": csv_text(states),
+        "ladder.csv": csv_text(steps),
+        "overprediction.csv": csv_text(over),
         "resolved-case.toml": a.case.to_toml(),
         "log.txt": log(a),
     }
@@ -69,7 +74,11 @@ def write_folder(a: Assessment, folder: Path, *, keep: Path | None = None) -> li
     ------
     InputError : the folder cannot be made or written, or a name in it is taken; nothing is left behind.
     """
-    texts = contents(a)
+    return write_texts(contents(a), folder, keep=keep)
+
+
+def write_texts(texts: Mapping[str, str], folder: Path, *, keep: Path | None = None) -> list[Path]:
+    """Write texts by file name into ``folder``, all or none; otherwise as :func:`write_folder`."""
     if folder.exists() and not folder.is_dir():
         raise InputError(Problem("is a file, not a folder", "--out", str(folder), "a folder, or a name that is free"))
     for name in texts:
@@ -134,7 +143,8 @@ def _refused(path: Path, error: OSError, key: str = "--out") -> InputError:
     return InputError(Problem(f"cannot write: {error.strerror or error}", key, str(path), "a place you may write to"))
 
 
-def _csv(rows: Iterable[dict[str, Any]]) -> str:
+def csv_text(rows: Iterable[dict[str, Any]]) -> str:
+    """Rows as CSV text, columns in the order of their first appearance, empty for None."""
     rows = list(rows)
     columns: dict[str, None] = {}
     for row in rows:

@@ -26,40 +26,42 @@ NUMBER: dict[str, Any] = {"type": ["number", "null"]}
 def assessment_schema() -> dict[str, Any]:
     """JSON Schema (draft 2020-12) of an assessment; null stands for a figure that was not solved."""
     text, numbers = {"type": "string"}, {"type": "object", "additionalProperties": NUMBER}
-    model = _record(
-        {"status": {"enum": [s.label for s in Status]}, "reason": text, "flags": _list(text)}
+    model = as_record(
+        {"status": {"enum": [s.label for s in Status]}, "reason": text, "flags": as_list(text)}
         | dict.fromkeys(MODEL_NUMBERS, NUMBER)
     )
-    state = _record(
+    state = as_record(
         {"state": {"enum": list(STATES)}} | dict.fromkeys(STATE_NUMBERS, NUMBER),
         optional={"mole_fractions": {"type": "object", "additionalProperties": {"type": "number", "minimum": 0, "maximum": 1}}},
     )
-    step = _record({"from": text, "to": text, "assumption": text} | dict.fromkeys(LADDER, NUMBER))
-    offset = _record({"absolute": NUMBER, "relative": NUMBER})
-    source = _record(
+    step = as_record({"from": text, "to": text, "assumption": text} | dict.fromkeys(LADDER, NUMBER))
+    offset = as_record({"absolute": NUMBER, "relative": NUMBER})
+    source = as_record(
         {"key": text, "reference": text, "standing": {"enum": ["read", "computed", "from memory", "common practice"]}}
     )
     models = [*MODELS, FREEZE_MODEL]
     parts = {
         "format": {"const": FORMAT}, "versions": {"type": "object", "additionalProperties": text}, "engine": text,
-        "headline": {"enum": models}, "verdict": text, "case": {"type": "object"}, "defaulted": _list(text), "charge": numbers,
+        "headline": {"enum": models}, "verdict": text, "case": {"type": "object"}, "defaulted": as_list(text), "charge": numbers,
         "models": _by_model(model, MODELS, models), "companions": {"type": "object"},
-        "states": _by_model(_list(state), MODELS, models), "ladder": _list(step),
+        "states": _by_model(as_list(state), MODELS, models), "ladder": as_list(step),
         "overprediction": _by_model({"type": "object", "additionalProperties": offset}, (), models),
         "exergy": {"type": "object"}, "second_opinion": numbers, "engine_figures": numbers, "exhaust": numbers,
-        "ledger": {"type": "object", "additionalProperties": numbers}, "warnings": _list(text), "sources": _list(source),
+        "ledger": {"type": "object", "additionalProperties": numbers}, "warnings": as_list(text), "sources": as_list(source),
     }  # fmt: skip
-    return {"$schema": DIALECT, "title": "fuelair assessment", **_record(parts)}
+    return {"$schema": DIALECT, "title": "fuelair assessment", **as_record(parts)}
 
 
-def _record(properties: dict[str, Any], optional: dict[str, Any] | None = None) -> dict[str, Any]:
+def as_record(properties: dict[str, Any], optional: dict[str, Any] | None = None) -> dict[str, Any]:
+    """Schema of an object with these properties and no others."""
     return {
         "type": "object", "properties": properties | (optional or {}), "required": list(properties),
         "additionalProperties": False,
     }  # fmt: skip
 
 
-def _list(items: dict[str, Any]) -> dict[str, Any]:
+def as_list(items: dict[str, Any]) -> dict[str, Any]:
+    """Schema of an array of such items."""
     return {"type": "array", "items": items}
 
 

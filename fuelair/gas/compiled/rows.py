@@ -41,9 +41,10 @@ LOADED = BASE + 18
 (
     KAPPA, LOG_T, DZ, DS, DT, SHARE, LAGGED, MISS, COUNT,
     Z_E, Z_S, Z_T, W_Z, W_S, W_T, WHOLE, B_Z, B_S, B_T, SUM_Q, P_Z, P_S, P_T, S_T, LEVEL,
-    ETA_Z, ETA_S, ETA_T, NU_Z, NU_S, NU_T,
-) = range(LOADED, LOADED + 31)  # fmt: skip
-MAJOR = LOADED + 31  # SPECIES rows of amounts: CO H2 O2 N2, then the products
+    ETA_Z, ETA_S, ETA_T, NU_Z, NU_S, NU_T, C_Z, C_S,
+    PER_C, PER_H, PER_N, SUM_C, SUM_H, SUM_N, G_C, G_H, G_N, UP, DOWN, PER_F,
+) = range(LOADED, LOADED + 45)  # fmt: skip
+MAJOR = LOADED + 45  # SPECIES rows of amounts: CO H2 O2 N2, then the products
 K_ROW = MAJOR + 4  # the products' rows; before their amounts they hold the equilibrium constants
 THETA = MAJOR + SPECIES  # enthalpy of reaction over R T, zero for the basis
 DCP = THETA + SPECIES

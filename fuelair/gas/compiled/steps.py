@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from fuelair.gas.compiled.balances import balances, evaluate
+from fuelair.gas.compiled.balances import amounts, balances, evaluate, heats
 from fuelair.gas.compiled.jit import inlined, vectorised
 from fuelair.gas.compiled.rows import (
     B_S,
@@ -183,7 +183,10 @@ def step(w: Array, tab: Array, pair: int) -> None:
     free_T = pair not in (TP, TV, ST)
     entropy = pair in (SP, SV, ST)
     evaluate(w, tab)
+    amounts(w)
     balances(w)
+    if free_T or entropy:
+        heats(w)
     if at_pressure:
         amount_of_gas(w)
     if free_T or entropy:
