@@ -131,11 +131,11 @@ def test_workers_end_when_their_parent_is_killed(tmp_path: Path) -> None:
     environment = os.environ | {"PYTHONPATH": str(PARENT)}
     parent = subprocess.Popen([sys.executable, str(place)], cwd=tmp_path, env=environment)
     try:
-        pids = wait_for(lambda: pids(tmp_path), 2)
+        found = wait_for(lambda: pids(tmp_path), 2)
     finally:
         parent.send_signal(signal.SIGKILL)
         parent.wait()
-    assert wait_for(lambda: [pid for pid in pids if not alive(pid)], 2) == pids
+    assert wait_for(lambda: [pid for pid in found if not alive(pid)], 2) == found
 
 
 def wait_for(look, count: int, seconds: float = 20.0) -> list[int]:

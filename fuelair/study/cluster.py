@@ -37,6 +37,7 @@ class Dask(Backend):
         self.cluster: Any = None
         self.client: Any = None
         self.asked, self.threads = 0.0, 0
+        security = _security(runner)
         self.log = logging.getLogger("distributed.client")
         self.level = self.log.level
         self.log.setLevel(SILENT)  # a scheduler that goes is an error with one line, not pages of tracebacks
@@ -47,7 +48,7 @@ class Dask(Backend):
                         n_workers=runner.size, threads_per_worker=1, host="127.0.0.1", dashboard_address=None, silence_logs=SILENT
                     )
             address = self.cluster or runner.scheduler
-            self.client = distributed.Client(address, timeout=CONNECT_SECONDS, security=_security(runner), set_as_default=False)
+            self.client = distributed.Client(address, timeout=CONNECT_SECONDS, security=security, set_as_default=False)
             self.client.wait_for_workers(1, timeout=CONNECT_SECONDS)
         except BaseException as error:
             self.close()
