@@ -8,11 +8,11 @@ import pytest
 from fuelair import air
 from fuelair import fuel as fuels
 from fuelair.air import DryAir
-from fuelair.charge import BurnedGas, compose, drain, enters_as_liquid, heating_value, supply_enthalpy
+from fuelair.charge import BurnedGas, compose, enters_as_liquid, heating_value, held, supply_enthalpy
 from fuelair.gas.complete import composition
 from fuelair.gas.engine import Status, total, weighted
 from fuelair.gas.mixture import mix
-from fuelair.gas.species import FUEL, build
+from fuelair.gas.species import FUEL
 
 AIR = DryAir.from_ratio(3.76)  # 1 O2 + 3.76 N2: easy to follow by hand
 M_O2, M_N2 = 31.998, 28.014  # Cantera's atomic weights
@@ -153,18 +153,11 @@ def test_water_that_cannot_stay_vapour_is_drained_and_balances(gas, make):
     assert kept.receiver_dew_point[0] < 330.0
 
 
-def test_drain_leaves_saturated_gas_and_everything_else():
-    table = build()
-    amounts = np.array(
-        [table.amounts({"N2": 0.8, "H2O": 0.2}), table.amounts({"N2": 0.99, "H2O": 0.01}), table.amounts({"H2O": 1.0})]
-    )
-    before = amounts.copy()
-    taken = drain(table, amounts, np.array([320.0, 320.0, 380.0]), np.full(3, 1e5))
-    x = amounts[0, table.index("H2O")] / amounts[0].sum()
-    assert x * 1e5 == pytest.approx(float(air.water_saturation_pressure(320.0)), rel=1e-12)
-    assert np.array_equal(amounts[1:], before[1:])
-    assert taken[1:].tolist() == [0.0, 0.0]
-    assert taken[0] == pytest.approx((before[0].sum() - amounts[0].sum()) * table.molar_mass[table.index("H2O")], rel=1e-12)
+def test_gas_holds_water_up_to_saturation():
+    water, others, pressure = np.array([0.2, 0.01, 1.0]), np.array([0.8, 0.99, 0.0]), np.full(3, 1e5)
+    kept = held(water, others, np.array([320.0, 320.0, 380.0]), pressure)
+    assert kept[0] / (0.8 + kept[0]) * 1e5 == pytest.approx(float(air.water_saturation_pressure(320.0)), rel=1e-12)
+    assert kept[1:].tolist() == [0.01, 1.0]
 
 
 def test_recirculated_water_condenses_in_the_cooler(gas, make, trap):

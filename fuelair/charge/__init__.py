@@ -5,7 +5,7 @@ Trapped gas holds the fuel when it is admitted before compression (``premixed``,
 ``early-direct``); with ``direct`` the fuel joins at combustion and the trapped gas holds none.
 """
 
-from fuelair.charge.mixing import COLDEST, compose, drain
+from fuelair.charge.mixing import COLDEST, compose, held
 from fuelair.charge.recipe import (
     ADMISSIONS,
     WATER_CP,
@@ -29,9 +29,9 @@ __all__ = [
     "Charge",
     "Recipe",
     "compose",
-    "drain",
     "enters_as_liquid",
     "heating_value",
+    "held",
     "supply_enthalpy",
     "water_enthalpy",
 ]

@@ -8,8 +8,8 @@ import numpy as np
 
 from fuelair.charge import Charge
 from fuelair.cycle.breathing import Exhaust, Settings, blow_down, exhaust
-from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, performance, state_figures
-from fuelair.cycle.stages import Burn, Compression, Expansion, Passage, burn, compress, end_of_constant_volume, expand
+from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, closed_figures, performance, state_figures
+from fuelair.cycle.stages import Burn, ClosedPart, Compression, Expansion, Passage, burn, compress, end_of_constant_volume, expand
 from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, weighted, worst
 
 
@@ -50,20 +50,16 @@ class Run:
     result: CycleResult
 
 
-def passage(engine: Engine, charge: Charge, settings: Settings, model: str) -> Passage:
-    """The charge once through the cycle of one fuel-air model, up to the gas that stays after blowdown.
-
-    Parameters
-    ----------
-    model : a key of `KINDS`.
-    """
+def closed_part(engine: Engine, charge: Charge, settings: Settings, model: str) -> ClosedPart:
+    """Compression, combustion and expansion of the charge by one fuel-air model, a key of `KINDS`."""
     kind, table, volumes = KINDS[model], charge.recipe.table, settings.volumes
     compression = compress(engine, table, charge.trapped, volumes.effective_compression, settings.compression_exponent)
+    reactants = charge.reactants()
     burned = burn(
         engine,
         table,
         compression.state,
-        reactants=charge.reactants(),
+        reactants=reactants,
         injected=charge.injected,
         fuel_enthalpy=charge.injected_enthalpy,
         heat_addition=settings.heat_addition,
@@ -73,10 +69,56 @@ def passage(engine: Engine, charge: Charge, settings: Settings, model: str) -> P
     volume = charge.trapped.v * volumes.exhaust_opening / volumes.intake_closing / (1.0 + charge.injected)
     freeze = settings.freeze_temperature if kind.freezes else None
     release = expand(engine, table, burned.state, volume, kind.expansion, freeze)
-    shifting = kind.expansion == "equilibrium"
-    remaining = blow_down(engine, table, burned.state, release, settings=settings, shifting=shifting)
-    status = worst(charge.status, compression.state.status, burned.status, release.status, remaining.status)
-    return Passage(compression, burned, release, remaining, status)
+    status = worst(charge.status, compression.state.status, burned.status, release.status)
+    return ClosedPart(compression, burned, release, status, reactants)
+
+
+def passage(engine: Engine, charge: Charge, settings: Settings, model: str) -> Passage:
+    """The charge once through the cycle of one fuel-air model, up to the gas that stays after blowdown."""
+    once, shifting = closed_part(engine, charge, settings, model), KINDS[model].expansion == "equilibrium"
+    remaining = blow_down(engine, charge.recipe.table, once.burn.state, once.release, settings=settings, shifting=shifting)
+    status = worst(once.status, remaining.status)
+    return Passage(once.compression, once.burn, once.release, status, once.reactants, remaining)
+
+
+def run_closed(engine: Engine, charge: Charge, settings: Settings, model: str) -> CycleResult:
+    """The figures of the closed part alone, for studies that ask for no others: `CLOSED_FIGURES`.
+
+    Its ledger is that of the closed part; states are taken as the engine gave them.
+    """
+    once = closed_part(engine, charge, settings, model)
+    compression, burned, release = once.compression, once.burn, once.release
+    figures = _performance(charge, settings, once) | closed_figures(
+        compression.state, burned.state, release, cutoff_ratio=burned.volume_ratio, heat_added=charge.heat_added
+    )
+    figures["compression_heat_J_per_kg"] = compression.heat
+    states = (charge.trapped, compression.state, burned.state, release)
+    ledger = _closed_ledger(charge, once, settings, states, release.amounts)
+    status = closed(once.status, ledger)
+    return CycleResult(model, charge.recipe.table, (), figures, ledger, {"limited": _limited(once, settings)}, status)
+
+
+CLOSED_FIGURES = frozenset(
+    [
+        "compression_temperature_K",
+        "compression_pressure_Pa",
+        "peak_temperature_K",
+        "peak_pressure_Pa",
+        "release_temperature_K",
+        "release_pressure_Pa",
+        "cutoff_ratio",
+        "imep_gross_Pa",
+        "imep_net_Pa",
+        "pmep_Pa",
+        "indicated_efficiency",
+        "isfc_kg_per_J",
+        "work_J_per_kg",
+        "heat_supplied_J_per_kg",
+        "heat_added_J_per_kg",
+        "compression_heat_J_per_kg",
+    ]
+)
+"""What `run_closed` gives."""
 
 
 def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headline: bool = True, in_full: bool = True) -> Run:
@@ -97,10 +139,28 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
     compression, burned, release = once.compression, once.burn, once.release
     mass = 1.0 + charge.injected
     out = exhaust(engine, table, once, mass=mass, trapped_volume=charge.trapped.v, settings=settings)
-    work = WorkParts(compression.work, burned.expansion_work * mass, mass * (burned.state.u - release.u))
-    limited = burned.limited & (settings.heat_addition == "pressure-limited")
+    limited = _limited(once, settings)
     named = _points(engine, charge, settings, once, out, kind, limited if in_full else None)
-    figures = performance(
+    figures = _performance(charge, settings, once) | state_figures(
+        named, cutoff_ratio=burned.volume_ratio, heat_added=charge.heat_added, blowdown=out.blowdown_work
+    )
+    figures["compression_heat_J_per_kg"] = compression.heat
+    ledger = _ledger(engine if in_full else None, charge, once, out, settings, headline)
+    flags = {"limited": limited, "back-flow": out.back_flow}
+    result = CycleResult(model, table, named, figures, ledger, flags, closed(worst(once.status, out.leaving.status), ledger))
+    return Run(charge, compression, burned, release, out, result)
+
+
+def _limited(once: ClosedPart, settings: Settings) -> Mask:
+    """Where the pressure limit acts."""
+    return np.asarray(once.burn.limited & (settings.heat_addition == "pressure-limited"))
+
+
+def _performance(charge: Charge, settings: Settings, once: ClosedPart) -> dict[str, Array]:
+    """Work and mean pressures of the closed part."""
+    mass, burned = 1.0 + charge.injected, once.burn
+    work = WorkParts(once.compression.work, burned.expansion_work * mass, mass * (burned.state.u - once.release.u))
+    return performance(
         trapped=charge.trapped,
         volumes=settings.volumes,
         work=work,
@@ -109,12 +169,7 @@ def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headl
         intake_pressure=settings.intake_pressure,
         exhaust_pressure=settings.exhaust_pressure,
         four_stroke=settings.four_stroke,
-    ) | state_figures(named, cutoff_ratio=burned.volume_ratio, heat_added=charge.heat_added, blowdown=out.blowdown_work)
-    figures["compression_heat_J_per_kg"] = compression.heat
-    ledger = _ledger(engine if in_full else None, charge, once, out, settings, headline)
-    flags = {"limited": limited, "back-flow": out.back_flow}
-    result = CycleResult(model, table, named, figures, ledger, flags, closed(worst(once.status, out.leaving.status), ledger))
-    return Run(charge, compression, burned, release, out, result)
+    )
 
 
 def _points(
@@ -138,7 +193,7 @@ def _points(
             engine,
             table,
             compression.state,
-            reactants=charge.reactants(),
+            reactants=once.reactants,
             injected=charge.injected,
             fuel_enthalpy=charge.injected_enthalpy,
             pressure_limit=settings.pressure_limit,
@@ -165,45 +220,57 @@ def _ledger(
     """
     compression, burned, release = once.compression, once.burn, once.release
     table, mass = charge.recipe.table, 1.0 + charge.injected
-    atoms, target = table.atoms, charge.reactants()
-    scale = np.maximum(charge.fuel_mass * charge.lower_heating_value, 1e3)
-    balances = np.column_stack([atoms, table.molar_mass])
-    whole = weighted(target, balances)
-    elements, kilograms = np.zeros(len(mass)), np.zeros(len(mass))
-    biggest = np.max(whole[:, :-1], axis=1)
-    for amounts in _distinct(burned.state.amounts, release.amounts, out.remaining.amounts, out.leaving.amounts):
-        there = weighted(amounts, balances)
-        elements = np.maximum(elements, np.max(np.abs(there - whole)[:, :-1], axis=1) / biggest)
-        kilograms = np.maximum(kilograms, np.abs(there[:, -1] - 1.0))
     first, second, third, fourth, stays, leaves = (
         s if engine is None else engine.state(table, "TV", s.T, s.v, s.amounts)
         for s in (charge.trapped, compression.state, burned.state, release, out.remaining, out.leaving)
     )
-    supplied = charge.injected * charge.injected_enthalpy
-    work = -compression.work + burned.expansion_work * mass + mass * (burned.state.u - release.u)
-    closed_part = first.u + supplied + compression.heat - mass * fourth.u - work
+    compositions = (burned.state.amounts, release.amounts, out.remaining.amounts, out.leaving.amounts)
+    ledger = _closed_ledger(charge, once, settings, (first, second, third, fourth), *compositions)
+    scale = _scale(charge)
     left = mass * fourth.u - out.remaining_mass * stays.u - out.leaving_mass * leaves.h
     v4 = charge.trapped.v * settings.volumes.exhaust_opening / settings.volumes.intake_closing
     leaving = left + settings.exhaust_pressure * (v4 - out.remaining_mass * out.remaining.v)
-    combustion = mass * (third.u + burned.expansion_work) - (second.u + supplied)
-    out_ledger = {
-        "mass": kilograms,
-        "elements": elements,
-        "energy_combustion": combustion / scale,
-        "energy_closed_part": closed_part / scale,
-        "energy_exhaust": leaving / scale,
-    }
-    if settings.compression_exponent is None:
-        out_ledger["entropy_compression"] = second.s / first.s - 1.0
-    out_ledger["entropy_expansion"] = fourth.s / third.s - 1.0
+    ledger["energy_exhaust"] = leaving / scale
     if charge.recipe.from_intake and headline:
         x = charge.residual_fraction
         p_i, p_e = charge.recipe.pressure, settings.exhaust_pressure
         inside = out.remaining.h + out.remaining.v * (p_i - p_e)
         mixed = charge.intake_enthalpy + np.where(x > 0.0, x * inside, 0.0) - first.h
-        out_ledger["energy_intake"] = mixed / scale
-        out_ledger["residual"] = out.remaining_mass - x
-    return out_ledger
+        ledger["energy_intake"] = mixed / scale
+        ledger["residual"] = out.remaining_mass - x
+    return ledger
+
+
+def _closed_ledger(
+    charge: Charge, once: ClosedPart, settings: Settings, states: tuple[GasState, GasState, GasState, GasState], *burned_to: Array
+) -> dict[str, Array]:
+    """The residuals of the closed part from its four states; the compositions ``burned_to`` must hold what burned."""
+    first, second, third, fourth = states
+    table, mass, burned = charge.recipe.table, 1.0 + charge.injected, once.burn
+    whole = weighted(once.reactants, table.balances)
+    elements, kilograms = np.zeros(len(mass)), np.zeros(len(mass))
+    biggest = np.max(whole[:, :-1], axis=1)
+    for amounts in _distinct(*burned_to):
+        there = weighted(amounts, table.balances)
+        elements = np.maximum(elements, np.max(np.abs(there - whole)[:, :-1], axis=1) / biggest)
+        kilograms = np.maximum(kilograms, np.abs(there[:, -1] - 1.0))
+    scale, supplied = _scale(charge), charge.injected * charge.injected_enthalpy
+    work = -once.compression.work + burned.expansion_work * mass + mass * (burned.state.u - once.release.u)
+    ledger = {
+        "mass": kilograms,
+        "elements": elements,
+        "energy_combustion": (mass * (third.u + burned.expansion_work) - (second.u + supplied)) / scale,
+        "energy_closed_part": (first.u + supplied + once.compression.heat - mass * fourth.u - work) / scale,
+    }
+    if settings.compression_exponent is None:
+        ledger["entropy_compression"] = second.s / first.s - 1.0
+    ledger["entropy_expansion"] = fourth.s / third.s - 1.0
+    return ledger
+
+
+def _scale(charge: Charge) -> Array:
+    """Energy of the fuel [J/kg trapped], at least a little."""
+    return np.asarray(np.maximum(charge.fuel_mass * charge.lower_heating_value, 1e3))
 
 
 def _distinct(*arrays: Array) -> list[Array]:

@@ -133,6 +133,18 @@ def state_figures(points: tuple[Point, ...], *, cutoff_ratio: Array, heat_added:
     """Figures read off the named states (N,); heat and blowdown energy in J/kg trapped."""
     at = {p.name: p for p in points}
     compressed, burned, release = (at[k].state for k in ("compressed", "burned", "release"))
+    return closed_figures(compressed, burned, release, cutoff_ratio=cutoff_ratio, heat_added=heat_added) | {
+        "exhaust_temperature_K": at["exhaust"].state.T,
+        "blowdown_temperature_K": at["blown-down"].state.T,
+        "residual_fraction": at["blown-down"].mass,
+        "blowdown_energy_J_per_kg": blowdown,
+    }
+
+
+def closed_figures(
+    compressed: GasState, burned: GasState, release: GasState, *, cutoff_ratio: Array, heat_added: Array
+) -> dict[str, Array]:
+    """Those of them that the closed part of the cycle has."""
     return {
         "compression_temperature_K": compressed.T,
         "compression_pressure_Pa": compressed.p,
@@ -140,12 +152,8 @@ def state_figures(points: tuple[Point, ...], *, cutoff_ratio: Array, heat_added:
         "peak_pressure_Pa": burned.p,
         "release_temperature_K": release.T,
         "release_pressure_Pa": release.p,
-        "exhaust_temperature_K": at["exhaust"].state.T,
-        "blowdown_temperature_K": at["blown-down"].state.T,
         "cutoff_ratio": cutoff_ratio,
-        "residual_fraction": at["blown-down"].mass,
         "heat_added_J_per_kg": heat_added,
-        "blowdown_energy_J_per_kg": blowdown,
     }
 
 

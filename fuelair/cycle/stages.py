@@ -62,14 +62,21 @@ class Burn:
 
 
 @dataclass(frozen=True, slots=True)
-class Passage:
-    """The gas once through the cycle: end of compression, combustion, release, and what stays after blowdown."""
+class ClosedPart:
+    """The gas between intake closing and exhaust opening: end of compression, combustion, release; what burned (N, S)."""
 
     compression: Compression
     burn: Burn
     release: GasState
-    remaining: GasState
     status: Codes
+    reactants: Array
+
+
+@dataclass(frozen=True, slots=True)
+class Passage(ClosedPart):
+    """The gas once through the cycle: the closed part, and what stays after blowdown."""
+
+    remaining: GasState
 
 
 def compress(

@@ -31,9 +31,7 @@ def element_amounts(table: SpeciesTable, amounts: Array) -> Array:
 
 def oxygen_excess(table: SpeciesTable, amounts: Array) -> Array:
     """Oxygen atoms beyond those that complete combustion takes [kmol/kg]; negative when rich."""
-    b = element_amounts(table, amounts)
-    need = 2.0 * _of(table, b, "C") + 0.5 * _of(table, b, "H") + 2.0 * _of(table, b, "S")
-    return np.asarray(_of(table, b, "O") - need)
+    return weighted(amounts, table.oxygen_excess)[:, 0]
 
 
 def solid_carbon(table: SpeciesTable, amounts: Array) -> Mask:

@@ -151,10 +151,17 @@ def weighted(amounts: Array, weights: Array) -> Array:
     """
     if len(amounts) * weights.shape[-1] < LOOP_FROM:
         return np.asarray(np.cumsum(amounts[:, :, None] * weights, axis=1)[:, -1])
-    out = amounts[:, 0, None] * weights[..., 0, :]
-    for j in range(1, amounts.shape[1]):
-        out += amounts[:, j, None] * weights[..., j, :]
-    return np.asarray(out)
+    if weights.ndim == 3:
+        out = amounts[:, 0, None] * weights[..., 0, :]
+        for j in range(1, amounts.shape[1]):
+            out += amounts[:, j, None] * weights[..., j, :]
+        return np.asarray(out)
+    rows = np.zeros((weights.shape[1], len(amounts)))  # a sum a row, so that each step runs through memory in one piece
+    for j, row in enumerate(weights):
+        column = np.ascontiguousarray(amounts[:, j])
+        for k in np.flatnonzero(row):
+            rows[k] += column * row[k]
+    return rows.T
 
 
 def worst(*status: Codes) -> Codes:

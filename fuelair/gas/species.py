@@ -100,6 +100,17 @@ class SpeciesTable:
         return np.where(self.inert[:, None], 0.0, self.atoms)
 
     @cached_property
+    def oxygen_excess(self) -> Array:
+        """(S, 1) oxygen atoms beyond those that complete combustion of the molecule takes; zero for inert species."""
+        need = {"O": 1.0, "C": -2.0, "H": -0.5, "S": -2.0}
+        return np.asarray(self.reactive_atoms @ np.array([[need.get(e, 0.0)] for e in self.elements]))
+
+    @cached_property
+    def balances(self) -> Array:
+        """(S, E + 1) atoms, and molar mass [kg/kmol], side by side."""
+        return np.column_stack([self.atoms, self.molar_mass])
+
+    @cached_property
     def digest(self) -> str:
         """Hash of names, composition and data; equal tables have equal digests."""
         h = hashlib.sha256("|".join(self.names + self.elements).encode())

@@ -177,6 +177,9 @@ class Study:
         engine = of_model(engines, prepared.headline)
         with np.errstate(divide="ignore", invalid="ignore"):
             charge = trap(prepared, engine)
+            if self._need.closed_part_only and self.model in (None, prepared.headline):
+                alone = fuel_air.run_closed(engine, charge, prepared.settings, prepared.headline)
+                return alone.figures, alone.status
             headline = fuel_air.run(engine, charge, prepared.settings, prepared.headline, in_full=False)
             result = result_of(self.model or prepared.headline, prepared, engines, headline, in_full=False)
             found = dict(result.figures)

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import Final
 
 from fuelair.case.fields import nearest
+from fuelair.cycle.fuel_air import CLOSED_FIGURES
 from fuelair.errors import InputError, Problem
 
 MODEL_FIGURES: Final = (
@@ -90,18 +91,19 @@ _UNITS: Final = ("K", "Pa", "J_per_kg", "kg_per_J", "W", "kg_per_s", "kg")
 
 @dataclass(frozen=True, slots=True)
 class Need:
-    """Which groups of figures have to be computed beside the model's own."""
+    """Which groups of figures have to be computed beside the model's own, and whether blowdown and exhaust are wanted at all."""
 
     engine: bool
     exhaust: bool
     flame: bool
     charge: bool
+    closed_part_only: bool
 
     @classmethod
     def of(cls, names: Sequence[str]) -> Need:
         """The groups that hold these names."""
         engine, exhaust, charge = (bool({*names} & {*g}) for g in (ENGINE_FIGURES, EXHAUST_FIGURES, CHARGE_FIGURES))
-        return cls(engine, exhaust, FLAME in names, charge)
+        return cls(engine, exhaust, FLAME in names, charge, {*names} <= CLOSED_FIGURES)
 
 
 def resolve(name: str) -> str:
