@@ -10,7 +10,7 @@ import numpy as np
 from fuelair.air import DryAir
 from fuelair.fuel import Fuel
 from fuelair.gas.complete import oxygen_excess
-from fuelair.gas.engine import Array, Index, Mask
+from fuelair.gas.engine import Array, Index, Mask, taken
 from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL, T_STANDARD, SpeciesTable
 
@@ -68,7 +68,7 @@ class Recipe:
 
     def rows(self, index: Index) -> Recipe:
         """The recipe of some rows only."""
-        own: dict[str, Any] = {k: v[index] for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
+        own: dict[str, Any] = {k: taken(v, index) for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
         return replace(self, **own)
 
     def with_equivalence_ratio(self, value: Array) -> Recipe:

@@ -9,7 +9,7 @@ import numpy as np
 from fuelair.air import water_dew_point, water_saturation_pressure
 from fuelair.charge.recipe import Recipe, heating_value, pure
 from fuelair.gas.complete import oxygen_excess
-from fuelair.gas.engine import Array, Codes, GasState, Index
+from fuelair.gas.engine import Array, Codes, GasState, Index, taken
 from fuelair.gas.species import FUEL, UNBURNED, SpeciesTable
 
 
@@ -38,14 +38,18 @@ class BurnedGas:
         """Amounts, fraction, enthalpy and volume."""
         return self.amounts, self.fraction, self.h, self.v
 
-    def put(self, index: Index, some: BurnedGas) -> None:
-        """Write the burned gas of some rows, in place."""
-        for mine, its in zip(self.fields(), some.fields(), strict=True):
+    def replaced(self, index: Index, some: BurnedGas) -> BurnedGas:
+        """The same with the burned gas of some rows, in ascending order, as in ``some``."""
+        if len(index) == len(self.fraction):
+            return some
+        fields = [values.copy() for values in self.fields()]
+        for mine, its in zip(fields, some.fields(), strict=True):
             mine[index] = its
+        return BurnedGas(*fields)
 
     def rows(self, index: Index) -> BurnedGas:
-        """The burned gas of some rows only."""
-        return BurnedGas(*(values[index] for values in self.fields()))
+        """The burned gas of some rows only, in ascending order."""
+        return BurnedGas(*(taken(values, index) for values in self.fields()))
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,7 +140,9 @@ class Charge:
         out[:, table.index("H2O")] += self.water_injected / table.molar_mass[table.index("H2O")]
         out[:, burns] = fuel * recipe.combustion_efficiency
         out[:, rests] += fuel * (1.0 - recipe.combustion_efficiency)
-        return np.asarray(out / (1.0 + self.injected)[:, None])
+        if self.injected.any():
+            out /= (1.0 + self.injected)[:, None]
+        return out
 
     def oxygen_excess_ratio(self) -> Array:
         """Free oxygen trapped, that of recirculated and residual gas included, over what all fresh fuel takes [-]."""

@@ -19,7 +19,7 @@ from fuelair.charge import BurnedGas, Charge, Recipe, compose
 from fuelair.cycle.geometry import Volumes
 from fuelair.cycle.stages import HeatAddition, Passage, freeze_composition, replaced
 from fuelair.gas.complete import composition
-from fuelair.gas.engine import Array, Engine, GasState, Index, Mask, Status, total
+from fuelair.gas.engine import Array, Engine, GasState, Index, Mask, Status, taken, total
 from fuelair.gas.mixture import mix
 from fuelair.gas.species import FUEL, SpeciesTable
 from fuelair.roots import bracketed
@@ -67,7 +67,7 @@ class Settings:
 
     def rows(self, index: Index) -> Settings:
         """The settings of some rows only."""
-        own: dict[str, Any] = {k: v[index] for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
+        own: dict[str, Any] = {k: taken(v, index) for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
         return replace(self, volumes=self.volumes.rows(index), **own)
 
 
@@ -205,7 +205,7 @@ def _fixed_point(recipe: Recipe, engine: Engine, settings: Settings, cycle: Cycl
         recipe = recipe.with_equivalence_ratio(np.full(n, 0.5))
     phi = recipe.equivalence_ratio.copy()
     left = np.arange(n) if returns or fuel_mass is not None else np.arange(0)
-    before = _Before(np.zeros(n), burned.rows(left), burned.rows(left)) if returns else None
+    before = _Before(np.zeros(n), burned, burned) if returns else None
     for _ in range(FIXED_POINT_STEPS):
         if not len(left):
             break
@@ -220,11 +220,11 @@ def _fixed_point(recipe: Recipe, engine: Engine, settings: Settings, cycle: Cycl
         moves = np.isfinite(change)
         rows, going = left[moves], moves & (change > FIXED_POINT_TOLERANCE)
         phi[rows] = ratio[moves]
-        burned.put(rows, new.rows(np.flatnonzero(moves)))
+        burned = burned.replaced(rows, new.rows(np.flatnonzero(moves)))
         left = left[going]
         if before is not None and len(left):
             kept = np.flatnonzero(going)
-            burned.put(left, before.better(left, change[kept], old.rows(kept), new.rows(kept)))
+            burned = burned.replaced(left, before.better(left, change[kept], old.rows(kept), new.rows(kept)))
     charge = compose(recipe.with_equivalence_ratio(phi), engine, burned)
     status = charge.status.copy()
     status[left] = np.where(status[left] == Status.OK, np.int8(Status.NOT_CONVERGED), status[left])
@@ -242,15 +242,16 @@ class _Before:
     def better(self, rows: Index, change: Array, at: BurnedGas, to: BurnedGas) -> BurnedGas:
         """Where to go on from instead of ``to``: the least change that a mix with the step before promises."""
         old_at, old_to = self.at.rows(rows), self.to.rows(rows)
-        step, last = _scaled(to, at), _scaled(old_to, old_at)
-        turn = step - last
+        along = across = np.zeros(len(rows))
+        for step, last in zip(_scaled(to, at), _scaled(old_to, old_at), strict=True):
+            turn = step - last
+            along, across = along + step * turn, across + turn * turn
         with np.errstate(divide="ignore", invalid="ignore"):
-            share = total(step * turn) / total(turn * turn)
+            share = along / across
         shrinks = (change < self.change[rows]) & np.isfinite(share)
         share = np.where(shrinks, np.clip(share, -LARGEST_MIX, LARGEST_MIX), 0.0)
         self.change[rows] = change
-        self.at.put(rows, at)
-        self.to.put(rows, to)
+        self.at, self.to = self.at.replaced(rows, at), self.to.replaced(rows, to)
         mixed = BurnedGas(
             *(new - _along(share, new) * (new - old) for new, old in zip(to.fields(), old_to.fields(), strict=True))
         )
@@ -258,12 +259,10 @@ class _Before:
         return mixed
 
 
-def _scaled(to: BurnedGas, at: BurnedGas) -> Array:
-    """Difference of two burned gases as rows of comparable numbers."""
+def _scaled(to: BurnedGas, at: BurnedGas) -> tuple[Array, Array, Array]:
+    """Difference of two burned gases in comparable numbers; their composition goes along with these."""
     with np.errstate(divide="ignore", invalid="ignore"):
-        moved = (to.amounts - at.amounts) / total(to.amounts)[:, None]
-        rest = [(to.h - at.h) / (np.abs(to.h) + 1e5), to.v / at.v - 1.0, to.fraction - at.fraction]
-    return np.column_stack([moved, *rest])
+        return (to.h - at.h) / (np.abs(to.h) + 1e5), to.v / at.v - 1.0, to.fraction - at.fraction
 
 
 def _along(share: Array, values: Array) -> Array:

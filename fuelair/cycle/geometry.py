@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fuelair.gas.engine import Array, Index
+from fuelair.gas.engine import Array, Index, taken
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,7 +33,7 @@ class Volumes:
 
     def rows(self, index: Index) -> Volumes:
         """The volumes of some rows only."""
-        return Volumes(*(getattr(self, name)[index] for name in self.__slots__))
+        return Volumes(*(taken(getattr(self, name), index) for name in self.__slots__))
 
     @property
     def largest(self) -> Array:

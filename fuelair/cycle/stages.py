@@ -14,7 +14,7 @@ from typing import Literal
 import numpy as np
 
 from fuelair.gas.complete import oxygen_excess
-from fuelair.gas.engine import Array, Chemistry, Codes, Engine, GasState, Index, Mask, Status, worst
+from fuelair.gas.engine import Array, Chemistry, Codes, Engine, GasState, Index, Mask, Status, taken, worst
 from fuelair.gas.graphite import carbon_activity
 from fuelair.gas.species import FUEL, UNBURNED, SpeciesTable
 from fuelair.roots import bracketed
@@ -139,7 +139,7 @@ def burn(
     else:
 
         def at_volume(rows: Index) -> GasState:
-            return engine.state(table, "UV", u2[rows], v2[rows], reactants[rows], chemistry)
+            return engine.state(table, "UV", taken(u2, rows), taken(v2, rows), taken(reactants, rows), chemistry)
 
         limited = np.zeros(n, np.bool_)
         if heat_addition == "constant-volume":
@@ -222,13 +222,16 @@ def freeze_composition(engine: Engine, table: SpeciesTable, burned: GasState, re
     The equilibrium at ``T`` on the isentrope; burned gas already colder keeps its own composition,
     released gas still hotter its own.
     """
-    out = released.amounts.copy()
     cold = burned.T <= T
-    out[cold] = burned.amounts[cold]
+    out = np.where(cold[:, None], burned.amounts, released.amounts) if cold.any() else released.amounts
     crosses = np.flatnonzero(~cold & (released.T < T))
     if len(crosses):
-        at = engine.state(table, "ST", burned.s[crosses], T[crosses], burned.amounts[crosses], "equilibrium")
+        s, limit, amounts = (taken(values, crosses) for values in (burned.s, T, burned.amounts))
+        at = engine.state(table, "ST", s, limit, amounts, "equilibrium")
         good = at.status != Status.NO_SOLUTION
+        if good.all() and len(crosses) == len(T):
+            return at.amounts
+        out = out.copy()
         out[crosses[good]] = at.amounts[good]
     return out
 
@@ -258,7 +261,7 @@ def carbon_frozen(engine: Engine, table: SpeciesTable, burned: GasState, release
 
 def rows_of(state: GasState, rows: Index) -> GasState:
     """The states of some rows."""
-    return GasState(**{field.name: getattr(state, field.name)[rows] for field in fields(GasState)})
+    return GasState(**{field.name: taken(getattr(state, field.name), rows) for field in fields(GasState)})
 
 
 def replaced(state: GasState, where: Mask, compute: Callable[[Index], GasState]) -> GasState:

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import IntEnum
-from typing import Literal, Protocol
+from typing import Any, Literal, Protocol
 
 import numpy as np
 import numpy.typing as npt
@@ -133,6 +133,11 @@ class Engine(Protocol):
         a need; results must not depend on it beyond the tolerance.
         """
         ...
+
+
+def taken(values: npt.NDArray[Any], rows: Index) -> npt.NDArray[Any]:
+    """``values[rows]`` for ascending ``rows``, without a copy where that is all of them; not to be written to."""
+    return values if len(rows) == len(values) else values[rows]
 
 
 def total(amounts: Array) -> Array:

@@ -29,7 +29,7 @@ from fuelair.prepare import Prepared, headline_model, prepare
 from fuelair.study import figures
 from fuelair.study.columns import Column, Values, read
 
-CHUNK = 4096
+CHUNK = 8192
 """Rows computed side by side."""
 Index = npt.NDArray[np.intp]
 Labels = dict[str, Any]

@@ -26,7 +26,7 @@ from fuelair.gas.species import build
 from fuelair.study.batch import Study
 
 MODES = ("constant-volume", "constant-pressure", "pressure-limited")
-LIMIT = 90e5
+LIMIT = 300e5
 STATES, PEER_STATES, PEER_CYCLES, CYCLES = 20000, 200, 60, 10000
 NAMES = (
     "compression_temperature_K", "compression_pressure_Pa", "peak_temperature_K", "peak_pressure_Pa", "release_temperature_K",
@@ -65,9 +65,9 @@ def study(mode: str, closed: bool = False) -> Study:
 
 
 def columns(of: Study, n: int) -> dict[str, np.ndarray]:
-    """Random rows, the same for ours and the peers."""
+    """Random rows of the compression-ignition range, the same for ours and the peers."""
     rng = np.random.default_rng(5)
-    low, high = (0.5, 8.0, 0.9e5, 300.0), (1.1, 14.0, 1.6e5, 370.0)
+    low, high = (0.2, 12.0, 0.9e5, 300.0), (1.05, 22.0, 3.5e5, 370.0)
     return {key: rng.uniform(a, b, n) for key, a, b in zip(of.keys, low, high, strict=True)}
 
 

@@ -151,7 +151,7 @@ def _fixed(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array, 
 
 def _equilibrium(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: Array) -> GasState:
     numbers, n = constants(table), len(x)
-    out, found = np.full((8, n), np.nan), amounts.copy()
+    out, found = np.empty((8, n)), np.empty_like(amounts)
     code, steps = np.full(n, rows.WIDE, np.int8), np.zeros(n, np.int32)
     if numbers.whole:
         nested.solve(
@@ -162,6 +162,8 @@ def _equilibrium(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: A
     else:
         code[solid_carbon(table, amounts)] = rows.SOOT
     status = ENDS[code]
+    unsolved = np.flatnonzero(code != rows.DONE)
+    out[:, unsolved], found[unsolved] = np.nan, amounts[unsolved]
     T, p, v, u, h, s, cp, sound = out
     state = GasState(T=T, p=p, v=v, u=u, h=h, s=s, cp=cp, sound=sound, amounts=found, status=status, iterations=steps)
     low, high = _limits(numbers, found)

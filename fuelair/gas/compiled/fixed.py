@@ -42,8 +42,13 @@ def _mix(w: Array, amounts: Array, first: int, size: int, mixing: Array, limits:
     for lane in range(LANES):
         w[MIXING * LANES + lane], w[T_MIN * LANES + lane], w[T_MAX * LANES + lane] = 0.0, 0.0, 1e9
     for j in range(amounts.shape[1]):
+        most = 0.0
         for lane in range(size):
-            w[X * LANES + lane] = max(amounts[first + lane, j], 0.0)
+            n = max(amounts[first + lane, j], 0.0)
+            w[X * LANES + lane] = n
+            most = max(most, n)
+        if most == 0.0:
+            continue
         low, high = limits[0, j], limits[1, j]
         for c in range(WIDTH):
             weight = mixing[j, c]
