@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import datetime
 import os
+import platform
 import re
 import subprocess
 import sys
@@ -40,6 +42,20 @@ def speed() -> str:
     return f"**{run('validation/speed/cold_start.py').strip().splitlines()[-1]}**"
 
 
+def studies() -> str:
+    """What the benchmark of states, cycles and studies prints, with the machine and the date."""
+    place = f"{os.cpu_count()} cores, {processor()}, Python {platform.python_version()}, {datetime.date.today()}"
+    return "\n".join(["```text", *run("validation/speed/studies.py").strip().splitlines(), place, "```"])
+
+
+def processor() -> str:
+    """Name of the processor, as the system gives it."""
+    for line in Path("/proc/cpuinfo").read_text(encoding="utf-8").splitlines():
+        if line.startswith("model name"):
+            return line.partition(":")[2].strip()
+    return platform.processor()
+
+
 def fill(text: str, name: str, body: str) -> str:
     """Replace what stands between the marks of a part."""
     return re.sub(rf"(<!-- shown:{name} -->\n).*?(<!-- end -->)", lambda m: m[1] + body + "\n" + m[2], text, flags=re.S)
@@ -53,6 +69,7 @@ def main() -> None:
     text = fill(text, "validation", validation())
     if "--speed" in sys.argv:
         text = fill(text, "speed", speed())
+        text = fill(text, "studies", studies())
     path.write_text(text, encoding="utf-8")
 
 

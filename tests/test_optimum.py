@@ -245,3 +245,17 @@ def test_the_verb_with_limits(tmp_path: Path) -> None:
     out = CliRunner().invoke(app, ["find", str(path), *vary, "--least", "isfc", "--hold", "peak_pressure<=20 bar", "--json", "-"])
     assert out.exit_code == 3
     assert json.loads(out.stdout)["feasible"] is False
+
+
+def test_a_figure_that_lies_flat_on_its_limit_does_not_stop_the_search() -> None:
+    """As peak pressure does where combustion is held to a pressure: the other limit decides, x + y = 1 at x = 0.5."""
+
+    def held(x):
+        return np.minimum(10.0 * total(x), 2.0)
+
+    limits = [Limit(1, True, 2.0), Limit(2, True, 1.0)]
+    found = search(columns(product, held, total), [0.2, 0.2], [2, 2], limits, most=True).best
+    assert found is not None
+    assert found.feasible
+    assert found.x == pytest.approx([0.5, 0.5], abs=1e-5)
+    assert found.agree == found.starts

@@ -22,6 +22,8 @@ STARTS, APART = 6, 0.1
 """Starts of the polish, and how far apart they are at least in one scaled variable."""
 DRAWN_IN = 1e-8
 """Share of its size by which the polish holds a limit tighter than it is, so that the point found keeps it."""
+FLAT = 1e-12
+"""Room up to which a figure counts as lying on its limit."""
 KEPT = 1e-9
 """Miss, over the size of the limit, at which a limit still counts as kept."""
 AT_LIMIT, AT_END = 1e-6, 1e-9
@@ -144,7 +146,7 @@ def _polished(problem: Scaled, start: Array) -> Array:
         u = _slsqp(
             lambda p: problem.values(p)[0],
             lambda p: problem.gradient(p)[0],
-            (lambda p: problem.values(p)[1:] - DRAWN_IN) if limits else None,
+            (lambda p: _drawn_in(problem.values(p)[1:])) if limits else None,
             lambda p: problem.gradient(p)[1:],
             u,
             np.ones(len(u)),
@@ -157,6 +159,14 @@ def _polished(problem: Scaled, start: Array) -> Array:
     return u
 
 
+def _drawn_in(left: Array) -> Array:
+    """Room that the limits leave, a little less of it; where a figure lies flat on its limit, it keeps it as it is.
+
+    Peak pressure held at a pressure limit does: drawn in there, no step could mend it.
+    """
+    return np.where(np.abs(left) <= FLAT, FLAT, left - DRAWN_IN)
+
+
 def _nearest(problem: Scaled, start: Array) -> Array:
     """The point whose largest relative miss is least: minimise t with every limit at least -t."""
     size, limits = len(start), len(problem.bounds)
@@ -165,7 +175,7 @@ def _nearest(problem: Scaled, start: Array) -> Array:
     found = _slsqp(
         lambda p: float(p[-1]),
         lambda p: np.eye(size + 1)[-1],
-        lambda p: problem.values(p[:-1])[1:] + p[-1] - DRAWN_IN,
+        lambda p: _drawn_in(problem.values(p[:-1])[1:] + p[-1]),
         lambda p: np.concatenate([problem.gradient(p[:-1])[1:], slack], axis=1),
         np.append(start, worst),
         np.append(np.ones(size), max(10.0 * worst, 1.0)),
