@@ -174,7 +174,7 @@ def test_code_compiled_now_and_code_from_disk_give_the_same_bits(tmp_path):
 
 
 ENGINE_BOX = {"T": (1000.0, 3200.0), "p": (1e5, 300e5), "phi": (0.2, 1.6)}
-STEPS = {"TP": 3.3, "TV": 3.3, "HP": 4.9, "UV": 4.9, "SP": 5.2, "SV": 5.2, "ST": 5.5}
+STEPS = {"TP": 3.3, "TV": 3.3, "HP": 3.9, "UV": 3.9, "SP": 4.1, "SV": 4.1, "ST": 5.5}
 
 
 @pytest.mark.parametrize("pair", PAIRS)
@@ -200,7 +200,9 @@ VECTOR = {
     steps.heat_balance: lambda: (_lanes(), True, 0.0),
     steps.move: lambda: (_lanes(), True, True),
     steps.foresee: lambda: (_lanes(),),
-    guess._first_guess: lambda: (np.ones(rows.LOADED * rows.BLOCK), 1.0),
+    guess._size: lambda: (np.ones(rows.LOADED * rows.BLOCK), 1.0),
+    guess._temperature: lambda: (np.ones(rows.LOADED * rows.BLOCK), np.zeros(36), True, 1.0, 0.0),
+    guess._first_guess: lambda: (np.ones(rows.LOADED * rows.BLOCK),),
     guess._two_constants: lambda: (np.ones(rows.LOADED * rows.BLOCK), np.zeros(18 * rows.REACTIONS)),
     guess._basis: lambda: (np.ones(rows.LOADED * rows.BLOCK), np.ones((7, 18))),
     fixed._thermal: lambda: (np.ones(fixed.ROWS * vector_math.LANES),),

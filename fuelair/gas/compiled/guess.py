@@ -31,17 +31,22 @@ from fuelair.gas.compiled.rows import (
     START,
     STAYS,
     SUMS,
+    SV,
     T_,
     TARGET,
     TINY,
     TP,
     TV,
     UNFIT,
+    UV,
     Z,
 )
 from fuelair.gas.compiled.vector_math import exp, log, ranged
 from fuelair.gas.complete import CARBON_LIMIT
 from fuelair.gas.engine import Array, Codes
+
+DISSOCIATES, SHARE_ABOVE = 2500.0, 0.6
+LOWEST_START, HIGHEST_START = 250.0, 4500.0
 
 
 @vectorised
@@ -77,22 +82,28 @@ def _two_constants(q: Array, tab: Array) -> None:
 
 
 @vectorised
-def _first_guess(q: Array, at_pressure: float) -> None:
-    """First ln o and ln s from complete combustion.
+def _size(q: Array, at_pressure: float) -> None:
+    """Fixed species, and at a pressure the amount of gas in ln s, from complete combustion."""
+    for k in range(BLOCK):
+        x1, x2, x3 = q[STAYS * BLOCK + k], q[(STAYS + 1) * BLOCK + k], q[(STAYS + 2) * BLOCK + k]
+        q[FIXED * BLOCK + k] = x1 + x2 + x3
+        q[FIXED_LOG * BLOCK + k] = x1 * log(x1 + TINY) + x2 * log(x2 + TINY) + x3 * log(x3 + TINY)
+        whole = q[C_ * BLOCK + k] + 0.5 * (q[H_ * BLOCK + k] + q[N_ * BLOCK + k] + max(q[E_ * BLOCK + k], 0.0)) + x1 + x2 + x3
+        q[SIGMA * BLOCK + k] += at_pressure * log(whole + TINY)
+
+
+@vectorised
+def _first_guess(q: Array) -> None:
+    """First ln o from complete combustion, and the potentials of hydrogen and nitrogen that go with it.
 
     Lean: the oxygen left over; rich: the water-gas quadratic; near stoichiometric the cube root that dissociation
     of carbon dioxide and water to equal parts leaves.
     """
     for k in range(BLOCK):
         carbon, half, nitrogen = q[C_ * BLOCK + k], 0.5 * q[H_ * BLOCK + k], q[N_ * BLOCK + k]
-        excess, sigma = q[E_ * BLOCK + k], q[SIGMA * BLOCK + k]
-        x1, x2, x3 = q[STAYS * BLOCK + k], q[(STAYS + 1) * BLOCK + k], q[(STAYS + 2) * BLOCK + k]
+        excess, per_s = q[E_ * BLOCK + k], exp(-q[SIGMA * BLOCK + k])
         k1, k2 = q[ETA * BLOCK + k], q[NU * BLOCK + k]
-        fixed = x1 + x2 + x3
         spare, lack = max(excess, 0.0), max(-excess, 0.0)
-        whole = carbon + half + 0.5 * nitrogen + fixed + 0.5 * spare + TINY
-        sigma = sigma + at_pressure * log(whole)
-        per_s = exp(-sigma)
         near = exp(log(0.5 * (carbon / k1 + half / k2) * per_s + TINY) / 3.0)
         lean = math.sqrt(0.5 * spare * per_s)
         a, b, c = lack * k1 * k2 + TINY, lack * (k1 + k2) - carbon * k2 - half * k1, min(lack - carbon - half, 0.0)
@@ -103,9 +114,6 @@ def _first_guess(q: Array, at_pressure: float) -> None:
         rich = rich_up if b > 0.0 else rich_down
         o = max(lean, near) if excess >= 0.0 else min(rich, near)
         o = min(max(o, 1e-140), 1e15)
-        q[FIXED * BLOCK + k] = fixed
-        q[FIXED_LOG * BLOCK + k] = x1 * log(x1 + TINY) + x2 * log(x2 + TINY) + x3 * log(x3 + TINY)
-        q[SIGMA * BLOCK + k] = sigma
         q[Z * BLOCK + k] = log(o)
         q[ETA * BLOCK + k] = math.sqrt(half * per_s / (1.0 + k2 * o))
         q[NU * BLOCK + k] = math.sqrt(0.5 * nitrogen * per_s)
@@ -122,6 +130,52 @@ def _basis(q: Array, base: Array) -> None:
             value = q[C_ * BLOCK + k] * b0 + q[H_ * BLOCK + k] * b1 + q[OC * BLOCK + k] * b2 + q[N_ * BLOCK + k] * b3
             x1, x2, x3 = q[STAYS * BLOCK + k], q[(STAYS + 1) * BLOCK + k], q[(STAYS + 2) * BLOCK + k]
             q[row + k] = value + x1 * b4 + x2 * b5 + x3 * b6
+
+
+@vectorised
+def _temperature(q: Array, tab: Array, entropy: bool, per_volume: float, of_volume: float) -> None:
+    """A better first temperature: one step from `START` at the composition of complete combustion.
+
+    ``per_volume`` 1 where the volume is given; ``of_volume`` 1 where the energy is the internal one. Above `DISSOCIATES` the gas
+    stays behind complete combustion; `SHARE_ABOVE` of the way is about what is left.
+    """
+    log_start = math.log(START)
+    c1, h1, s1 = ranged(
+        tab[0], tab[1], tab[2], tab[3], tab[4], tab[5], tab[6], tab[7], tab[8],
+        tab[9], tab[10], tab[11], tab[12], tab[13], tab[14], tab[15], tab[16], tab[17], START, log_start,
+    )  # fmt: skip
+    c2, h2, s2 = ranged(
+        tab[18], tab[19], tab[20], tab[21], tab[22], tab[23], tab[24], tab[25], tab[26],
+        tab[27], tab[28], tab[29], tab[30], tab[31], tab[32], tab[33], tab[34], tab[35], START, log_start,
+    )  # fmt: skip
+    for k in range(BLOCK):
+        carbon, half, nitrogen = q[C_ * BLOCK + k], 0.5 * q[H_ * BLOCK + k], 0.5 * q[N_ * BLOCK + k]
+        spare, lack = 0.5 * max(q[E_ * BLOCK + k], 0.0), max(-q[E_ * BLOCK + k], 0.0)
+        fixed, sigma = q[FIXED * BLOCK + k], q[SIGMA * BLOCK + k]
+        burned = max(1.0 - lack / (carbon + half + TINY), 0.0)
+        n1, n2, n3, n4 = carbon * burned, half * burned, carbon * (1.0 - burned), half * (1.0 - burned)
+        moles = carbon + half + nitrogen + spare + fixed
+        B = BASE * BLOCK + k
+        cp, h, s = ranged(
+            q[B], q[B + BLOCK], q[B + 2 * BLOCK], q[B + 3 * BLOCK], q[B + 4 * BLOCK], q[B + 5 * BLOCK],
+            q[B + 6 * BLOCK], q[B + 7 * BLOCK], q[B + 8 * BLOCK], q[B + 9 * BLOCK], q[B + 10 * BLOCK], q[B + 11 * BLOCK],
+            q[B + 12 * BLOCK], q[B + 13 * BLOCK], q[B + 14 * BLOCK], q[B + 15 * BLOCK], q[B + 16 * BLOCK], q[B + 17 * BLOCK],
+            START, log_start,
+        )  # fmt: skip
+        heat = cp + n1 * c1 + n2 * c2 - per_volume * moles
+        energy = START * (h + n1 * h1 + n2 * h2 - of_volume * moles)
+        mixing = n1 * log(n1 + TINY) + n2 * log(n2 + TINY) + n3 * log(n3 + TINY) + n4 * log(n4 + TINY)
+        mixing = mixing + nitrogen * log(nitrogen + TINY) + spare * log(spare + TINY) + q[FIXED_LOG * BLOCK + k]
+        disorder = s + n1 * s1 + n2 * s2 - mixing + moles * sigma
+        target = q[TARGET * BLOCK + k]
+        by_energy = START + (target - energy) / heat
+        by_entropy = START * exp(min(max((target - disorder) / heat, -2.0), 1.0))
+        T = by_entropy if entropy else by_energy
+        T = T if T < DISSOCIATES else DISSOCIATES + SHARE_ABOVE * (T - DISSOCIATES)
+        T = min(max(T, LOWEST_START), HIGHEST_START)
+        q[T_ * BLOCK + k] = T
+        by_volume = q[SIZE * BLOCK + k] - log(T)
+        q[SIGMA * BLOCK + k] = by_volume if per_volume > 0.0 else sigma
 
 
 @inlined
@@ -152,8 +206,11 @@ def load(
         q[T_ * BLOCK + k] = T
         q[TARGET * BLOCK + k] = x[i] / gas_constant if fine else 1.0
         q[SIZE * BLOCK + k] = 0.0 if pair == ST else size_
-        # ln s; at a pressure less the amount of gas, which `_first_guess` adds
+        # ln s; at a pressure less the amount of gas, which `_size` adds
         q[SIGMA * BLOCK + k] = -size_ if at_pressure else (-math.log(5e6 / p0) if pair == ST else size_ - math.log(T))
-    _two_constants(q, tab)
-    _first_guess(q, 1.0 if at_pressure or pair == ST else 0.0)
+    _size(q, 1.0 if at_pressure or pair == ST else 0.0)
     _basis(q, base)
+    if pair in (HP, UV, SP, SV):
+        _temperature(q, tab, pair in (SP, SV), 0.0 if at_pressure else 1.0, 1.0 if pair == UV else 0.0)
+    _two_constants(q, tab)
+    _first_guess(q)
