@@ -59,6 +59,10 @@ class Prepared:
         return len(self.recipe)
 
 
+OUTSIDE = ("charge.relative_humidity", "charge.ambient_temperature", "charge.ambient_pressure")
+"""Keys of the air outside."""
+
+
 class _Values:
     """Values of a case as arrays (N,), columns in place of what the case says."""
 
@@ -69,7 +73,9 @@ class _Values:
     def array(self, key: str) -> Array:
         """Value of a key for every row, NaN where there is none."""
         value = self.of(key)
-        return np.array(np.broadcast_to(np.nan if value is None else np.asarray(value, float), (self.n,)))
+        if isinstance(value, np.ndarray):
+            return np.array(np.broadcast_to(value, (self.n,)), float)
+        return np.full(self.n, np.nan if value is None else float(value))
 
     def full(self, value: Array) -> Array:
         """A value of one row or all as (N,)."""
@@ -99,12 +105,9 @@ def prepare(case: Case, dry_air: DryAir | None = None, columns: Mapping[str, Arr
     """
     values = _Values(case, columns or {})
     mixture = dry_air or air.dry_air()
-    humidity = air.humidity_ratio(
-        values.array("charge.relative_humidity"),
-        values.array("charge.ambient_temperature"),
-        values.array("charge.ambient_pressure"),
-        mixture.molar_mass,
-    )
+    outside = values.only((*OUTSIDE, "charge.altitude", "charge.reference"))
+    wet, T, pressure = (outside.array(key) for key in OUTSIDE)
+    humidity = values.full(air.humidity_ratio(wet, T, pressure, mixture.molar_mass))
     recipe = _recipe(case, values, mixture, humidity)
     soaked = ~np.isfinite(humidity)
     gaseous = ~enters_as_liquid(recipe) & (recipe.admission == "port-liquid")

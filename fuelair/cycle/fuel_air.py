@@ -10,7 +10,7 @@ from fuelair.charge import Charge
 from fuelair.cycle.breathing import Exhaust, Settings, blow_down, exhaust
 from fuelair.cycle.result import FREEZE_MODEL, CycleResult, Point, WorkParts, closed, closed_figures, performance, state_figures
 from fuelair.cycle.stages import Burn, ClosedPart, Compression, Expansion, Passage, burn, compress, end_of_constant_volume, expand
-from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, weighted, worst
+from fuelair.gas.engine import Array, Chemistry, Engine, GasState, Mask, total, weighted, worst
 
 
 @dataclass(frozen=True, slots=True)
@@ -213,7 +213,7 @@ def _points(
 def _ledger(
     engine: Engine | None, charge: Charge, once: Passage, out: Exhaust, settings: Settings, headline: bool
 ) -> dict[str, Array]:
-    """Relative residuals of mass, elements, energy and entropy; energies are relative to the fuel's.
+    """Relative residuals of mass, elements, energy and entropy: elements over all moles, energies over the fuel's.
 
     With an engine each state is evaluated afresh: its energy is taken from its composition, temperature and
     volume, not from the value that the solver was asked to meet.
@@ -247,13 +247,11 @@ def _closed_ledger(
     """The residuals of the closed part from its four states; the compositions ``burned_to`` must hold what burned."""
     first, second, third, fourth = states
     table, mass, burned = charge.recipe.table, 1.0 + charge.injected, once.burn
-    whole = weighted(once.reactants, table.balances)
-    elements, kilograms = np.zeros(len(mass)), np.zeros(len(mass))
-    biggest = np.max(whole[:, :-1], axis=1)
+    elements, kilograms, moles = np.zeros(len(mass)), np.zeros(len(mass)), total(once.reactants)
     for amounts in _distinct(*burned_to):
-        there = weighted(amounts, table.balances)
-        elements = np.maximum(elements, np.max(np.abs(there - whole)[:, :-1], axis=1) / biggest)
-        kilograms = np.maximum(kilograms, np.abs(there[:, -1] - 1.0))
+        apart = np.abs(weighted(amounts - once.reactants, table.balances))
+        elements = np.maximum(elements, np.max(apart[:, :-1], axis=1) / moles)
+        kilograms = np.maximum(kilograms, apart[:, -1])
     scale, supplied = _scale(charge), charge.injected * charge.injected_enthalpy
     work = -once.compression.work + burned.expansion_work * mass + mass * (burned.state.u - once.release.u)
     ledger = {

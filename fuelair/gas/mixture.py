@@ -37,6 +37,9 @@ class Mixture:
 
     def thermal(self, T: Array) -> tuple[Array, Array, Array]:
         """cp [J/(kg K)], h [J/kg] and s at the reference pressure incl. mixing [J/(kg K)] at ``T`` (N,)."""
+        if len(self.moles) == 1 < len(T) and (T[0] == T).all():  # one gas at one temperature: once is enough
+            cp, h, s = self.thermal(T[:1])
+            return np.broadcast_to(cp, T.shape), np.broadcast_to(h, T.shape), np.broadcast_to(s, T.shape)
         cp, h, s = _thermal(np.where((T < T_BREAK)[:, None], self.low, self.high), T)
         return R * cp, R * T * h, R * (s + self.mixing)
 

@@ -29,7 +29,7 @@ from fuelair.prepare import Prepared, headline_model, prepare
 from fuelair.study import figures
 from fuelair.study.columns import Column, Values, read
 
-CHUNK = 8192
+CHUNK = 2048
 """Rows computed side by side."""
 Index = npt.NDArray[np.intp]
 Labels = dict[str, Any]
