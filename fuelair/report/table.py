@@ -26,7 +26,8 @@ class Table:
 def signed(key: str, value: float) -> str:
     """A difference in the shown unit, with its sign."""
     row = QUANTITIES[key]
-    return f"{shown_value(key, value + row.offset):+{row.style}}"
+    text = f"{shown_value(key, value + row.offset):+{row.style}}"
+    return text if text.strip("+-0.") else text.replace("-", "+")  # rounding noise has no sign
 
 
 def plain(value: float | None, style: str) -> str:
