@@ -44,7 +44,7 @@ def band(
         Path | None, typer.Option("--out", metavar="FOLDER", help="Write JSON, CSV tables and the resolved case there.")
     ] = None,
 ) -> None:
-    """Give every quantity a band from the spreads in \\[tolerance], and say what moves it most."""
+    r"""Give every quantity a band from the spreads in \[tolerance], and say what moves it most."""
     from fuelair import Case
     from fuelair.report import files, studies
     from fuelair.study import tolerance
