@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from typing import Any, Literal
 
 import numpy as np
@@ -11,7 +12,7 @@ from fuelair.air import DryAir
 from fuelair.fuel import Fuel
 from fuelair.gas.complete import oxygen_excess
 from fuelair.gas.engine import Array, Index, Mask, taken
-from fuelair.gas.mixture import mix
+from fuelair.gas.mixture import Mixture, mix
 from fuelair.gas.species import FUEL, T_STANDARD, SpeciesTable
 
 Admission = Literal["premixed", "port-liquid", "early-direct", "direct"]
@@ -83,11 +84,20 @@ class Recipe:
     @property
     def stoichiometric_air_fuel_ratio(self) -> float:
         """Mass of dry air per mass of fuel at equivalence ratio 1 [-], from the atoms of the table."""
-        table = self.table
-        air = table.amounts({k: v for k, v in self.air.composition().items() if v > 0.0})
-        fuel = pure(table, FUEL, 1)
-        spare = air[table.index("O2")] * 2.0
-        return float(-oxygen_excess(table, fuel)[0] / spare)
+        return _stoichiometric_ratio(self.table, self.air)
+
+
+@lru_cache(maxsize=64)
+def _stoichiometric_ratio(table: SpeciesTable, air: DryAir) -> float:
+    spare = 2.0 * table.amounts({k: v for k, v in air.composition().items() if v > 0.0})[table.index("O2")]
+    return float(-oxygen_excess(table, pure(table, FUEL, 1))[0] / spare)
+
+
+@lru_cache(maxsize=64)
+def _vapour(table: SpeciesTable, name: str) -> tuple[Mixture, float]:
+    """A species alone, and its enthalpy at 298.15 K [J/kg]."""
+    alone = mix(table, pure(table, name, 1))
+    return alone, float(alone.thermal(np.array([T_STANDARD]))[1][0])
 
 
 def enters_as_liquid(recipe: Recipe) -> Mask:
@@ -107,8 +117,7 @@ def heating_value(recipe: Recipe) -> Array:
 def supply_enthalpy(recipe: Recipe) -> Array:
     """Enthalpy of the fuel as supplied [J/kg fuel] on the table's datum, shape (N,)."""
     table, fuel = recipe.table, recipe.fuel
-    vapour = mix(table, pure(table, FUEL, 1))
-    _, standard, _ = vapour.thermal(np.array([T_STANDARD]))
+    vapour, standard = _vapour(table, FUEL)
     _, warm, _ = vapour.thermal(recipe.fuel_temperature)
     liquid = enters_as_liquid(recipe)
     if not liquid.any():
@@ -122,8 +131,7 @@ def water_enthalpy(recipe: Recipe) -> Array:
     Vapour at 298.15 K less the latent heat, plus constant specific heat (273 to 373 K, within 1 kJ/kg of
     IAPWS-95 up to 353 K). Latent heat and specific heat: CRC Handbook, as in package chemicals 1.5.2.
     """
-    table = recipe.table
-    _, vapour, _ = mix(table, pure(table, "H2O", 1)).thermal(np.array([T_STANDARD]))
+    _, vapour = _vapour(recipe.table, "H2O")
     return np.asarray(vapour - WATER_LATENT_HEAT + WATER_CP * (recipe.liquid_water_temperature - T_STANDARD))
 
 

@@ -135,6 +135,9 @@ class Charge:
         """
         table, recipe = self.recipe.table, self.recipe
         burns, rests = table.index(FUEL), table.index(UNBURNED)
+        whole = not (self.injected.any() or (recipe.combustion_efficiency != 1.0).any())
+        if whole:
+            return self.trapped.amounts
         out = self.trapped.amounts.copy()
         fuel = out[:, burns] + self.fuel_injected / table.molar_mass[burns]
         out[:, table.index("H2O")] += self.water_injected / table.molar_mass[table.index("H2O")]

@@ -69,7 +69,7 @@ def columns(of: Study, n: int) -> dict[str, np.ndarray]:
     rng = np.random.default_rng(5)
     low, high = (0.2, 12.0, 0.9e5, 300.0), (1.05, 20.0, 2.5e5, 370.0)
     out = {key: rng.uniform(a, b, n) for key, a, b in zip(of.keys, low, high, strict=False)}
-    return out | {key: out["charge.intake_temperature"] for key in of.keys[4:]}  # the peer's fuel is as warm as its air
+    return out | dict.fromkeys(of.keys[4:], out[of.keys[3]])  # the peer's fuel is as warm as its air
 
 
 def arguments(of: dict[str, np.ndarray], n: int) -> list[tuple[float, ...]]:
