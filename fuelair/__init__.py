@@ -11,10 +11,7 @@ from fuelair.assessment import Assessment
 from fuelair.case import Case
 from fuelair.errors import DataError, FuelairError, InputError, MissingExtraError, Problem, UnsolvedError
 from fuelair.fuel import Fuel
-from fuelair.study.frames import sweep
-from fuelair.study.optimum import best
-from fuelair.study.target import find
-from fuelair.study.tolerance import band
+from fuelair.study.door import band, best, find, sweep
 from fuelair.version import __version__
 
 __all__ = [
