@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 
@@ -17,7 +18,7 @@ from fuelair.cycle.geometry import Volumes
 from fuelair.cycle.result import FREEZE_MODEL, REAL_MODEL, REFERENCE_MODEL
 from fuelair.errors import InputError, Problem
 from fuelair.fuel import Fuel
-from fuelair.gas.engine import Array, Mask
+from fuelair.gas.engine import Array, Index, Mask, taken
 from fuelair.gas.species import build
 
 _TIMES = ("engine.intake_closing", "engine.exhaust_opening", "engine.exhaust_closing")
@@ -57,6 +58,11 @@ class Prepared:
 
     def __len__(self) -> int:
         return len(self.recipe)
+
+    def rows(self, index: Index | slice) -> Prepared:
+        """Some of the rows only, in ascending order."""
+        own: dict[str, Any] = {k: taken(v, index) for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
+        return replace(self, recipe=self.recipe.rows(index), settings=self.settings.rows(index), **own)
 
 
 OUTSIDE = ("charge.relative_humidity", "charge.ambient_temperature", "charge.ambient_pressure")

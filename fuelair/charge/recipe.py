@@ -67,7 +67,7 @@ class Recipe:
     def __len__(self) -> int:
         return len(self.pressure)
 
-    def rows(self, index: Index) -> Recipe:
+    def rows(self, index: Index | slice) -> Recipe:
         """The recipe of some rows only."""
         own: dict[str, Any] = {k: taken(v, index) for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
         return replace(self, **own)

@@ -65,7 +65,7 @@ class Settings:
     four_stroke: bool = True
     compression_exponent: Array | None = None
 
-    def rows(self, index: Index) -> Settings:
+    def rows(self, index: Index | slice) -> Settings:
         """The settings of some rows only."""
         own: dict[str, Any] = {k: taken(v, index) for k in self.__slots__ if isinstance(v := getattr(self, k), np.ndarray)}
         return replace(self, volumes=self.volumes.rows(index), **own)

@@ -31,7 +31,7 @@ class Volumes:
         whole = clearance + 1.0
         return cls(clearance, whole, whole, clearance)
 
-    def rows(self, index: Index) -> Volumes:
+    def rows(self, index: Index | slice) -> Volumes:
         """The volumes of some rows only."""
         return Volumes(*(taken(getattr(self, name), index) for name in self.__slots__))
 

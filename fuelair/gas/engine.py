@@ -135,9 +135,9 @@ class Engine(Protocol):
         ...
 
 
-def taken(values: npt.NDArray[Any], rows: Index) -> npt.NDArray[Any]:
-    """``values[rows]`` for ascending ``rows``, without a copy where that is all of them; not to be written to."""
-    return values if len(rows) == len(values) else values[rows]
+def taken(values: npt.NDArray[Any], rows: Index | slice) -> npt.NDArray[Any]:
+    """``values[rows]`` for ascending ``rows``, without a copy where that is all of them or a slice; not to be written to."""
+    return values[rows] if isinstance(rows, slice) or len(rows) != len(values) else values
 
 
 def total(amounts: Array) -> Array:

@@ -29,8 +29,10 @@ from fuelair.prepare import Prepared, headline_model, prepare
 from fuelair.study import figures
 from fuelair.study.columns import Column, Values, read
 
-CHUNK = 2048
+CHUNK = 4096
 """Rows computed side by side."""
+PREPARED = 16 * CHUNK
+"""Rows prepared at once."""
 Index = npt.NDArray[np.intp]
 Labels = dict[str, Any]
 """What distinguishes a group of rows: key -> name, word, or number that changes what a case is made of."""
@@ -120,8 +122,8 @@ class Study:
         )
         for labels, group in _groups(given, n):
             numbers = {c.key: c.numbers for c in given if c.key not in labels and c.numbers is not None}
-            for start in range(0, len(group), CHUNK):
-                rows = group[start : start + CHUNK]
+            for start in range(0, len(group), PREPARED):
+                rows = group[start : start + PREPARED]
                 self._solve(labels, {key: values[rows] for key, values in numbers.items()}, rows, out)
         return out
 
@@ -166,10 +168,13 @@ class Study:
             if not len(keep):
                 return
             prepared = prepare(case, columns=columns)
-        found, status = self._figures(prepared)
-        out.status[rows[keep]] = status
-        for name in self.quantities:
-            out.figures[name][rows[keep]] = np.where(status == Status.OK, found[name], np.nan)
+        for start in range(0, len(keep), CHUNK):
+            some = slice(start, start + CHUNK)
+            found, status = self._figures(prepared.rows(some))
+            mine = rows[keep[some]]
+            out.status[mine] = status
+            for name in self.quantities:
+                out.figures[name][mine] = np.where(status == Status.OK, found[name], np.nan)
 
     def _figures(self, prepared: Prepared) -> tuple[dict[str, Array], Codes]:
         """Figures and status of prepared rows."""
