@@ -20,6 +20,8 @@ from fuelair.study.crossings import NEAR_ZERO, POINTS
 from fuelair.study.target import Found, find
 
 MET = 1e-9
+SAY_EVERY = 500
+"""Cases between two lines on standard error."""
 QUANTITIES = (
     "peak_pressure_Pa", "peak_temperature_K", "compression_pressure_Pa", "compression_temperature_K", "exhaust_temperature_K",
     "release_pressure_Pa", "imep_gross_Pa", "indicated_efficiency", "work_J_per_kg", "isfc_kg_per_J",
@@ -85,6 +87,8 @@ def run(cases: int, *, seed: int = 1, engine: str | None = None, points: int = P
     """There and back through ``cases`` cases; ``wide``: half of them over the key's whole range, else around the input."""
     random, tally = Random(seed), Tally()
     for number in range(cases):
+        if number and number % SAY_EVERY == 0:
+            print(f"{number}: {tally}", file=sys.stderr, flush=True)
         mode = MODES[number % len(MODES)]
         case = case_of(random, mode)
         key, quantity = random.choice(keys_of(case)), random.choice(QUANTITIES)
