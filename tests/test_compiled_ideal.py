@@ -26,6 +26,7 @@ from fuelair.gas.species import FUEL, UNBURNED, build
 PAIRS = ("TP", "TV", "HP", "UV", "SP", "SV", "ST")
 AIR = {"N2": 0.78084, "O2": 0.209476, "Ar": 0.00934, "CO2": 0.0004}
 NO_NITROGEN = {"O2": 0.21, "Ar": 0.79}
+# a fuel without hydrogen; heating value from its enthalpy of formation, JANAF, from memory
 CARBON_MONOXIDE = Vapour("carbon monoxide", (("C", 1.0), ("O", 1.0)), 28.0101, 10.103e6, (("CO", 1.0),))
 TABLES = {name: build(fuels.load(name).vapour) for name in ("diesel", "hydrogen", "ammonia", "methane", "marine-residual")}
 TABLES["carbon-monoxide"] = build(CARBON_MONOXIDE)
@@ -247,7 +248,7 @@ def test_rich_cold_gas_is_handed_back_and_solved():
     code, taken = np.zeros(2, np.int8), np.zeros(2, np.int32)
     nested.solve(
         rows.TP, np.array([2400.0, 800.0]), np.array([50e5, 50e5]), amounts, numbers.linear, numbers.base, numbers.reactions,
-        numbers.atoms, numbers.columns, numbers.stays, (8314.46261815324, table.reference_pressure), np.full(2, 2000.0),
+        numbers.atoms, numbers.columns, numbers.stays, (8314.46261815324, table.reference_pressure),
         out, found, code, taken,
     )  # fmt: skip
     assert code.tolist() == [rows.DONE, rows.WIDE]

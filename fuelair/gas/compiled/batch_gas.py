@@ -156,7 +156,7 @@ def _equilibrium(table: SpeciesTable, pair: Pair, x: Array, y: Array, amounts: A
     if numbers.whole:
         nested.solve(
             PAIRS.index(pair), x, y, amounts, numbers.linear, numbers.base, numbers.reactions, numbers.atoms,
-            numbers.columns, numbers.stays, (R, table.reference_pressure), np.full(n, rows.START), out, found, code, steps,
+            numbers.columns, numbers.stays, (R, table.reference_pressure), out, found, code, steps,
         )  # fmt: skip
         _as_given(pair, x, y, out, code)
     else:

@@ -27,8 +27,7 @@ SLACK_BELOW, SLACK_ABOVE = 0.5, 1.2
 TINY = 1e-300
 
 # Rows of the workspace.
-MIX = 0  # 18 coefficients, then the amount of gas
-MOLES = 18
+MOLES = 18  # after the 18 mixed coefficients
 MIXING, T_MIN, T_MAX, X, Y, T_, CP_, H_, S_, ACTIVE, PREVIOUS, STEPS, FAIL = range(19, 32)
 ROWS = 32
 

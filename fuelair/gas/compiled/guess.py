@@ -180,7 +180,7 @@ def _temperature(q: Array, tab: Array, entropy: bool, per_volume: float, of_volu
 
 @inlined
 def load(
-    q: Array, codes: Codes, first: int, size: int, pair: int, x: Array, y: Array, start: Array,
+    q: Array, codes: Codes, first: int, size: int, pair: int, x: Array, y: Array,
     amounts: Array, linear: Array, base: Array, tab: Array, gas_constant: float, p0: float,
 ) -> None:  # fmt: skip
     """Fill the rows of a block of states; ``codes`` says where there is nothing that this method can solve."""
@@ -190,7 +190,7 @@ def load(
         i = first + k
         excess, oc = q[E_ * BLOCK + k], q[OC * BLOCK + k]
         carbon, half = q[C_ * BLOCK + k], 0.5 * q[H_ * BLOCK + k]
-        known = x[i] if pair in (TP, TV) else (y[i] if pair == ST else start[i])
+        known = x[i] if pair in (TP, TV) else (y[i] if pair == ST else START)
         sound = math.isfinite(x[i]) and math.isfinite(y[i]) and y[i] > 0.0
         fine = (
             sound

@@ -94,7 +94,7 @@ def _hand_over(
 def solve(
     pair: int, x: Array, y: Array, amounts: Array, linear: Array, base: Array, tab: Array,
     atoms: Array, columns: Indices, stays: Indices, constants: tuple[float, float],
-    start: Array, out: Array, found: Array, code: Codes, steps: npt.NDArray[np.int32],
+    out: Array, found: Array, code: Codes, steps: npt.NDArray[np.int32],
 ) -> None:  # fmt: skip
     """Equilibrium of a batch.
 
@@ -103,7 +103,6 @@ def solve(
     pair, x, y, amounts : a code of `TP` to `ST`, arrays (N,) in SI, amounts (N, S) [kmol/kg].
     linear, base, tab, atoms, columns, stays : see `batch_gas.Constants`. constants : molar gas constant [J/(kmol K)]
         and reference pressure [Pa].
-    start : (N,) temperature to start from [K].
     out, found, code, steps : results, written in place where a state is solved: (8, N) T p v u h s cp and speed of sound,
         (N, S) amounts; always how it ended, and the steps it took.
     """
@@ -125,7 +124,7 @@ def solve(
             while state[lane] < 0 and following < n:
                 if following == loaded:
                     size = min(BLOCK, n - loaded)
-                    load(q, codes, loaded, size, pair, x, y, start, amounts, linear, base, tab, gas_constant, p0)
+                    load(q, codes, loaded, size, pair, x, y, amounts, linear, base, tab, gas_constant, p0)
                     loaded += size
                 i = following
                 k = i % BLOCK
