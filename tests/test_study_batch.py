@@ -10,7 +10,7 @@ import pytest
 import fuelair
 from fuelair import outputs, resources
 from fuelair.case import keys
-from fuelair.cycle.result import FREEZE_MODEL, MODELS
+from fuelair.cycle.result import EXCHANGE_FIGURES, FREEZE_MODEL, MODELS
 from fuelair.errors import InputError
 from fuelair.gas.engine import Status
 from fuelair.study import figures
@@ -180,6 +180,22 @@ def test_bits_do_not_depend_on_order_or_on_the_rows_beside(engine):
         alone = made.run({key: values[i : i + 1] for key, values in columns.items()})
         for name in made.quantities:
             assert np.array_equal(whole.figures[name][i], alone.figures[name][0], equal_nan=True), name
+
+
+@pytest.mark.parametrize("engine", ["reference", "compiled"])
+@pytest.mark.parametrize("residual", [0.0, 0.03])
+def test_the_closed_part_alone_has_the_bits_of_the_whole_cycle(engine, residual):
+    """Asking for less leaves out blowdown and exhaust, and changes nothing else."""
+    case, ratios = demo(charge__residual_fraction=residual), [13.0, 15.0, 17.0]
+    closed = [name for name in figures.MODEL_FIGURES if name not in EXCHANGE_FIGURES]
+    alone = study(case, "engine.compression_ratio", quantities=closed, engine=engine)
+    whole = study(case, "engine.compression_ratio", quantities=figures.MODEL_FIGURES, engine=engine)
+    assert figures.Need.of(closed).closed_part_only
+    assert not figures.Need.of(figures.MODEL_FIGURES).closed_part_only
+    some, every = (one.run({"engine.compression_ratio": ratios}) for one in (alone, whole))
+    assert some.status.tolist() == every.status.tolist() == [Status.OK] * 3
+    for name in closed:
+        assert some.figures[name].tobytes() == every.figures[name].tobytes(), name
 
 
 def test_a_study_pickles():

@@ -82,7 +82,7 @@ def passage(engine: Engine, charge: Charge, settings: Settings, model: str) -> P
 
 
 def run_closed(engine: Engine, charge: Charge, settings: Settings, model: str) -> CycleResult:
-    """The figures of the closed part alone, for studies that ask for no others: `CLOSED_FIGURES`.
+    """The figures of the closed part alone, for studies that ask for none of `EXCHANGE_FIGURES`.
 
     Its ledger is that of the closed part; states are taken as the engine gave them.
     """
@@ -96,29 +96,6 @@ def run_closed(engine: Engine, charge: Charge, settings: Settings, model: str) -
     ledger = _closed_ledger(charge, once, settings, states, release.amounts)
     status = closed(once.status, ledger)
     return CycleResult(model, charge.recipe.table, (), figures, ledger, {"limited": _limited(once, settings)}, status)
-
-
-CLOSED_FIGURES = frozenset(
-    [
-        "compression_temperature_K",
-        "compression_pressure_Pa",
-        "peak_temperature_K",
-        "peak_pressure_Pa",
-        "release_temperature_K",
-        "release_pressure_Pa",
-        "cutoff_ratio",
-        "imep_gross_Pa",
-        "imep_net_Pa",
-        "pmep_Pa",
-        "indicated_efficiency",
-        "isfc_kg_per_J",
-        "work_J_per_kg",
-        "heat_supplied_J_per_kg",
-        "heat_added_J_per_kg",
-        "compression_heat_J_per_kg",
-    ]
-)
-"""What `run_closed` gives."""
 
 
 def run(engine: Engine, charge: Charge, settings: Settings, model: str, *, headline: bool = True, in_full: bool = True) -> Run:

@@ -129,6 +129,10 @@ def performance(
         }
 
 
+EXCHANGE_FIGURES = ("exhaust_temperature_K", "blowdown_temperature_K", "residual_fraction", "blowdown_energy_J_per_kg")
+"""Figures of `state_figures` that the gas exchange makes; the closed part has all others."""
+
+
 def state_figures(points: tuple[Point, ...], *, cutoff_ratio: Array, heat_added: Array, blowdown: Array) -> dict[str, Array]:
     """Figures read off the named states (N,); heat and blowdown energy in J/kg trapped."""
     at = {p.name: p for p in points}

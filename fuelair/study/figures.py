@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Final
 
 from fuelair.case.fields import nearest
-from fuelair.cycle.fuel_air import CLOSED_FIGURES
+from fuelair.cycle.result import EXCHANGE_FIGURES
 from fuelair.errors import InputError, Problem
 
 MODEL_FIGURES: Final = (
@@ -103,7 +103,7 @@ class Need:
     def of(cls, names: Sequence[str]) -> Need:
         """The groups that hold these names."""
         engine, exhaust, charge = (bool({*names} & {*g}) for g in (ENGINE_FIGURES, EXHAUST_FIGURES, CHARGE_FIGURES))
-        return cls(engine, exhaust, FLAME in names, charge, {*names} <= CLOSED_FIGURES)
+        return cls(engine, exhaust, FLAME in names, charge, {*names} <= {*MODEL_FIGURES} - {*EXCHANGE_FIGURES})
 
 
 def resolve(name: str) -> str:
