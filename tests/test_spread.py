@@ -164,7 +164,7 @@ def test_another_release_on_a_worker_is_refused() -> None:
 @pytest.mark.parametrize(
     ("make", "words"),
     [
-        (lambda: Runner("gpu"), "threads, processes, dask"),  # type: ignore[arg-type]
+        (lambda: Runner("gpu"), "threads, processes, dask"),
         (lambda: Runner("threads", 0), "1 or more"),
         (lambda: Runner("threads", scheduler="tcp://127.0.0.1:1"), "--runner dask"),
         (lambda: Runner("dask", scheduler="tls://127.0.0.1:1"), "--tls-ca"),
